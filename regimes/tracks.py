@@ -131,8 +131,8 @@ def make_tracks(fixes: Fixes, step: float | None = None, longest_gap: float | No
     step = _round_interval(interval) if step is None else _positive("step", step)
     if step < FINEST_STEP * interval:
         raise DataError(
-            f"step is {step:g} s but the median fix interval is {interval:g} s: three of four positions would "
-            f"be invented by interpolation; choose a step of at least {FINEST_STEP * interval:g} s "
+            f"step is {step:g} s but the median fix interval is {interval:g} s: three of four positions "
+            f"would be invented by interpolation; choose a step of at least {FINEST_STEP * interval:g} s "
             f"(observations.step_h = {FINEST_STEP * interval / HOUR:.4g})"
         )
     if longest_gap is None:
@@ -246,6 +246,6 @@ def _check_size(fixes: Fixes, count: np.ndarray, last: np.ndarray) -> None:
     days = (fixes.time[at + 1] - fixes.time[at]) / DAY
     raise DataError(
         f"the common axis would need {count.sum()} steps for {len(count)} fixes; the longest gap is "
-        f"{days:.0f} days, in particle {fixes.labels[fixes.particle[at]]}: look for a wrong date, or choose a "
-        "longer observations.step_h"
+        f"{days:.0f} days, in particle {fixes.labels[fixes.particle[at]]}: look for a wrong date, or choose "
+        "a longer observations.step_h"
     )
