@@ -61,7 +61,7 @@ def _no_launch(tracks: Tracks, times: CommonTimes, rule: Rule) -> str:
 
 
 def _closest_launch(tracks: Tracks, times: CommonTimes, window: int) -> tuple[int, float]:
-    """Shortest wait [steps] for two of one release to be seen together; least separation [m] in the window."""
+    """Shortest wait [steps] until two of one release are seen together; least distance [m] in the window."""
     wait, distance = NEVER, np.inf
     for member in range(tracks.n_track - 1):
         others = np.arange(member + 1, tracks.n_track)

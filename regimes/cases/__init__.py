@@ -1,0 +1,26 @@
+"""The case file: what to read, which pairs to compare, which models to weigh. Checked once, at the door."""
+
+from regimes.cases.load import case_from, load_case
+from regimes.cases.record import (
+    REGIMES,
+    Case,
+    Columns,
+    CurveRules,
+    ModelRules,
+    Observations,
+    PairRules,
+    ReportRules,
+)
+
+__all__ = [
+    "REGIMES",
+    "Case",
+    "Columns",
+    "CurveRules",
+    "ModelRules",
+    "Observations",
+    "PairRules",
+    "ReportRules",
+    "case_from",
+    "load_case",
+]

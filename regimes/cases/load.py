@@ -1,0 +1,91 @@
+"""Reading a case file, with every problem reported at once."""
+
+import tomllib
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+from pydantic import ValidationError
+
+from regimes.cases.problems import describe, headed
+from regimes.cases.record import Case
+from regimes.errors import CaseError
+
+
+def load_case(path: str | Path) -> Case:
+    """Read a case file (TOML).
+
+    Parameters
+    ----------
+    path : str or Path
+        A relative `observations.path` inside is taken from the folder of the case file.
+
+    Returns
+    -------
+    Case
+        With `observations.path` ready to open.
+
+    Raises
+    ------
+    CaseError
+        If the file cannot be read, is no TOML, or asks for what is not possible; all problems at once.
+    """
+    path = Path(path)
+    try:
+        text = path.read_text(encoding="utf-8-sig")
+    except FileNotFoundError:
+        raise CaseError(f"{path}: no such file; give the path of a case file") from None
+    except (OSError, UnicodeDecodeError) as error:
+        raise CaseError(f"{path}: cannot be read ({error}); must be a text file in UTF-8") from error
+    try:
+        content = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise CaseError(f"{path}: no valid TOML: {error}; correct the line") from error
+    return case_from(content, source=str(path), folder=path.parent)
+
+
+def case_from(content: Mapping[str, Any], source: str = "case", folder: str | Path | None = None) -> Case:
+    """Check the content of a case file.
+
+    Parameters
+    ----------
+    content : mapping
+        Sections and keys as in the file.
+    source : str
+        Name to head the problems with.
+    folder : str or Path, optional
+        Where a relative `observations.path` starts; the data must exist there. Without it, the path is kept
+        as it is and looked for only when the data are read.
+
+    Returns
+    -------
+    Case
+
+    Raises
+    ------
+    CaseError
+        If there is any problem; all of them at once.
+    """
+    content = dict(content)
+    problems: list[str] = []
+    if folder is not None:
+        content, problems = _resolve(content, Path(folder))
+    try:
+        case = Case.model_validate(content)
+    except ValidationError as error:
+        problems = describe(error, Case) + problems
+    if problems:
+        raise CaseError(headed(source, problems))
+    return case
+
+
+def _resolve(content: dict[str, Any], folder: Path) -> tuple[dict[str, Any], list[str]]:
+    """The content with the data path made ready to open, and the problem if nothing is there."""
+    section = content.get("observations")
+    if not isinstance(section, dict) or not isinstance(section.get("path"), str) or not section["path"]:
+        return content, []
+    path = folder / section["path"]
+    problems = []
+    if not path.exists():
+        problems.append(f'observations.path: got "{section["path"]}"; no such file in {folder}')
+    return content | {"observations": section | {"path": str(path)}}, problems
