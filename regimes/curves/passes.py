@@ -1,0 +1,196 @@
+"""The loops over every pair sample: plain sums per row, on Cartesian coordinates, no trigonometry."""
+
+import math
+
+import numpy as np
+from numba import njit
+
+from regimes.curves.groups import make_groups
+from regimes.geodesy import separation_components
+from regimes.pairs import Pairs
+from regimes.tracks import Tracks
+
+# Smallest radius of curvature of the ellipsoid, rounded down [m]: chords over it bound all others from below.
+_SMALLEST_RADIUS = 6.33e6
+_GUARD = 1.0 - 1e-5
+# A threshold longer than this [m] is beyond what the chord can bound safely, so every sample is measured.
+_LONGEST_GUARDED = 4.0e6
+
+EXITED, CENSORED = 1.0, 2.0
+# Columns of the table of one pair, a row per threshold interval.
+STATE, STEPS, GAIN, UNFINISHED = range(4)
+
+
+def spans_and_rows(tracks: Tracks, pairs: Pairs) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Where each pair's samples lie and where its sums go.
+
+    Returns
+    -------
+    spans : (n_pair, 3) int64 array
+        Position row of the first and of the second member at the pair's start, and the number of steps.
+    rows : (n_pair, 3) int64 array
+        Rows of the sums, -1 for none; see `Groups`.
+    weight : (n_row,) float array
+        Weight of each row.
+    """
+    groups = make_groups(pairs)
+    ends = [tracks.offset[m] + pairs.begin - tracks.start_step[m] for m in (pairs.first, pairs.second)]
+    spans = np.ascontiguousarray(np.stack([*ends, pairs.length], axis=1), dtype=np.int64)
+    return spans, groups.table, groups.weight
+
+
+def guarded_levels(thresholds: np.ndarray, planar: bool) -> np.ndarray:
+    """Thresholds, and squared chords that no pair at or beyond a threshold can be below.
+
+    Returns
+    -------
+    (2, n) float array [m and m2]
+    """
+    chord = thresholds
+    if not planar:
+        safe = np.minimum(thresholds, _LONGEST_GUARDED)
+        chord = 2.0 * _SMALLEST_RADIUS * np.sin(safe / (2.0 * _SMALLEST_RADIUS))
+    return np.stack([thresholds, (chord * _GUARD) ** 2])
+
+
+@njit(cache=True, error_model="numpy")
+def _squared_chord(position, i, j):
+    dx = position[j, 0] - position[i, 0]
+    dy = position[j, 1] - position[i, 1]
+    dz = position[j, 2] - position[i, 2]
+    return dx * dx + dy * dy + dz * dz
+
+
+@njit(cache=True, error_model="numpy")
+def _components(position, i, j, planar):
+    return separation_components(
+        position[i, 0], position[i, 1], position[i, 2], position[j, 0], position[j, 1], position[j, 2], planar
+    )
+
+
+@njit(cache=True, error_model="numpy")
+def _reached(thresholds, r, top):
+    """Index of the highest threshold at or below r, not below `top`."""
+    while top + 1 < thresholds.size and r >= thresholds[top + 1]:
+        top += 1
+    return top
+
+
+@njit(cache=True, error_model="numpy")
+def _censor(position, planar, span, passage, table):
+    """Close an unfinished passage (threshold, start, last valid sample, start separation)."""
+    n, start, last, lower, width, r_start = passage
+    r = 0.0
+    t = last
+    while r <= 0.0:  # two fixes may coincide after rounding; the start lies at or beyond a threshold
+        r = _components(position, span[0] + t, span[1] + t, planar)[0]
+        t -= 1
+    table[n, STATE] = CENSORED
+    table[n, STEPS] = last - start
+    table[n, GAIN] = math.log(r / r_start) / width
+    table[n, UNFINISHED] = math.log(r / lower) / width
+
+
+@njit(cache=True, error_model="numpy")
+def _walk(position, planar, span, levels, table):
+    """First passages of one pair through the thresholds, into a table cleared beforehand."""
+    thresholds = levels[0]
+    highest = thresholds.size - 1
+    top, start, last, r_start = -1, -1, -1, 0.0  # start < 0: no passage in progress
+    blind = True  # the next valid sample opens the record, or follows a gap
+    for t in range(span[2]):
+        chord2 = _squared_chord(position, span[0] + t, span[1] + t)
+        if chord2 != chord2:
+            if start >= 0:
+                width = math.log(thresholds[top + 1] / thresholds[top])
+                _censor(position, planar, span, (top, start, last, thresholds[top], width, r_start), table)
+                start = -1
+            blind = True
+            continue
+        if blind or chord2 >= levels[1, top + 1]:
+            r = _components(position, span[0] + t, span[1] + t, planar)[0]
+            reached = _reached(thresholds, r, top)
+            if blind:
+                # Thresholds passed out of sight are lost; a record may start exactly on one.
+                if last < 0 and 0 <= reached < highest and r == thresholds[reached]:
+                    start, r_start = t, r
+            elif reached > top:
+                if start >= 0:
+                    table[top, STATE], table[top, STEPS] = EXITED, t - start
+                    table[top, GAIN] = math.log(r / r_start) / math.log(thresholds[top + 1] / thresholds[top])
+                for n in range(top + 1, reached):
+                    table[n, STATE] = EXITED
+                start, r_start = t, r
+            top = reached
+            if top == highest:
+                return
+            blind = False
+        last = t
+    if start >= 0:
+        width = math.log(thresholds[top + 1] / thresholds[top])
+        _censor(position, planar, span, (top, start, last, thresholds[top], width, r_start), table)
+
+
+@njit(cache=True, error_model="numpy")
+def exit_pass(position, planar, spans, rows, levels, sums, totals):
+    """Add the passages of every pair.
+
+    `sums` (4, n_row, n): exits, steps at risk, gain, unfinished gain. `totals` (3, n): passages, zero-length
+    exits, censored passages.
+    """
+    n_interval = levels.shape[1] - 1
+    table = np.empty((n_interval, 4))
+    for p in range(spans.shape[0]):
+        table[:] = 0.0
+        _walk(position, planar, spans[p], levels, table)
+        for n in range(n_interval):
+            if table[n, STATE] == 0.0:
+                continue
+            exited = table[n, STATE] == EXITED
+            totals[0, n] += 1
+            totals[1, n] += exited and table[n, STEPS] == 0.0
+            totals[2, n] += not exited
+            for k in range(3):
+                row = rows[p, k]
+                if row >= 0:
+                    sums[0, row, n] += exited
+                    sums[1, row, n] += table[n, STEPS]
+                    sums[2, row, n] += table[n, GAIN]
+                    sums[3, row, n] += table[n, UNFINISHED]
+
+
+@njit(cache=True, error_model="numpy")
+def dispersion_pass(position, planar, spans, rows, lags, sums):
+    """Add moments of the separation at each lag.
+
+    `sums` (8, n_row, n_lag): count, r2, east2, north2, east north, r4, ln r, count of r > 0.
+    """
+    for p in range(spans.shape[0]):
+        for k in range(lags.size):
+            if lags[k] >= spans[p, 2]:
+                continue
+            r, east, north = _components(position, spans[p, 0] + lags[k], spans[p, 1] + lags[k], planar)
+            if r != r:
+                continue
+            for m in range(3):
+                row = rows[p, m]
+                if row >= 0:
+                    sums[0, row, k] += 1.0
+                    sums[1, row, k] += r * r
+                    sums[2, row, k] += east * east
+                    sums[3, row, k] += north * north
+                    sums[4, row, k] += east * north
+                    sums[5, row, k] += r * r * r * r
+                    if r > 0.0:
+                        sums[6, row, k] += math.log(r)
+                        sums[7, row, k] += 1.0
+
+
+@njit(cache=True, error_model="numpy")
+def separation_pass(position, planar, spans, lags, out):
+    """Separations of a block of pairs at each lag into `out` (n_pair, n_lag), NaN where there is none."""
+    for p in range(spans.shape[0]):
+        for k in range(lags.size):
+            out[p, k] = np.nan
+            if lags[k] < spans[p, 2]:
+                out[p, k] = _components(position, spans[p, 0] + lags[k], spans[p, 1] + lags[k], planar)[0]
