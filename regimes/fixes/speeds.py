@@ -1,10 +1,13 @@
 """Fixes that would need an impossible speed."""
 
+from dataclasses import dataclass
+
 import numpy as np
 
 EARTH_RADIUS = 6371008.8  # m, mean radius of WGS84: half a per cent is enough to tell a speed that cannot be
 LOWEST_LIMIT = 5.0  # m/s
 MEDIAN_FACTOR = 10.0
+OFF_THE_WAY = 0.5  # detour over impossible step, above which a fix is off the way
 NOISE = 6.0  # position errors that two fixes may differ by on top of their motion
 
 
@@ -28,11 +31,13 @@ def default_limit(particle: np.ndarray, time: np.ndarray, position: np.ndarray, 
 
 
 def impossible_fixes(particle, time, position, planar: bool, limit: float, error: float):
-    """Fixes that cannot be reached in time, neither from the fix before nor towards the one after.
+    """Fixes that cannot be reached in time.
 
-    A fix is impossible if the speeds from the previous and to the next fix of its particle are both above
-    the limit; at either end of a record one of them. Of neighbouring suspects the one with the longest detour
-    goes, then the rest are judged again. Two fixes may always differ by `NOISE` position errors.
+    A fix is a suspect if the speeds from the fix before and to the fix after are both above the limit, or if
+    one is, the fix lies well off the way between its neighbours, and that way is possible without it (a wrong
+    fix soon after a right one may allow a slow return). At either end of a record one speed is enough, where
+    no inner fix is to blame. Of neighbouring suspects the one with the longest detour goes, then the rest are
+    judged again. Two fixes may always differ by `NOISE` position errors.
 
     Parameters
     ----------
@@ -52,38 +57,52 @@ def impossible_fixes(particle, time, position, planar: bool, limit: float, error
     jumps : int
         Steps above the limit that remain, where a particle stays at the far side of a jump.
     """
-    n = len(particle)
-    bad, jumps = np.zeros(n, dtype=bool), 0
-    slack = NOISE * error
-    alive = np.arange(n)
-    offenders = np.ones(n, dtype=bool)
+    bad, jumps = np.zeros(len(particle), dtype=bool), 0
+    alive = np.arange(len(particle))
     while True:
-        alive = alive[offenders[alive] & ~bad[alive]]
-        p, t, x = particle[alive], time[alive], position[alive]
+        p, path = particle[alive], _Path(time[alive], position[alive], planar, limit, NOISE * error)
         same = p[1:] == p[:-1]
-        hop = distances(x[:-1], x[1:], planar)
-        fast = same & (hop > limit * np.diff(t) + slack)
-        if not fast.any():
-            return bad, jumps
-        drop = _worst(fast, same, hop, x, planar)
+        fast = same & ~path.possible(np.arange(len(p) - 1), np.arange(1, len(p)))
+        drop = _to_drop(path, same, fast)
+        # Particles that no drop can cure any more are done; the others are judged again.
+        again = np.isin(p, np.unique(p[drop]))
+        jumps += int(fast[~again[1:]].sum())
         if not drop.any():
-            return bad, jumps + int(fast.sum())
-        # Particles whose jumps no drop can cure are done; the others are judged again.
-        active = np.isin(p, np.unique(p[drop]))
-        jumps += int(fast[~active[1:]].sum())
+            return bad, jumps
         bad[alive[drop]] = True
-        offenders[alive[~active]] = False
+        alive = alive[again & ~drop]
 
 
-def _worst(fast, same, hop, position, planar: bool) -> np.ndarray:
-    """Of each run of suspects the ones whose removal shortens the path most; ends where no inner one is."""
+@dataclass(frozen=True, slots=True)
+class _Path:
+    """Fixes in order, and what is possible between them."""
+
+    time: np.ndarray
+    position: np.ndarray
+    planar: bool
+    limit: float
+    slack: float
+
+    def length(self, a: np.ndarray, b: np.ndarray) -> np.ndarray:
+        return distances(self.position[a], self.position[b], self.planar)
+
+    def possible(self, a: np.ndarray, b: np.ndarray) -> np.ndarray:
+        return self.length(a, b) <= self.limit * (self.time[b] - self.time[a]) + self.slack
+
+
+def _to_drop(path: _Path, same: np.ndarray, fast: np.ndarray) -> np.ndarray:
+    """The worst fix of each run of suspects, and ends of records where no inner fix is suspect."""
     before, after = np.append(False, fast), np.append(fast, False)
-    inner = before & after
-    detour = np.full(len(position), -1.0)
-    k = np.flatnonzero(inner)
-    detour[k] = hop[k - 1] + hop[k] - distances(position[k - 1], position[k + 1], planar)
-    peak = inner & (detour >= np.append(-1.0, detour[:-1])) & (detour > np.append(detour[1:], -2.0))
     first, last = np.append(True, ~same), np.append(~same, True)
+    k = np.flatnonzero((before | after) & ~first & ~last)
+    come, go, direct = path.length(k - 1, k), path.length(k, k + 1), path.length(k - 1, k + 1)
+    detour = come + go - direct
+    off_the_way = detour > OFF_THE_WAY * np.maximum(come * before[k], go * after[k])
+    suspect = (before[k] & after[k]) | (off_the_way & path.possible(k - 1, k + 1))
+    score = np.full(len(before), -1.0)
+    score[k[suspect]] = detour[suspect]
+    inner = score >= 0
+    peak = inner & (score >= np.append(-1.0, score[:-1])) & (score > np.append(score[1:], -1.0))
     record = np.cumsum(first) - 1
     spared = np.bincount(record, weights=inner) > 0
     return peak | (((first & after) | (last & before)) & ~spared[record])
