@@ -79,6 +79,8 @@ def cleaned(rows: Rows, quality: Quality, source: Source) -> Fixes:
 
 def _kept(rows: Rows, keep: np.ndarray) -> Rows:
     """The rows of a mask or an index array."""
+    if keep.dtype == bool and keep.all():
+        return rows
     return replace(
         rows,
         particle=rows.particle[keep],

@@ -47,13 +47,12 @@ def seconds_of(values: pd.Series, name: str) -> np.ndarray:
     DataError
         If most of the times cannot be read, or are absurd.
     """
+    if values.dtype == object:
+        values = values.infer_objects()
     if pd.api.types.is_datetime64_any_dtype(values):
         return _plausible(_epoch(values), name)
     if not pd.api.types.is_numeric_dtype(values) or pd.api.types.is_bool_dtype(values):
-        numbers = pd.to_numeric(values, errors="coerce")
-        if numbers.notna().sum() <= values.notna().sum() / 2:
-            return _from_text(values, name)
-        values = numbers
+        return _from_text(values.where(values.isna(), values.astype(str)), name)
     seconds = values.to_numpy(dtype=float, na_value=np.nan).copy()
     return _plausible(seconds, name)
 
@@ -69,6 +68,7 @@ def _epoch(values: pd.Series) -> np.ndarray:
 
 
 def _from_text(values: pd.Series, name: str) -> np.ndarray:
+    """ISO text to seconds; numbers in a column that also holds text, such as a line of units, are seconds."""
     dates = pd.to_datetime(values, utc=True, format="ISO8601", errors="coerce")
     given = values.notna()
     unread = given & dates.isna()
@@ -78,6 +78,11 @@ def _from_text(values: pd.Series, name: str) -> np.ndarray:
         dates[unread] = pd.to_datetime(plain, utc=True, format="ISO8601", errors="coerce")
         unread = given & dates.isna()
     if unread.sum() > given.sum() / 2:
+        numbers = pd.to_numeric(values, errors="coerce")
+        if numbers.notna().sum() > given.sum() / 2:
+            seconds = numbers.to_numpy(dtype=float, na_value=np.nan).copy()
+            seconds[(given & numbers.isna()).to_numpy()] = np.inf
+            return _plausible(seconds, name)
         raise DataError(
             f"column {name}: {unread.sum()} of {given.sum()} times cannot be read, such as "
             f'"{values[unread].iloc[0]}"; must be ISO like 2024-05-31T18:00:00Z (no zone means UTC) or '
