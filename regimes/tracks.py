@@ -89,9 +89,10 @@ class Tracks:
         """One line: how many tracks, on which axis, how long, how much of it in gaps."""
         gap = float(np.mean(np.isnan(self.position[:, 0])))
         days = (self.n_step - 1) * self.step / DAY
+        tracks = "1 track" if self.n_track == 1 else f"{self.n_track} tracks"
         return (
-            f"{self.n_track} tracks every {self.step / HOUR:.4g} h, {days.min():.3g} to {days.max():.3g} "
-            f"days long (median {np.median(days):.3g}), {gap:.1%} of the steps in gaps"
+            f"{tracks} every {self.step / HOUR:.4g} h, {days.min():.3g} to {days.max():.3g} days long "
+            f"(median {np.median(days):.3g}), {gap:.1%} of the steps in gaps"
         )
 
 
@@ -191,7 +192,7 @@ def _assemble(fixes: Fixes, clock: _Clock, position, code, step_index) -> Tracks
     usable = np.bincount(code[valid], minlength=n) >= 2
     if not usable.any():
         raise DataError(
-            f"no particle has two positions on a common axis of {clock.step:g} s without a gap over "
+            f"no particle has two positions on an axis of {clock.step:g} s without a gap over "
             f"{clock.longest_gap:g} s; choose a shorter observations.step_h or a longer "
             "observations.longest_gap_h"
         )
