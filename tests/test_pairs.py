@@ -277,8 +277,8 @@ def test_says_how_close_the_launches_were():
     tracks = make([line(5, 0), line(5, 2500), line(5, 9000)], [0, 0, 1])
     with pytest.raises(
         DataError,
-        match=r"no launched pair among 3 particles: the smallest start separation within 6 h is 2.5 km; must be "
-        r"at most 1 km; raise pairs.max_separation_km or pairs.launched_within_h",
+        match=r"no launched pair among 3 particles: the smallest start separation within 6 h is 2.5 km; must "
+        r"be at most 1 km; raise pairs.max_separation_km or pairs.launched_within_h",
     ):
         find_pairs(tracks, "launched", 1000.0)
 

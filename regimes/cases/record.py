@@ -142,12 +142,14 @@ class CurveRules(_Section):
 class ModelRules(_Section):
     """Regimes that compete, and how many transitions between them."""
 
-    regimes: Annotated[tuple[Regime, ...], Field(strict=False, min_length=1)] = REGIMES
+    regimes: Annotated[tuple[Regime, ...], Field(strict=False)] = REGIMES
     most_transitions: Annotated[int, Field(ge=0, le=3)] = 2
 
     @field_validator("regimes")
     @classmethod
     def _each_once(cls, regimes: tuple[Regime, ...]) -> tuple[Regime, ...]:
+        if not regimes:
+            raise _rule("[]", "name one regime at least")
         if len(set(regimes)) < len(regimes):
             raise _rule(show(regimes), "name each regime once")
         return regimes
