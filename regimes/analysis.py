@@ -1,0 +1,157 @@
+"""Everything one run has found: the record that the report is made from."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from regimes.curves import Curve, DispersionStatistics
+from regimes.inference.record import Inference
+from regimes.verdict.record import Verdict
+
+
+@dataclass(frozen=True, slots=True)
+class Provenance:
+    """Where the numbers come from.
+
+    Parameters
+    ----------
+    case : str
+        Name of the case.
+    seed : int
+    versions : dict of str to str
+        Of this package, Python and the libraries that the numbers depend on.
+    source : str
+        File name of the fixes (no folders), or "memory".
+    sha256 : str
+        Of the input.
+    n_fixes, n_particles, n_pairs, n_clusters : int
+    kind : str
+        "launched", "chance" or "both".
+    step : float [s]
+        Common time axis.
+    longest_gap : float [s]
+        Longest gap bridged.
+    position_error : float [m]
+    max_separation : float [m]
+        Of pairs at their start.
+    median_start, start_p90 : float [m]
+        Start separations of the pairs, median and 90th percentile.
+    median_duration : float [s]
+        Of the pairs.
+    cleaning : tuple of (str, int, str)
+        What was dropped or changed: reason, count, note.
+    """
+
+    case: str
+    seed: int
+    versions: dict[str, str]
+    source: str
+    sha256: str
+    n_fixes: int
+    n_particles: int
+    n_pairs: int
+    n_clusters: int
+    kind: str
+    step: float
+    longest_gap: float
+    position_error: float
+    max_separation: float
+    median_start: float
+    start_p90: float
+    median_duration: float
+    cleaning: tuple[tuple[str, int, str], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class RateTable:
+    """The exit-rate curve as it entered the fit, and beyond.
+
+    Parameters
+    ----------
+    thresholds : (n + 1,) float array [m]
+    rate : (n,) float array [1/s]
+        Finite-scale Lyapunov exponent, with time at risk and the credit for unfinished passages; NaN where
+        nothing was seen.
+    low68, high68, low95, high95 : (n,) float arrays [1/s]
+        Intervals from the pooled dispersion (gamma-shaped).
+    textbook : (n,) float array [1/s]
+        ln(rho) over the mean time of completed exits only, the usual estimate, biased where records end.
+    exits, passages, n_pair, n_cluster : (n,) int arrays
+    zero_fraction : (n,) float array
+        Share of exits within one sample.
+    resolved : (n,) bool array
+        Whether the interval entered the fit.
+    """
+
+    thresholds: np.ndarray
+    rate: np.ndarray
+    low68: np.ndarray
+    high68: np.ndarray
+    low95: np.ndarray
+    high95: np.ndarray
+    textbook: np.ndarray
+    exits: np.ndarray
+    passages: np.ndarray
+    n_pair: np.ndarray
+    n_cluster: np.ndarray
+    zero_fraction: np.ndarray
+    resolved: np.ndarray
+
+
+@dataclass(frozen=True, slots=True)
+class Bands:
+    """What the fitted kernels predict; rows are the 2.5, 16, 50, 84 and 97.5 % quantiles.
+
+    Parameters
+    ----------
+    separation : (m,) float array [m]
+        Lower thresholds, finely spaced over the resolved range.
+    rate_named, rate_free : (5, m) float arrays [1/s]
+        Exponent of the named sequences and of the free-exponent kernels.
+    times : (k,) float array [s]
+        Since the first passage of `passage_separation`.
+    dispersion : (5, k) float array [m2]
+        Relative dispersion predicted from the exit-rate fit.
+    mean_log : (5, k) float array [ln m]
+        Mean of ln r.
+    """
+
+    separation: np.ndarray
+    rate_named: np.ndarray
+    rate_free: np.ndarray
+    times: np.ndarray
+    dispersion: np.ndarray
+    mean_log: np.ndarray
+
+
+@dataclass(frozen=True, slots=True)
+class Analysis:
+    """One run.
+
+    Parameters
+    ----------
+    provenance : Provenance
+    rates : RateTable
+    exponent : Curve
+        Finite-scale Lyapunov exponent as sums per cluster [1/s].
+    dispersion : DispersionStatistics
+        Since the start of the pairs.
+    passage_dispersion : DispersionStatistics
+        Since the first passage of `passage_separation`; what `Bands.dispersion` is compared with.
+    passage_separation : float [m]
+        Lowest resolved separation.
+    fits : dict of str to Inference
+        "exit_rate" and "separation" (absent where the data do not allow it).
+    bands : Bands
+    verdict : Verdict
+    """
+
+    provenance: Provenance
+    rates: RateTable
+    exponent: Curve
+    dispersion: DispersionStatistics
+    passage_dispersion: DispersionStatistics
+    passage_separation: float
+    fits: dict[str, Inference]
+    bands: Bands
+    verdict: Verdict

@@ -1,0 +1,158 @@
+"""What all models say together: regimes by separation, local exponent, slope over a range, transitions."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.special import logsumexp
+
+from regimes.inference.models import Model
+from regimes.theory.regimes import REGIMES
+
+
+@dataclass(frozen=True, slots=True)
+class Posterior:
+    """One model, its evidence and draws of its parameters.
+
+    Parameters
+    ----------
+    model : Model
+    log_evidence : float
+    draws : (n_draw, size) float array
+        May be empty for a model that was screened out.
+    """
+
+    model: Model
+    log_evidence: float
+    draws: np.ndarray
+
+
+@dataclass(frozen=True, slots=True)
+class Transition:
+    """Where one regime gives way to another, over all sequences that hold this transition.
+
+    Parameters
+    ----------
+    lower, upper : str
+        Regimes below and above.
+    probability : float
+        Summed over sequences.
+    draws : (n,) float array [m]
+        Transition separations.
+    """
+
+    lower: str
+    upper: str
+    probability: float
+    draws: np.ndarray
+
+
+def probabilities(posteriors) -> np.ndarray:
+    """Probability of each model, all equally probable beforehand; (n_model,), sums to one."""
+    log_z = np.array([p.log_evidence for p in posteriors])
+    return np.exp(log_z - logsumexp(log_z))
+
+
+def piece_at(model: Model, draws, separation):
+    """Index of the kernel piece that holds at each separation: (n_draw, n_separation) int."""
+    moves = np.asarray(draws)[:, 1 + model.n_free :]
+    return np.sum(np.log(separation)[None, :, None] >= moves[:, None, :], axis=2)
+
+
+def regime_probability(posteriors, separation) -> dict[str, np.ndarray]:
+    """Probability of each named regime at each separation [m], summed over sequences."""
+    out = {name: np.zeros(len(separation)) for name in REGIMES}
+    for weight, post in zip(probabilities(posteriors), posteriors, strict=True):
+        if not len(post.draws):
+            continue
+        piece = piece_at(post.model, post.draws, separation)
+        for i, name in enumerate(post.model.pieces):
+            out[name] += weight * np.mean(piece == i, axis=0)
+    total = sum(out.values())
+    return {name: value / total for name, value in out.items()}
+
+
+def mixed_slopes(posteriors, separation, size: int, rng: np.random.Generator):
+    """Local spectral slope of draws from all free-exponent kernels together.
+
+    Parameters
+    ----------
+    posteriors : sequence of Posterior
+        Free-exponent kernels.
+    separation : (n,) float array [m]
+    size : int
+        Number of draws.
+    rng : numpy Generator
+
+    Returns
+    -------
+    slope : (size, n) float array
+        alpha as fitted: values at or beyond 1 and 3 stand for the saturated kernel exponents 1 and 2;
+        NaN where the kernel is diffusive.
+    """
+    weight = probabilities(posteriors)
+    count = rng.multinomial(size, weight)
+    rows = []
+    for n, post in zip(count, posteriors, strict=True):
+        if n == 0:
+            continue
+        chosen = post.draws[rng.integers(len(post.draws), size=n)]
+        piece = piece_at(post.model, chosen, separation)
+        rows.append(np.take_along_axis(_piece_slopes(post.model, chosen), piece, axis=1))
+    return np.concatenate(rows)
+
+
+def _piece_slopes(model: Model, draws):
+    """alpha of each piece, (n_draw, n_piece); NaN for a diffusive one."""
+    out = np.empty((len(draws), len(model.pieces)))
+    column = 1
+    for i, name in enumerate(model.pieces):
+        if name == "free":
+            out[:, i] = draws[:, column]
+            column += 1
+        else:
+            a = REGIMES[name].exponent
+            out[:, i] = 2.0 * a - 1.0 if a >= 1.0 else np.nan
+    return out
+
+
+def local_exponents(slopes):
+    """Kernel exponents of `mixed_slopes`: saturated at 1 and 2, zero where diffusive."""
+    return np.where(np.isnan(slopes), 0.0, np.clip((slopes + 1.0) / 2.0, 1.0, 2.0))
+
+
+def range_slopes(slopes):
+    """alpha over a whole range for each draw: mean over its separations that are not diffusive.
+
+    Parameters
+    ----------
+    slopes : (n_draw, n) float array
+        `mixed_slopes` at separations evenly spaced in ln r.
+
+    Returns
+    -------
+    (n_draw,) float array
+        NaN where more than half of the range is diffusive.
+    """
+    defined = ~np.isnan(slopes)
+    count = defined.sum(axis=1)
+    total = np.where(defined, slopes, 0.0).sum(axis=1)
+    enough = 2 * count >= slopes.shape[1]
+    return np.where(enough, total / np.maximum(count, 1), np.nan)
+
+
+def transitions(posteriors) -> tuple[Transition, ...]:
+    """All transitions between named regimes, the most probable first."""
+    found: dict[tuple[str, str], list] = {}
+    for weight, post in zip(probabilities(posteriors), posteriors, strict=True):
+        if not len(post.draws):
+            continue
+        moves = np.exp(post.draws[:, 1 + post.model.n_free :])
+        for i in range(post.model.n_transition):
+            pair = post.model.pieces[i : i + 2]
+            found.setdefault(pair, []).append((weight, moves[:, i]))
+    out = []
+    for (lower, upper), parts in found.items():
+        total = sum(w for w, _ in parts)
+        draws = [d[: max(1, round(len(d) * w / max(p for p, _ in parts)))] for w, d in parts]
+        out.append(Transition(lower, upper, float(total), np.concatenate(draws)))
+    return tuple(sorted(out, key=lambda t: -t.probability))

@@ -1,0 +1,110 @@
+"""The exit-rate posterior on a grid: exact up to the grid, fast enough to fit hundreds of replicates."""
+
+from dataclasses import dataclass
+from itertools import combinations
+
+import numpy as np
+from scipy.special import logsumexp
+
+from regimes.inference.models import SLOPE_PRIOR, Model, Space
+from regimes.likelihood.exit_rate import ExitRateLikelihood, gamma_shape, grid_log_evidence
+
+_SLOPE_CELLS = {1: 200, 2: 40}  # cells of alpha between 1 and 3, by the number of free pieces
+_MOVE_CELLS = {(0, 1): 120, (0, 2): 40, (0, 3): 24, (1, 1): 60, (2, 1): 40, (2, 2): 22}
+
+
+@dataclass(frozen=True, slots=True)
+class Quadrature:
+    """Posterior of one model on a grid.
+
+    Parameters
+    ----------
+    model : Model
+    log_evidence : float
+        ln of the marginal likelihood.
+    nodes : (m, size) float array
+        Grid parameters; column 0 (ln rate) is unused.
+    log_weight : (m,) float array
+        ln posterior mass of each node, summing to one.
+    gamma_rate : (m,) float array [s]
+        Conditional posterior of the rate: Gamma(`gamma_shape`) / gamma_rate.
+    gamma_shape : float
+    """
+
+    model: Model
+    log_evidence: float
+    nodes: np.ndarray
+    log_weight: np.ndarray
+    gamma_rate: np.ndarray
+    gamma_shape: float
+
+    def sample(self, size: int, rng: np.random.Generator):
+        """Draws (size, model.size) from the posterior."""
+        mass = np.exp(self.log_weight - logsumexp(self.log_weight))
+        chosen = rng.choice(mass.size, size=size, p=mass)
+        theta = self.nodes[chosen].copy()
+        theta[:, 0] = np.log(rng.gamma(self.gamma_shape, size=size) / self.gamma_rate[chosen])
+        return theta
+
+
+def integrate(likelihood: ExitRateLikelihood, model: Model, space: Space) -> Quadrature | None:
+    """Evidence and posterior of a model by quadrature; None where the range has no room for its transitions.
+
+    Notes
+    -----
+    ln rate is integrated exactly (a gamma function), alpha on midpoints between 1 and 3 with one
+    atom each for the saturated ends, transitions on midpoints of their ordered simplex.
+    """
+    if not np.isfinite(model.log_prior_volume(space)):
+        return None
+    slopes, slope_mass = _slope_nodes(model.n_free)
+    moves = _move_nodes(model, space)
+    nodes = np.empty((slopes.shape[0] * moves.shape[0], model.size))
+    nodes[:, 0] = 0.0
+    nodes[:, 1 : 1 + model.n_free] = np.repeat(slopes, moves.shape[0], axis=0)
+    nodes[:, 1 + model.n_free :] = np.tile(moves, (slopes.shape[0], 1))
+    log_prior = np.repeat(slope_mass, moves.shape[0]) - np.log(moves.shape[0])
+    value, scale = grid_log_evidence(
+        likelihood.thresholds,
+        likelihood.exits,
+        likelihood.risk,
+        likelihood.dispersion,
+        np.ascontiguousarray(model.exponents(nodes)),
+        np.ascontiguousarray(model.breaks(nodes)),
+        space.reference,
+    )
+    shape, log_gamma = gamma_shape(likelihood)
+    joint = value + log_prior
+    total = float(logsumexp(joint))
+    width = np.log(space.log_rate[1] - space.log_rate[0])
+    return Quadrature(model, total + log_gamma - width, nodes, joint - total, scale, shape)
+
+
+def _slope_nodes(n_free: int):
+    """Nodes of alpha (m, n_free) and their ln prior mass."""
+    if n_free == 0:
+        return np.empty((1, 0)), np.zeros(1)
+    cells = _SLOPE_CELLS[n_free]
+    width = 2.0 / cells
+    low, high = SLOPE_PRIOR
+    axis = np.concatenate(([(low + 1.0) / 2], 1.0 + width * (np.arange(cells) + 0.5), [(high + 3.0) / 2]))
+    mass = np.concatenate(([1.0 - low], np.full(cells, width), [high - 3.0])) / (high - low)
+    grids = np.meshgrid(*[axis] * n_free, indexing="ij")
+    masses = np.meshgrid(*[np.log(mass)] * n_free, indexing="ij")
+    return np.stack([g.ravel() for g in grids], axis=1), np.sum([m.ravel() for m in masses], axis=0)
+
+
+def _move_nodes(model: Model, space: Space):
+    """Equally probable nodes of the ordered ln transitions, (m, n_transition)."""
+    count = model.n_transition
+    if count == 0:
+        return np.empty((1, 0))
+    low, high = space.transition_bounds
+    room = high - low - (count - 1) * space.step
+    cells = _MOVE_CELLS.get((model.n_free, count), 20)
+    axis = low + room * (np.arange(cells) + 0.5) / cells
+    if count == 1:
+        return axis[:, None]
+    ordered = np.array(list(combinations(range(cells), count)))
+    return axis[ordered] + space.step * np.arange(count)
+

@@ -1,0 +1,62 @@
+"""The only module that knows the sampler: emcee's affine-invariant ensemble."""
+
+from dataclasses import dataclass
+
+import emcee
+import numpy as np
+
+from regimes.inference.health import Health, judge
+
+
+@dataclass(frozen=True, slots=True)
+class Chain:
+    """Draws of one model.
+
+    Parameters
+    ----------
+    draws : (n_walker, n_step, size) float array
+        After burn-in, unthinned.
+    log_posterior : (n_walker, n_step) float array
+    health : Health
+    """
+
+    draws: np.ndarray
+    log_posterior: np.ndarray
+    health: Health
+
+
+def sample(log_posterior, start, seed: int, block: int = 1000, longest: int = 12000) -> Chain:
+    """Sample until the chain is healthy or as long as it may get.
+
+    Parameters
+    ----------
+    log_posterior : callable
+        From (m, size) parameters to (m,) values; -inf outside the prior.
+    start : (n_walker, size) float array
+        Starting places with finite posterior, all different.
+    seed : int
+    block, longest : int
+        Steps between looks at the convergence, and the most steps after burn-in.
+
+    Returns
+    -------
+    Chain
+        Its `health` says whether it converged; never raises for want of convergence.
+    """
+    walkers, size = start.shape
+    moves = [(emcee.moves.DEMove(), 0.8), (emcee.moves.DESnookerMove(), 0.1), (emcee.moves.StretchMove(), 0.1)]
+    sampler = emcee.EnsembleSampler(walkers, size, log_posterior, moves=moves, vectorize=True)
+    generator = np.random.RandomState(seed % 2**32)  # noqa: NPY002 - the state that emcee takes
+    sampler.random_state = generator.get_state()
+    state = sampler.run_mcmc(start, max(200, block // 4))
+    sampler.reset()
+    while True:
+        state = sampler.run_mcmc(state, block)
+        draws = sampler.get_chain()
+        tau = emcee.autocorr.integrated_time(draws, tol=0, quiet=True)
+        health = judge(np.swapaxes(draws, 0, 1), tau)
+        if health.ok or draws.shape[0] >= longest:
+            break
+        block = min(draws.shape[0], longest - draws.shape[0])
+    return Chain(np.swapaxes(draws, 0, 1), sampler.get_log_prob().T, health)
+
