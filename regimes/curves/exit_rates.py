@@ -12,6 +12,8 @@ from regimes.tracks import Tracks
 
 _PER_ROW = ("exits", "time_at_risk", "gain", "unfinished_gain")
 _TOTALS = ("passages", "zero_length", "censored")
+_LOOSE = ("loose_row", "loose_interval", "loose_log")
+_BLOCK = 1 << 16  # pairs at a time, so that the table of unfinished passages stays small
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,6 +41,10 @@ class ExitStatistics:
         +1 for clusters, -1 for couples of clusters; see `Curve`.
     passages, zero_length, censored : (n,) int arrays
         Passages begun, exits whose both ends fall on one sample, and passages without an exit.
+    loose_row, loose_interval : (m,) int arrays
+        Row and interval of every unfinished passage; a pair of two clusters stands in all its rows.
+    loose_log : (m,) float array
+        ln(r_last / delta_n) where the unfinished passage was last seen.
     step : float [s]
         Interval between samples.
     """
@@ -52,12 +58,16 @@ class ExitStatistics:
     passages: np.ndarray
     zero_length: np.ndarray
     censored: np.ndarray
+    loose_row: np.ndarray
+    loose_interval: np.ndarray
+    loose_log: np.ndarray
     step: float
 
     def __post_init__(self) -> None:
         for field in fields(self):
             if field.name != "step":
-                kind = np.int64 if field.name in _TOTALS else np.float64
+                whole = field.name in (*_TOTALS, "loose_row", "loose_interval")
+                kind = np.int64 if whole else np.float64
                 object.__setattr__(self, field.name, read_only(getattr(self, field.name), kind))
 
     @property
@@ -127,11 +137,15 @@ class ExitStatistics:
                 "neighbours in order; use slice(start, stop)"
             )
         cut = slice(start, stop)
+        kept = (self.loose_interval >= start) & (self.loose_interval < stop)
         return replace(
             self,
             thresholds=self.thresholds[start : stop + 1],
             **{name: getattr(self, name)[:, cut] for name in _PER_ROW},
             **{name: getattr(self, name)[cut] for name in _TOTALS},
+            loose_row=self.loose_row[kept],
+            loose_interval=self.loose_interval[kept] - start,
+            loose_log=self.loose_log[kept],
         )
 
     def merge(self, other: "ExitStatistics") -> "ExitStatistics":
@@ -150,7 +164,9 @@ class ExitStatistics:
             )
         joined = {n: np.concatenate([getattr(self, n), getattr(other, n)]) for n in (*_PER_ROW, "weight")}
         added = {n: getattr(self, n) + getattr(other, n) for n in _TOTALS}
-        return replace(self, **joined, **added)
+        loose = {n: np.concatenate([getattr(self, n), getattr(other, n)]) for n in _LOOSE[1:]}
+        rows = np.concatenate([self.loose_row, other.loose_row + self.weight.size])
+        return replace(self, **joined, **added, **loose, loose_row=rows)
 
 
 def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> ExitStatistics:
@@ -189,12 +205,25 @@ def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Exi
     totals = np.zeros((3, thresholds.size - 1), dtype=np.int64)
     levels = guarded_levels(thresholds, tracks.planar)
     position = np.ascontiguousarray(tracks.position, dtype=float)
-    exit_pass(position, bool(tracks.planar), spans, rows, levels, sums, totals)
+    found = []
+    for chosen in np.array_split(np.arange(len(spans)), max(1, -(-len(spans) // _BLOCK))):
+        loose = np.empty((chosen.size * (thresholds.size - 1), 3))
+        part = (spans[chosen], rows[chosen])
+        count = exit_pass(position, bool(tracks.planar), *part, levels, sums, totals, loose)
+        found.append(_spread(loose[:count], part[1]))
     sums[1] *= tracks.step
     return ExitStatistics(
         thresholds,
         **dict(zip(_PER_ROW, sums, strict=True)),
         weight=weight,
         **dict(zip(_TOTALS, totals, strict=True)),
+        **dict(zip(_LOOSE, np.concatenate(found, axis=1), strict=True)),
         step=float(tracks.step),
     )
+
+
+def _spread(loose: np.ndarray, rows: np.ndarray) -> np.ndarray:
+    """Unfinished passages (3, m) as row, interval and ln(r / delta), once for each row of their pair."""
+    pair_rows = rows[loose[:, 0].astype(np.int64)]
+    entry, column = np.nonzero(pair_rows >= 0)
+    return np.stack([pair_rows[entry, column].astype(float), loose[entry, 1], loose[entry, 2]])

@@ -132,14 +132,15 @@ def _walk(position, planar, span, levels, table):
 
 
 @njit(cache=True, error_model="numpy")
-def exit_pass(position, planar, spans, rows, levels, sums, totals):
-    """Add the passages of every pair.
+def exit_pass(position, planar, spans, rows, levels, sums, totals, loose):
+    """Add the passages of every pair; the number of unfinished ones written to `loose`.
 
     `sums` (4, n_row, n): exits, steps at risk, gain, unfinished gain. `totals` (3, n): passages, zero-length
-    exits, censored passages.
+    exits, censored passages. `loose` (n_pair n, 3): pair, interval and last ln(r / delta_n) of unfinished ones.
     """
     n_interval = levels.shape[1] - 1
     table = np.empty((n_interval, 4))
+    n_loose = 0
     for p in range(spans.shape[0]):
         table[:] = 0.0
         _walk(position, planar, spans[p], levels, table)
@@ -150,6 +151,10 @@ def exit_pass(position, planar, spans, rows, levels, sums, totals):
             totals[0, n] += 1
             totals[1, n] += exited and table[n, STEPS] == 0.0
             totals[2, n] += not exited
+            if not exited:
+                loose[n_loose, 0], loose[n_loose, 1] = p, n
+                loose[n_loose, 2] = table[n, UNFINISHED] * math.log(levels[0, n + 1] / levels[0, n])
+                n_loose += 1
             for k in range(3):
                 row = rows[p, k]
                 if row >= 0:
@@ -157,6 +162,7 @@ def exit_pass(position, planar, spans, rows, levels, sums, totals):
                     sums[1, row, n] += table[n, STEPS]
                     sums[2, row, n] += table[n, GAIN]
                     sums[3, row, n] += table[n, UNFINISHED]
+    return n_loose
 
 
 @njit(cache=True, error_model="numpy")
