@@ -10,6 +10,7 @@ from regimes.fixes.record import Cleaning, Fixes, Source
 from regimes.fixes.rows import Rows
 from regimes.fixes.speeds import default_limit, distances, impossible_fixes
 
+_MOST_BAD = 0.3  # share of the fixes beyond which they cannot be what they claim to be
 _SAME_PLACE = 4.0  # position errors within which two fixes of one time are one fix
 _METRES_PER_DEGREE = 111_320.0
 
@@ -142,7 +143,7 @@ def _one_place_per_time(rows: Rows, quality: Quality) -> tuple[Rows, list[Cleani
     apart = distances(rows.position[leader], rows.position, rows.planar)
     tolerance = max(_SAME_PLACE * quality.position_error, 0.2)
     conflict = (np.bincount(group, weights=apart > tolerance) > 0)[group]
-    if conflict.sum() > len(conflict) / 2:
+    if conflict.mean() > _MOST_BAD:
         at = int(np.argmax(conflict))
         raise DataError(
             f"{conflict.sum()} of {len(conflict)} fixes share particle and time with another at a different "
@@ -164,10 +165,11 @@ def _possible_speeds(rows: Rows, quality: Quality) -> tuple[Rows, list[Cleaning]
     columns = (rows.particle, rows.time, rows.position, rows.planar)
     limit = quality.highest_speed or default_limit(*columns)
     bad, jumps = impossible_fixes(*columns, limit, quality.position_error)
-    if bad.sum() > len(bad) / 2:
+    if bad.mean() > _MOST_BAD:
         raise DataError(
             f"{bad.sum()} of {len(bad)} fixes need a speed above {limit:.3g} m/s; check the units of time "
-            "and position and the particle column, or raise observations.highest_speed_m_s"
+            "and position, whether the particle column names a single particle, and "
+            "observations.highest_speed_m_s"
         )
     return _kept(rows, ~bad), [
         Cleaning("impossible speeds", int(bad.sum()), f"need more than {limit:.3g} m/s; dropped"),

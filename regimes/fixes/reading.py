@@ -69,8 +69,9 @@ def read_fixes(
     except DataError as error:
         raise DataError(f"{path}: {_without(str(error), path)}") from error
     except (OSError, EOFError, zlib.error, ValueError, KeyError) as error:
+        reason = _first_line(error, path)
         raise DataError(
-            f"{path}: cannot be read as {name} ({error}); is it damaged or another format?"
+            f"{path}: cannot be read as {name} ({reason}); is it damaged or another format?"
         ) from error
     try:
         return cleaned(rows, quality, Source(str(path), checksum))
@@ -131,6 +132,12 @@ def _reader(path: Path) -> tuple[str, Callable[[Path, Columns], Rows]]:
     if path.is_file() and path.stat().st_size == 0:
         raise DataError(f"{path}: the file is empty")
     return name, reader
+
+
+def _first_line(error: Exception, path: Path) -> str:
+    """What another library had to say, without the path and in no more than 100 characters."""
+    text = (str(error).strip() or type(error).__name__).splitlines()[0].replace(str(path), "it")
+    return text if len(text) <= 100 else text[:97] + "..."
 
 
 def _without(text: str, path: Path) -> str:
