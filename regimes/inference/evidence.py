@@ -48,7 +48,7 @@ def bridge(log_posterior, draws, log_values, seed: int, size: int = 3000) -> tup
     rng = np.random.default_rng(seed)
     order = rng.permutation(len(draws))
     fit, use = order[: len(order) // 2], order[len(order) // 2 :]
-    proposal = _Mixture(draws[fit], rng)
+    proposal = Mixture(draws[fit], rng)
     tried = proposal.sample(size, rng)
     log_p2, log_q2 = log_posterior(tried), proposal.log_density(tried)
     log_p1, log_q1 = log_values[use], proposal.log_density(draws[use])
@@ -67,7 +67,7 @@ def bridge(log_posterior, draws, log_values, seed: int, size: int = 3000) -> tup
     raise FitError(f"bridge sampling: got a last change of {moved:.1e} in ln Z after 200 rounds; must be below 1e-8")
 
 
-class _Mixture:
+class Mixture:
     """Gaussian kernels around draws, with one wide Gaussian for the tails."""
 
     def __init__(self, draws, rng: np.random.Generator):

@@ -16,7 +16,7 @@ class Health:
     Parameters
     ----------
     rhat_max : float
-        Largest split R-hat over the parameters, walkers being the chains.
+        Largest split R-hat over the parameters, groups of walkers being the chains.
     ess_min : float
         Smallest effective sample size over the parameters.
     lengths_min : float
@@ -59,8 +59,8 @@ def worst(healths) -> Health:
     )
 
 
-def split_rhat(chains) -> float:
-    r"""Split R-hat of one parameter.
+def rhat_of_chains(chains) -> float:
+    r"""R-hat of one parameter, for chains already split in time.
 
     .. math:: \hat R = \sqrt{\frac{(n-1) W / n + B / n}{W}}
 
@@ -78,16 +78,15 @@ def split_rhat(chains) -> float:
     Gelman et al. (2013) Bayesian Data Analysis, 3rd ed., equation 11.4.
     """
     chains = np.asarray(chains, float)
-    half = chains.shape[1] // 2
-    parts = np.concatenate([chains[:, :half], chains[:, -half:]])
-    within = parts.var(axis=1, ddof=1).mean()
-    between = half * parts.mean(axis=1).var(ddof=1)
+    n = chains.shape[1]
+    within = chains.var(axis=1, ddof=1).mean()
+    between = n * chains.mean(axis=1).var(ddof=1)
     if within == 0:
         return 1.0 if between == 0 else np.inf
-    return float(np.sqrt(((half - 1) * within / half + between / half) / within))
+    return float(np.sqrt(((n - 1) * within / n + between / n) / within))
 
 
-def judge(draws, autocorrelation_time) -> Health:
+def judge(draws, autocorrelation_time, groups: int = 4) -> Health:
     """Health of an ensemble.
 
     Parameters
@@ -95,6 +94,8 @@ def judge(draws, autocorrelation_time) -> Health:
     draws : (n_walker, n_step, size) float array
     autocorrelation_time : (size,) float array
         In steps, averaged over walkers.
+    groups : int
+        Walkers are pooled into so many chains, each split in time, since one walker of an ensemble is short.
 
     Returns
     -------
@@ -104,5 +105,7 @@ def judge(draws, autocorrelation_time) -> Health:
     tau = np.asarray(autocorrelation_time, float)
     if not np.all(np.isfinite(tau)):
         return Health(np.inf, 0.0, 0.0)
-    rhat = max(split_rhat(draws[:, :, j]) for j in range(size))
+    even = draws[: walkers - walkers % groups].reshape(groups, -1, steps, size)
+    halves = np.concatenate([even[:, :, : steps // 2], even[:, :, -(steps // 2) :]]).reshape(2 * groups, -1, size)
+    rhat = max(rhat_of_chains(halves[:, :, j]) for j in range(size))
     return Health(rhat, float(walkers * steps / tau.max()), float(steps / tau.max()))

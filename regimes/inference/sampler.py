@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import emcee
 import numpy as np
 
-from regimes.inference.health import Health, judge
+from regimes.inference.health import LEAST_LENGTHS, Health, judge
 
 
 @dataclass(frozen=True, slots=True)
@@ -25,7 +25,7 @@ class Chain:
     health: Health
 
 
-def sample(log_posterior, start, seed: int, block: int = 1000, longest: int = 12000) -> Chain:
+def sample(log_posterior, start, seed: int, block: int = 600, longest: int = 12000) -> Chain:
     """Sample until the chain is healthy or as long as it may get.
 
     Parameters
@@ -33,10 +33,10 @@ def sample(log_posterior, start, seed: int, block: int = 1000, longest: int = 12
     log_posterior : callable
         From (m, size) parameters to (m,) values; -inf outside the prior.
     start : (n_walker, size) float array
-        Starting places with finite posterior, all different.
+        Starting places with finite posterior, all different, drawn from about the posterior.
     seed : int
     block, longest : int
-        Steps between looks at the convergence, and the most steps after burn-in.
+        Steps before the first look at the convergence, and the most steps after burn-in.
 
     Returns
     -------
@@ -46,17 +46,18 @@ def sample(log_posterior, start, seed: int, block: int = 1000, longest: int = 12
     walkers, size = start.shape
     moves = [(emcee.moves.DEMove(), 0.8), (emcee.moves.DESnookerMove(), 0.1), (emcee.moves.StretchMove(), 0.1)]
     sampler = emcee.EnsembleSampler(walkers, size, log_posterior, moves=moves, vectorize=True)
-    generator = np.random.RandomState(seed % 2**32)  # noqa: NPY002 - the state that emcee takes
-    sampler.random_state = generator.get_state()
-    state = sampler.run_mcmc(start, max(200, block // 4))
+    sampler.random_state = np.random.RandomState(seed % 2**32).get_state()  # noqa: NPY002 - what emcee takes
+    state = sampler.run_mcmc(start, block // 3)
     sampler.reset()
+    wanted = block
     while True:
-        state = sampler.run_mcmc(state, block)
+        state = sampler.run_mcmc(state, wanted)
         draws = sampler.get_chain()
         tau = emcee.autocorr.integrated_time(draws, tol=0, quiet=True)
         health = judge(np.swapaxes(draws, 0, 1), tau)
-        if health.ok or draws.shape[0] >= longest:
+        length = draws.shape[0]
+        if health.ok or length >= longest:
             break
-        block = min(draws.shape[0], longest - draws.shape[0])
+        lacking = 1.15 * LEAST_LENGTHS * float(np.max(tau)) - length if np.all(np.isfinite(tau)) else block
+        wanted = int(min(max(lacking, block // 2), longest - length))
     return Chain(np.swapaxes(draws, 0, 1), sampler.get_log_prob().T, health)
-

@@ -9,7 +9,7 @@ from scipy.special import gammaln
 from regimes.theory.exit_times import mean_exit_times
 
 
-@njit(cache=True)
+@njit(cache=True, nogil=True)
 def log_likelihood_batch(thresholds, exits, risk, dispersion, exponents, breaks, log_rate, reference):
     """Quasi-log-likelihood of many kernels: rows of `exponents` and `breaks`, one `log_rate` each."""
     out = np.empty(log_rate.size)
@@ -73,7 +73,7 @@ class ExitRateLikelihood:
         return 2.0 * np.sum(entropy - (exits - ratio), axis=-1) / self.dispersion
 
 
-@njit(cache=True)
+@njit(cache=True, nogil=True)
 def grid_log_evidence(thresholds, exits, risk, dispersion, exponents, breaks, reference):
     """ln of the likelihood integrated over ln rate, and the gamma rate that goes with it, per grid point.
 
