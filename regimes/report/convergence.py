@@ -1,0 +1,55 @@
+"""Rows of the page that compare the two curves and show how well each model was sampled."""
+
+import numpy as np
+
+from regimes.analysis import Analysis
+from regimes.inference.record import Fit, Inference
+from regimes.report.digits import fixed, probability, rounded, spread
+from regimes.report.words import CURVES, sequence
+from regimes.units import KM
+
+
+def opinion_rows(analysis: Analysis) -> list[dict[str, object]]:
+    """What each curve says on its own: leading sequences, transitions, free exponents."""
+    return [_opinion(inference) for inference in analysis.fits.values()]
+
+
+def _opinion(inference: Inference) -> dict[str, object]:
+    p = inference.sequence_probability()
+    order = np.argsort(-p)[:3]
+    leading = [(sequence(inference.named[i].model.pieces), probability(float(p[i]))) for i in order]
+    moves = []
+    for transition in inference.transitions()[:3]:
+        low, middle, high = np.percentile(transition.draws / KM, (16, 50, 84))
+        sigma = spread(low, high)
+        words = f"{sequence((transition.lower, transition.upper))}: {rounded(middle, sigma)} \u00b1 {rounded(sigma, sigma)} km"
+        moves.append((words, probability(transition.probability)))
+    return {
+        "curve": CURVES[inference.curve],
+        "leading": leading,
+        "transitions": moves,
+        "challenge": fixed(inference.challenge, 1),
+        "dispersion": fixed(inference.dispersion, 2),
+    }
+
+
+def convergence_rows(analysis: Analysis) -> list[tuple[str, ...]]:
+    """One row per sampled model: curve, pieces, ln evidence, split R-hat, effective draws, length, verdict."""
+    rows = []
+    for inference in analysis.fits.values():
+        fits = [fit for fit in (*inference.named, *inference.free) if fit.health is not None]
+        for fit in sorted(fits, key=lambda fit: -fit.log_evidence):
+            rows.append((CURVES[inference.curve], *_row(fit)))
+    return rows
+
+
+def _row(fit: Fit) -> tuple[str, ...]:
+    health = fit.health
+    return (
+        sequence(fit.model.pieces),
+        f"{fixed(fit.log_evidence, 2)} \u00b1 {fixed(fit.log_evidence_error, 2)}",
+        fixed(health.rhat_max, 3),
+        fixed(health.ess_min, 0),
+        fixed(health.lengths_min, 0),
+        "good" if health.ok else health.reason,
+    )

@@ -1,0 +1,76 @@
+"""Numbers printed to the digits that their uncertainty supports."""
+
+import math
+
+SIGNIFICANT = 2  # digits of the uncertainty that are printed; common practice, no source
+THIN_SPACE = "\u202f"
+MISSING = "not determined"
+
+
+def decimals(uncertainty: float) -> int:
+    """Decimal places that leave two significant digits of an uncertainty; negative rounds to tens and so on.
+
+    Parameters
+    ----------
+    uncertainty : float
+        Positive and finite.
+    """
+    exponent = int(f"{uncertainty:.{SIGNIFICANT - 1}e}".split("e")[1])
+    return SIGNIFICANT - 1 - exponent
+
+
+def fixed(value: float, places: int) -> str:
+    """`value` with so many decimal places; a negative number rounds to tens, hundreds, ..."""
+    if not math.isfinite(value):
+        return MISSING
+    text = f"{round(value, places):.{max(places, 0)}f}"
+    return text[1:] if text.startswith("-") and float(text) == 0 else text
+
+
+def significant(value: float, digits: int = SIGNIFICANT) -> str:
+    """`value` to so many significant digits, never in powers of ten."""
+    if not math.isfinite(value):
+        return MISSING
+    if value == 0:
+        return "0"
+    exponent = int(f"{abs(value):.{digits - 1}e}".split("e")[1])
+    return fixed(value, digits - 1 - exponent)
+
+
+def rounded(value: float, uncertainty: float) -> str:
+    """`value` to the last place of two significant digits of `uncertainty`; three digits where that is nothing."""
+    if not math.isfinite(value):
+        return MISSING
+    if not (math.isfinite(uncertainty) and uncertainty > 0):
+        return significant(value, 3)
+    return fixed(value, decimals(uncertainty))
+
+
+def spread(low: float, high: float, level: int = 68) -> float:
+    """Standard deviation of the normal distribution whose central 68 or 95 % interval this is."""
+    return (high - low) / {68: 2.0, 95: 3.92}[level]
+
+
+def between(low: float, high: float, uncertainty: float) -> str:
+    """An interval in words: ``"10.1 to 15.2"``."""
+    return f"{rounded(low, uncertainty)} to {rounded(high, uncertainty)}"
+
+
+def span(low: float, high: float) -> str:
+    """A range whose ends are not uncertain, to two significant digits: ``"1.2 to 150"``."""
+    return f"{significant(low)} to {significant(high)}"
+
+
+def probability(value: float) -> str:
+    """A probability to two places; near the ends ``"> 0.99"`` and ``"< 0.01"``."""
+    if not math.isfinite(value):
+        return MISSING
+    if value > 0.99:
+        return "> 0.99"
+    return "< 0.01" if value < 0.01 else f"{value:.2f}"
+
+
+def count(number: int) -> str:
+    """A whole number in groups of three from five digits on."""
+    text = f"{number:,}"
+    return text.replace(",", "" if abs(number) < 10_000 else THIN_SPACE)

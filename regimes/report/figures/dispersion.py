@@ -1,0 +1,140 @@
+"""Relative dispersion and mean log separation against time."""
+
+import numpy as np
+from matplotlib.axes import Axes
+
+from regimes.analysis import Analysis
+from regimes.curves import Curve
+from regimes.report.figures.style import BLUE, COLOUR, GREEN, INK, LINE, VERMILION, figure_function, log_axis
+from regimes.units import DAY, KM
+
+LAWS = {"richardson": (3.0, "Richardson $t^{3}$"), "ballistic": (2.0, "ballistic $t^{2}$"), "diffusive": (1.0, "diffusive $t$")}
+
+
+@figure_function
+def plot_dispersion(analysis: Analysis, ax: Axes) -> Axes:
+    """Relative dispersion since the start of each pair, total and by component, with cluster errors.
+
+    Parameters
+    ----------
+    analysis : Analysis
+    ax : matplotlib Axes, optional
+        A new figure without it.
+
+    Returns
+    -------
+    matplotlib Axes
+    """
+    statistics = analysis.dispersion
+    _axes(ax, "time since the start of the pair (days)", "relative dispersion (km²)")
+    for curve, marker, colour, label, shift in (
+        (statistics.east(), "^", VERMILION, "east", 0.97),
+        (statistics.north(), "s", GREEN, "north", 1.03),
+        (statistics.relative_dispersion(), "o", INK, "total, 95 %", 1.0),
+    ):
+        x, y, low, high = _log_bars(curve)
+        style = {"ms": 4.2, "mfc": colour if marker == "o" else "white", "mec": colour}
+        ax.errorbar(
+            x * shift / DAY, y / KM**2, np.stack([y - low, high - y]) / KM**2, fmt=marker, color=colour, elinewidth=0.9,
+            label=label, **style,
+        )  # fmt: skip
+    _finish(ax)
+    _laws(ax)
+    return ax
+
+
+@figure_function
+def plot_passage(analysis: Analysis, ax: Axes) -> Axes:
+    """Relative dispersion since first passage, with what the kernels of the exit-rate fit predict.
+
+    Parameters
+    ----------
+    analysis : Analysis
+    ax : matplotlib Axes, optional
+        A new figure without it.
+
+    Returns
+    -------
+    matplotlib Axes
+    """
+    _axes(ax, _since(analysis), "relative dispersion (km²)")
+    _band(ax, analysis, analysis.bands.dispersion / KM**2)
+    x, y, low, high = _log_bars(analysis.passage_dispersion.relative_dispersion())
+    _data(ax, x, y / KM**2, low / KM**2, high / KM**2)
+    _finish(ax)
+    return ax
+
+
+@figure_function
+def plot_mean_log(analysis: Analysis, ax: Axes) -> Axes:
+    """Geometric mean separation since first passage, with what the kernels of the exit-rate fit predict.
+
+    Parameters
+    ----------
+    analysis : Analysis
+    ax : matplotlib Axes, optional
+        A new figure without it.
+
+    Returns
+    -------
+    matplotlib Axes
+    """
+    _axes(ax, _since(analysis), "geometric mean separation (km)")
+    _band(ax, analysis, np.exp(analysis.bands.mean_log) / KM)
+    curve = analysis.passage_dispersion.mean_log_separation()
+    margin = 1.96 * np.nan_to_num(curve.standard_error)
+    show = np.isfinite(curve.value)
+    value, margin = curve.value[show], margin[show]
+    _data(ax, curve.axis[show], *(np.exp(value + k * margin) / KM for k in (0, -1, 1)))
+    _finish(ax)
+    return ax
+
+
+def _since(analysis: Analysis) -> str:
+    return f"time since first passage of {analysis.passage_separation / KM:.3g} km (days)"
+
+
+def _axes(ax: Axes, x: str, y: str) -> None:
+    ax.set_xscale("log")
+    ax.set_yscale("log")
+    ax.set_xlabel(x)
+    ax.set_ylabel(y)
+
+
+def _log_bars(curve: Curve) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+    """Axis, value and 95 % ends, from the error of the logarithm; no bar where there is no error."""
+    show = np.isfinite(curve.value) & (curve.value > 0) & (curve.axis > 0)
+    value = curve.value[show]
+    factor = np.exp(1.96 * np.nan_to_num(curve.standard_error[show]) / value)
+    return curve.axis[show], value, value / factor, value * factor
+
+
+def _band(ax: Axes, analysis: Analysis, rows: np.ndarray) -> None:
+    t = analysis.bands.times / DAY
+    ax.fill_between(t, rows[0], rows[4], color=BLUE, alpha=0.18, lw=0, label="predicted, 95 %")
+    ax.fill_between(t, rows[1], rows[3], color=BLUE, alpha=0.28, lw=0, label="predicted, 68 %")
+    ax.plot(t, rows[2], color=BLUE)
+
+
+def _data(ax: Axes, x: np.ndarray, y: np.ndarray, low: np.ndarray, high: np.ndarray) -> None:
+    bars = np.stack([y - low, high - y])
+    ax.errorbar(x / DAY, y, bars, fmt="o", ms=4.5, color=INK, elinewidth=1.0, label="data, 95 %", zorder=3)
+
+
+def _finish(ax: Axes) -> None:
+    ax.autoscale_view()
+    log_axis(ax.xaxis)
+    log_axis(ax.yaxis)
+    ax.legend(loc="upper left", borderaxespad=0.2, labelspacing=0.3)
+
+
+def _laws(ax: Axes) -> None:
+    """Slopes of the late laws of three regimes as a fan in the empty lower right corner."""
+    (x_low, x_high), (y_low, y_high) = np.log10(ax.get_xlim()), np.log10(ax.get_ylim())
+    start = np.array([x_high - 0.42 * (x_high - x_low), y_low + 0.05 * (y_high - y_low)])
+    aspect = ax.bbox.height / ax.bbox.width
+    for name, (slope, words) in LAWS.items():
+        run = np.array([1.0 / (x_high - x_low), slope * aspect / (y_high - y_low)])
+        end = start + 0.2 / np.hypot(*run) * np.array([1.0, slope])
+        ax.plot(*10.0 ** np.stack([start, end], axis=1), color=COLOUR[name], ls=LINE[name], zorder=1)
+        ax.annotate(words, 10.0**end, xytext=(4, 0), textcoords="offset points", va="center", fontsize=9.5)

@@ -1,0 +1,106 @@
+"""The report folder: complete or not there."""
+
+import json
+import os
+import shutil
+import tempfile
+from pathlib import Path
+
+from regimes.analysis import Analysis
+from regimes.errors import CaseError
+from regimes.report.figures import FIGURES, draw, pdf, svg
+from regimes.report.page import page
+from regimes.report.posterior import write_posterior
+from regimes.report.tables import write_curves_csv, write_curves_netcdf, write_tex
+from regimes.report.verdict_json import verdict_text
+
+FILES = ("report.html", "verdict.json", "curves.csv", "curves.nc", "posterior.nc", "table.tex")
+FIGURE_FILES = tuple(f"figures/{name}.{suffix}" for name in FIGURES for suffix in ("svg", "pdf"))
+
+
+def write_report(analysis: Analysis, folder: str | Path) -> dict[str, Path]:
+    """Write the page, the figures, the tables and the draws.
+
+    Everything is written to a folder beside the final one and moved when it is complete.
+
+    Parameters
+    ----------
+    analysis : Analysis
+    folder : str or Path
+        New, empty, or an earlier report with nothing else in it, which is replaced.
+
+    Returns
+    -------
+    dict of str to Path
+        Every file by its name relative to the folder.
+
+    Raises
+    ------
+    CaseError
+        If the folder holds anything but an earlier report, or cannot be written.
+    """
+    folder = check_folder(folder)
+    try:
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        with tempfile.TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
+            new = Path(scratch) / "new"
+            new.mkdir()
+            _write_all(analysis, new)
+            if folder.exists():
+                os.replace(folder, Path(scratch) / "old")
+            os.replace(new, folder)
+    except OSError as error:
+        raise CaseError(
+            f"report folder: got {folder}, which cannot be written ({error.strerror or error}); "
+            "must be a place where files may be created; choose another with --out"
+        ) from error
+    return {name: folder / name for name in (*FILES, *FIGURE_FILES)}
+
+
+def check_folder(folder: str | Path) -> Path:
+    """The folder as an absolute path, if a report may be written there.
+
+    Raises
+    ------
+    CaseError
+        If something else is there.
+    """
+    folder = Path(folder).resolve()
+    if not folder.exists():
+        return folder
+    if not folder.is_dir():
+        raise CaseError(f"report folder: got {folder}, which is a file; must be a folder; choose another with --out")
+    found = {path.relative_to(folder).as_posix() for path in folder.rglob("*") if not path.is_dir()}
+    if not found:
+        return folder
+    foreign = sorted(found - {*FILES, *FIGURE_FILES})
+    if foreign or not _is_report(folder / "verdict.json"):
+        what = f"{foreign[0]} in it" if foreign else "no verdict.json of an earlier report in it"
+        raise CaseError(
+            f"report folder: got {folder} with {what}; must be new, empty, or hold an earlier report and nothing else; "
+            "choose another with --out, or move the other files away"
+        )
+    return folder
+
+
+def _is_report(path: Path) -> bool:
+    try:
+        return "schema" in json.loads(path.read_text(encoding="utf-8"))
+    except (OSError, ValueError, TypeError):
+        return False
+
+
+def _write_all(analysis: Analysis, folder: Path) -> None:
+    (folder / "figures").mkdir()
+    drawings = {}
+    for name in FIGURES:
+        figure = draw(name, analysis)
+        drawings[name] = svg(figure, name)
+        (folder / "figures" / f"{name}.svg").write_text(drawings[name], encoding="utf-8")
+        (folder / "figures" / f"{name}.pdf").write_bytes(pdf(figure, name))
+    write_curves_csv(analysis, folder / "curves.csv")
+    write_curves_netcdf(analysis, folder / "curves.nc")
+    write_posterior(analysis, folder / "posterior.nc")
+    write_tex(analysis, folder / "table.tex")
+    (folder / "report.html").write_text(page(analysis, drawings), encoding="utf-8")
+    (folder / "verdict.json").write_text(verdict_text(analysis), encoding="utf-8")

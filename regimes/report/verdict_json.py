@@ -1,0 +1,131 @@
+"""The verdict as a plain document for other programs; `verdict.schema.json` describes it."""
+
+import json
+import math
+from typing import Any
+
+import numpy as np
+
+from regimes.analysis import Analysis
+from regimes.units import KM
+from regimes.verdict.record import BySeparation, Interval, Slope, TransitionScale
+
+SCHEMA = 1
+_LEVELS = ("median", "lo68", "hi68", "lo95", "hi95")
+
+
+def verdict_document(analysis: Analysis) -> dict[str, Any]:
+    """Everything the verdict says, in plain types.
+
+    Parameters
+    ----------
+    analysis : Analysis
+
+    Returns
+    -------
+    dict
+        Only dicts, lists, strings, booleans, finite numbers and None (for what is not determined). Lengths in km;
+        slopes and exponents as in the report.
+    """
+    verdict, origin = analysis.verdict, analysis.provenance
+    document = {
+        "schema": SCHEMA,
+        "case": origin.case,
+        "seed": origin.seed,
+        "versions": dict(origin.versions),
+        "input": {
+            "source": origin.source,
+            "sha256": origin.sha256,
+            "n_fixes": origin.n_fixes,
+            "n_particles": origin.n_particles,
+            "n_pairs": origin.n_pairs,
+            "n_clusters": origin.n_clusters,
+        },
+        "decision": verdict.decision,
+        "reasons": list(verdict.reasons),
+        "sentence": verdict.sentence,
+        "methods": verdict.methods,
+        "supported": [
+            {"regime": s.regime, "low_km": s.low / KM, "high_km": s.high / KM} for s in verdict.supported
+        ],
+        "resolved_km": [end / KM for end in verdict.resolved],
+        "limited_by": list(verdict.limited_by),
+        "sequences": [{"regimes": list(s.regimes), "probability": s.probability} for s in verdict.sequences],
+        "by_separation": _by_separation(verdict.by_separation),
+        "challenger": {
+            "log_bayes_factor": verdict.log_bayes_factor,
+            "preferred": verdict.challenger_preferred,
+        },
+        "transitions": [_transition(t) for t in verdict.transitions],
+        "slopes": [_slope(s) for s in verdict.slopes],
+        "fit_p_value": verdict.fit_p_value,
+        "health": {
+            "ok": verdict.healthy,
+            "reason": verdict.health_reason,
+            "rhat_max": verdict.rhat_max,
+            "ess_min": verdict.ess_min,
+        },
+        "cautions": [{"code": c.code, "text": c.text} for c in verdict.cautions],
+    }
+    return plain(document)
+
+
+def verdict_text(analysis: Analysis) -> str:
+    """`verdict_document` as JSON text."""
+    return json.dumps(verdict_document(analysis), indent=1, allow_nan=False, ensure_ascii=False) + "\n"
+
+
+def plain(value: Any) -> Any:
+    """The same in types that JSON knows; numbers that are not finite become None.
+
+    Raises
+    ------
+    TypeError
+        For a type that has no plain form.
+    """
+    if value is None or isinstance(value, str):
+        return value
+    if isinstance(value, bool | np.bool_):
+        return bool(value)
+    if isinstance(value, int | np.integer):
+        return int(value)
+    if isinstance(value, float | np.floating):
+        return float(value) if math.isfinite(value) else None
+    if isinstance(value, dict):
+        return {key: plain(item) for key, item in value.items()}
+    if isinstance(value, list | tuple | np.ndarray):
+        return [plain(item) for item in value]
+    raise TypeError(f"verdict document: got a {type(value).__name__}; must be made of plain types")
+
+
+def _by_separation(by: BySeparation) -> dict[str, Any]:
+    return {
+        "edges_km": by.edges / KM,
+        "separation_km": by.separation / KM,
+        "probability": dict(by.probability),
+        "slope": {"median": by.slope_median, "lo95": by.slope_lo95, "hi95": by.slope_hi95},
+        "exponent": {"median": by.exponent_median, "lo95": by.exponent_lo95, "hi95": by.exponent_hi95},
+    }
+
+
+def _levels(interval: Interval, suffix: str = "", scale: float = 1.0) -> dict[str, float]:
+    return {level + suffix: getattr(interval, level) / scale for level in _LEVELS}
+
+
+def _transition(transition: TransitionScale) -> dict[str, Any]:
+    return {
+        "from": transition.lower,
+        "to": transition.upper,
+        **_levels(transition.scale, "_km", KM),
+        "probability": transition.probability,
+    }
+
+
+def _slope(slope: Slope) -> dict[str, Any]:
+    return {
+        "range_km": [slope.low / KM, slope.high / KM],
+        "curve": slope.curve,
+        **_levels(slope.value),
+        "kind": slope.kind,
+        "reason": slope.reason,
+    }
