@@ -18,7 +18,6 @@ from regimes.tracks import Tracks
 # Longest substep in units of r2 / K, and the shortest that a near transition may ask for.
 PAIR_SUBSTEP = 0.1
 _AT_TRANSITION = 0.003
-GROUP_SUBSTEP = 0.005
 # Pairs that come very close in a kernel that is flat there would need ever shorter substeps.
 _MOST_SUBSTEPS = 1000.0
 
@@ -148,14 +147,14 @@ def kernel_pairs(
     DataError
         If a number is out of range.
     """
-    _check_sizes(n_pair, start_separation, step, n_step)
+    check_sizes(n_pair, start_separation, step, n_step)
     rng = np.random.default_rng(seed)
     position = np.zeros((n_pair, 2, n_step, 3))
     _pairs_walk(kernel_pieces(kernel), float(start_separation), float(step), PAIR_SUBSTEP, rng, position)
-    return _as_tracks_and_pairs(position, step, rng, position_error)
+    return as_tracks_and_pairs(position, step, rng, position_error)
 
 
-def _check_sizes(n_group: int, start_separation: float, step: float, n_step: int) -> None:
+def check_sizes(n_group: int, start_separation: float, step: float, n_step: int) -> None:
     if n_group < 1 or n_step < 2 or not (start_separation > 0 and step > 0):
         raise DataError(
             f"kernel flow: got {n_group} groups, start separation {start_separation:g} m, step {step:g} s, "
@@ -164,7 +163,7 @@ def _check_sizes(n_group: int, start_separation: float, step: float, n_step: int
         )
 
 
-def _as_tracks_and_pairs(
+def as_tracks_and_pairs(
     position: np.ndarray, step: float, rng: np.random.Generator, position_error: float
 ) -> tuple[Tracks, Pairs]:
     """Records for (n_group, n_member, n_time, 3) positions: all pairs within a group, each a cluster."""
