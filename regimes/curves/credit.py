@@ -42,12 +42,11 @@ def credited_exits(statistics: ExitStatistics) -> np.ndarray:
     weight = statistics.weight
     exits, risk = weight @ statistics.exits, weight @ statistics.time_at_risk
     n = exits.size
-    where, level, place = statistics.loose_row, statistics.loose_interval, statistics.loose_log
-    if place.size == 0:
+    where, level, position = statistics.loose_row, statistics.loose_interval, statistics.loose_log
+    if position.size == 0:
         return statistics.exits.copy()
     start = np.log(statistics.thresholds)
-    position = start[level] + place
-    credit, total = np.zeros(place.size), np.zeros(n)
+    credit, total = np.zeros(position.size), np.zeros(n)
     with np.errstate(divide="ignore", invalid="ignore"):
         for _ in range(_ROUNDS):
             mu = risk / np.maximum(exits + total, _LEAST)

@@ -10,7 +10,7 @@ from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
 
-_PER_ROW = ("exits", "time_at_risk", "gain", "unfinished_gain")
+_PER_ROW = ("exits", "time_at_risk", "finished_time")
 _TOTALS = ("passages", "zero_length", "censored")
 _LOOSE = ("loose_row", "loose_interval", "loose_log")
 _BLOCK = 1 << 16  # pairs at a time, so that the table of unfinished passages stays small
@@ -33,10 +33,8 @@ class ExitStatistics:
         E, passages that ended in an exit, zero-length ones included.
     time_at_risk : (n_row, n) float array [s]
         S, duration of all passages, finished or not.
-    gain : (n_row, n) float array
-        Sum over all passages of ln(r_end / r_start) / ln(delta_(n+1) / delta_n).
-    unfinished_gain : (n_row, n) float array
-        Sum over censored passages of ln(r_last / delta_n) / ln(delta_(n+1) / delta_n); may be negative.
+    finished_time : (n_row, n) float array [s]
+        Duration of the passages that ended in an exit.
     weight : (n_row,) float array
         +1 for clusters, -1 for couples of clusters; see `Curve`.
     passages, zero_length, censored : (n,) int arrays
@@ -44,7 +42,7 @@ class ExitStatistics:
     loose_row, loose_interval : (m,) int arrays
         Row and interval of every unfinished passage; a pair of two clusters stands in all its rows.
     loose_log : (m,) float array
-        ln(r_last / delta_n) where the unfinished passage was last seen.
+        ln(r / 1 m) where the unfinished passage was last seen.
     step : float [s]
         Interval between samples.
     """
@@ -52,8 +50,7 @@ class ExitStatistics:
     thresholds: np.ndarray
     exits: np.ndarray
     time_at_risk: np.ndarray
-    gain: np.ndarray
-    unfinished_gain: np.ndarray
+    finished_time: np.ndarray
     weight: np.ndarray
     passages: np.ndarray
     zero_length: np.ndarray
@@ -96,6 +93,15 @@ class ExitStatistics:
         """(n,) share of exits within one sample, which tells where the sampling interval stops resolving."""
         exits = self.passages - self.censored
         return np.divide(self.zero_length, np.where(exits > 0, exits, np.nan))
+
+    @property
+    def textbook_rate(self) -> np.ndarray:
+        """(n,) ln(ratio) over the mean time of the passages that ended in an exit [1/s].
+
+        The usual estimate; too high wherever records end before slow pairs exit.
+        """
+        time = self.weight @ self.finished_time
+        return self.log_ratio * (self.weight @ self.exits) / np.where(time > 0, time, np.nan)
 
     @property
     def censored_fraction(self) -> np.ndarray:
@@ -201,7 +207,7 @@ def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Exi
             "positive numbers, each larger than the one before; sort them and drop repeats"
         )
     spans, rows, weight = spans_and_rows(tracks, pairs)
-    sums = np.zeros((4, weight.size, thresholds.size - 1))
+    sums = np.zeros((3, weight.size, thresholds.size - 1))
     totals = np.zeros((3, thresholds.size - 1), dtype=np.int64)
     levels = guarded_levels(thresholds, tracks.planar)
     position = np.ascontiguousarray(tracks.position, dtype=float)
@@ -211,7 +217,7 @@ def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Exi
         part = (spans[chosen], rows[chosen])
         count = exit_pass(position, bool(tracks.planar), *part, levels, sums, totals, loose)
         found.append(_spread(loose[:count], part[1]))
-    sums[1] *= tracks.step
+    sums[1:] *= tracks.step
     return ExitStatistics(
         thresholds,
         **dict(zip(_PER_ROW, sums, strict=True)),
@@ -223,7 +229,7 @@ def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Exi
 
 
 def _spread(loose: np.ndarray, rows: np.ndarray) -> np.ndarray:
-    """Unfinished passages (3, m) as row, interval and ln(r / delta), once for each row of their pair."""
+    """Unfinished passages (3, m) as row, interval and last ln r, once for each row of their pair."""
     pair_rows = rows[loose[:, 0].astype(np.int64)]
     entry, column = np.nonzero(pair_rows >= 0)
     return np.stack([pair_rows[entry, column].astype(float), loose[entry, 1], loose[entry, 2]])

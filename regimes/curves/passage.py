@@ -21,8 +21,13 @@ def _first_passage(position, planar, spans, separation, begin, distance):
         for t in range(spans[p, 2]):
             i, j = spans[p, 0] + t, spans[p, 1] + t
             r = separation_components(
-                position[i, 0], position[i, 1], position[i, 2],
-                position[j, 0], position[j, 1], position[j, 2], planar,
+                position[i, 0],
+                position[i, 1],
+                position[i, 2],
+                position[j, 0],
+                position[j, 1],
+                position[j, 2],
+                planar,
             )[0]
             if r != r:
                 below = False  # the passage may happen unseen

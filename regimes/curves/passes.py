@@ -18,7 +18,7 @@ _LONGEST_GUARDED = 4.0e6
 
 EXITED, CENSORED = 1.0, 2.0
 # Columns of the table of one pair, a row per threshold interval.
-STATE, STEPS, GAIN, UNFINISHED = range(4)
+STATE, STEPS, LAST = range(3)
 
 
 def spans_and_rows(tracks: Tracks, pairs: Pairs) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
@@ -78,8 +78,8 @@ def _reached(thresholds, r, top):
 
 @njit(cache=True, error_model="numpy")
 def _censor(position, planar, span, passage, table):
-    """Close an unfinished passage (threshold, start, last valid sample, start separation)."""
-    n, start, last, lower, width, r_start = passage
+    """Close an unfinished passage (threshold index, start, last valid sample)."""
+    n, start, last = passage
     r = 0.0
     t = last
     while r <= 0.0:  # two fixes may coincide after rounding; the start lies at or beyond a threshold
@@ -87,8 +87,7 @@ def _censor(position, planar, span, passage, table):
         t -= 1
     table[n, STATE] = CENSORED
     table[n, STEPS] = last - start
-    table[n, GAIN] = math.log(r / r_start) / width
-    table[n, UNFINISHED] = math.log(r / lower) / width
+    table[n, LAST] = math.log(r)
 
 
 @njit(cache=True, error_model="numpy")
@@ -96,14 +95,13 @@ def _walk(position, planar, span, levels, table):
     """First passages of one pair through the thresholds, into a table cleared beforehand."""
     thresholds = levels[0]
     highest = thresholds.size - 1
-    top, start, last, r_start = -1, -1, -1, 0.0  # start < 0: no passage in progress
+    top, start, last = -1, -1, -1  # start < 0: no passage in progress
     blind = True  # the next valid sample opens the record, or follows a gap
     for t in range(span[2]):
         chord2 = _squared_chord(position, span[0] + t, span[1] + t)
         if chord2 != chord2:
             if start >= 0:
-                width = math.log(thresholds[top + 1] / thresholds[top])
-                _censor(position, planar, span, (top, start, last, thresholds[top], width, r_start), table)
+                _censor(position, planar, span, (top, start, last), table)
                 start = -1
             blind = True
             continue
@@ -113,33 +111,31 @@ def _walk(position, planar, span, levels, table):
             if blind:
                 # Thresholds passed out of sight are lost; a record may start exactly on one.
                 if last < 0 and 0 <= reached < highest and r == thresholds[reached]:
-                    start, r_start = t, r
+                    start = t
             elif reached > top:
                 if start >= 0:
                     table[top, STATE], table[top, STEPS] = EXITED, t - start
-                    table[top, GAIN] = math.log(r / r_start) / math.log(thresholds[top + 1] / thresholds[top])
                 for n in range(top + 1, reached):
                     table[n, STATE] = EXITED
-                start, r_start = t, r
+                start = t
             top = reached
             if top == highest:
                 return
             blind = False
         last = t
     if start >= 0:
-        width = math.log(thresholds[top + 1] / thresholds[top])
-        _censor(position, planar, span, (top, start, last, thresholds[top], width, r_start), table)
+        _censor(position, planar, span, (top, start, last), table)
 
 
 @njit(cache=True, error_model="numpy")
 def exit_pass(position, planar, spans, rows, levels, sums, totals, loose):
     """Add the passages of every pair; the number of unfinished ones written to `loose`.
 
-    `sums` (4, n_row, n): exits, steps at risk, gain, unfinished gain. `totals` (3, n): passages, zero-length
-    exits, censored passages. `loose` (n_pair n, 3): pair, interval and last ln(r / delta_n) of unfinished ones.
+    `sums` (3, n_row, n): exits, steps at risk, steps of finished passages. `totals` (3, n): passages, zero-length
+    exits, censored passages. `loose` (n_pair n, 3): pair, interval and ln r at the end of unfinished ones.
     """
     n_interval = levels.shape[1] - 1
-    table = np.empty((n_interval, 4))
+    table = np.empty((n_interval, 3))
     n_loose = 0
     for p in range(spans.shape[0]):
         table[:] = 0.0
@@ -153,15 +149,14 @@ def exit_pass(position, planar, spans, rows, levels, sums, totals, loose):
             totals[2, n] += not exited
             if not exited:
                 loose[n_loose, 0], loose[n_loose, 1] = p, n
-                loose[n_loose, 2] = table[n, UNFINISHED] * math.log(levels[0, n + 1] / levels[0, n])
+                loose[n_loose, 2] = table[n, LAST]
                 n_loose += 1
             for k in range(3):
                 row = rows[p, k]
                 if row >= 0:
                     sums[0, row, n] += exited
                     sums[1, row, n] += table[n, STEPS]
-                    sums[2, row, n] += table[n, GAIN]
-                    sums[3, row, n] += table[n, UNFINISHED]
+                    sums[2, row, n] += table[n, STEPS] if exited else 0.0
     return n_loose
 
 

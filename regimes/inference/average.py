@@ -52,6 +52,12 @@ def probabilities(posteriors) -> np.ndarray:
     return np.exp(log_z - logsumexp(log_z))
 
 
+def mixing_weights(posteriors) -> np.ndarray:
+    """Probabilities to draw from, zero for models that were screened out as negligible."""
+    weight = probabilities(posteriors) * np.array([len(p.draws) > 0 for p in posteriors])
+    return weight / weight.sum()
+
+
 def piece_at(model: Model, draws, separation):
     """Index of the kernel piece that holds at each separation: (n_draw, n_separation) int."""
     moves = np.asarray(draws)[:, 1 + model.n_free :]
@@ -89,8 +95,7 @@ def mixed_slopes(posteriors, separation, size: int, rng: np.random.Generator):
         alpha as fitted: values at or beyond 1 and 3 stand for the saturated kernel exponents 1 and 2;
         NaN where the kernel is diffusive.
     """
-    weight = probabilities(posteriors)
-    count = rng.multinomial(size, weight)
+    count = rng.multinomial(size, mixing_weights(posteriors))
     rows = []
     for n, post in zip(count, posteriors, strict=True):
         if n == 0:

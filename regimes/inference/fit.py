@@ -19,7 +19,7 @@ from regimes.likelihood.separation import SeparationLikelihood
 NEGLIGIBLE = np.log(1e-3)  # share of the evidence below which a model is not sampled
 _MARGIN = 0.5  # of ln evidence, for the error of the screening
 _HOPELESS = 15.0  # ln posterior below the best maximum at which a model is not even screened
-_WALKERS = {"exit_rate": 32, "separation": 20}
+_WALKERS = {"exit_rate": 32, "separation": 24}
 _KEPT = 4000  # draws kept of each model, after thinning
 
 Progress = Callable[[str, int, int], None]
@@ -64,7 +64,10 @@ def exit_rate_space(likelihood: ExitRateLikelihood) -> Space:
     steps = np.diff(np.log(likelihood.thresholds))
     middle = float(np.log(likelihood.exits.sum() * steps.mean() / likelihood.risk.sum()))
     return Space(
-        float(likelihood.thresholds[0]), float(likelihood.thresholds[-1]), float(steps.mean()), (middle - 12, middle + 12)
+        float(likelihood.thresholds[0]),
+        float(likelihood.thresholds[-1]),
+        float(steps.mean()),
+        (middle - 12, middle + 12),
     )
 
 
@@ -169,9 +172,7 @@ def sample_candidates(
         chosen += [(g, i) for i, c in enumerate(group) if c.log_evidence > top + NEGLIGIBLE - _MARGIN]
     fits: dict[tuple[int, int], Fit] = {}
     with ThreadPoolExecutor(max(jobs, 1)) as pool:
-        work = {
-            pool.submit(_sample_one, curve, groups[g][i], seed + 1000 * g + i): (g, i) for g, i in chosen
-        }
+        work = {pool.submit(_sample_one, curve, groups[g][i], seed + 1000 * g + i): (g, i) for g, i in chosen}
         for done, future in enumerate(as_completed(work), 1):
             fits[work[future]] = future.result()
             if progress is not None:
@@ -184,23 +185,19 @@ def sample_candidates(
 def _unsampled(candidate: Candidate) -> Fit:
     size = candidate.posterior.model.size
     value = candidate.log_evidence
-    return Fit(
-        candidate.posterior.model, value, np.nan, value, np.empty((0, 0, size)), np.empty((0, 0)), None
-    )
+    return Fit(candidate.posterior.model, value, np.nan, value, np.empty((0, 0, size)), np.empty((0, 0)), None)
 
 
 def _sample_one(curve: str, candidate: Candidate, seed: int) -> Fit:
     start = _starts(candidate, _WALKERS[curve], seed)
-    block, longest = (600, 12000) if curve == "exit_rate" else (500, 6000)
+    block, longest = (600, 12000) if curve == "exit_rate" else (500, 15000)
     chain = sample(candidate.posterior, start, seed, block, longest)
     walkers, steps, size = chain.draws.shape
     thin = max(1, walkers * steps // _KEPT)
     draws, values = chain.draws[:, ::thin], chain.log_posterior[:, ::thin]
     log_z, error = bridge(candidate.posterior, draws.reshape(-1, size), values.reshape(-1), seed, 1500)
     prior = candidate.posterior.model.log_prior_volume(candidate.posterior.space)
-    return Fit(
-        candidate.posterior.model, log_z, error, candidate.log_evidence, draws, values + prior, chain.health
-    )
+    return Fit(candidate.posterior.model, log_z, error, candidate.log_evidence, draws, values + prior, chain.health)
 
 
 def _starts(candidate: Candidate, walkers: int, seed: int):

@@ -30,11 +30,7 @@ class Health:
     @property
     def ok(self) -> bool:
         """Whether all three criteria hold."""
-        return bool(
-            self.rhat_max < LARGEST_RHAT
-            and self.ess_min > LEAST_ESS
-            and self.lengths_min > LEAST_LENGTHS
-        )
+        return bool(self.rhat_max < LARGEST_RHAT and self.ess_min > LEAST_ESS and self.lengths_min > LEAST_LENGTHS)
 
     @property
     def reason(self) -> str:

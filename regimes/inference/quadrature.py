@@ -107,4 +107,3 @@ def _move_nodes(model: Model, space: Space):
         return axis[:, None]
     ordered = np.array(list(combinations(range(cells), count)))
     return axis[ordered] + space.step * np.arange(count)
-

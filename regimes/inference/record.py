@@ -8,6 +8,8 @@ from regimes.inference.average import Posterior, Transition, probabilities, regi
 from regimes.inference.health import Health, worst
 from regimes.inference.models import Model, Space
 
+_MATTERS = 0.01
+
 
 @dataclass(frozen=True, slots=True)
 class Fit:
@@ -74,8 +76,12 @@ class Inference:
 
     @property
     def health(self) -> Health:
-        """Worst convergence among the sampled models."""
-        return worst(f.health for f in (*self.named, *self.free) if f.health is not None)
+        """Worst convergence among the models that matter: one in a hundred of their group, or more."""
+        found = []
+        for group in (self.named, self.free):
+            share = probabilities([f.posterior for f in group])
+            found += [f.health for f, p in zip(group, share, strict=True) if f.health is not None and p >= _MATTERS]
+        return worst(found)
 
     def named_posteriors(self) -> tuple[Posterior, ...]:
         """Named sequences for averaging."""

@@ -44,9 +44,14 @@ def sample(log_posterior, start, seed: int, block: int = 600, longest: int = 120
         Its `health` says whether it converged; never raises for want of convergence.
     """
     walkers, size = start.shape
-    moves = [(emcee.moves.DEMove(), 0.8), (emcee.moves.DESnookerMove(), 0.1), (emcee.moves.StretchMove(), 0.1)]
+    moves = [
+        (emcee.moves.DEMove(), 0.7),
+        (emcee.moves.DEMove(gamma0=1.0), 0.1),  # whole differences jump between modes
+        (emcee.moves.DESnookerMove(), 0.1),
+        (emcee.moves.StretchMove(), 0.1),
+    ]
     sampler = emcee.EnsembleSampler(walkers, size, log_posterior, moves=moves, vectorize=True)
-    sampler.random_state = np.random.RandomState(seed % 2**32).get_state()  # noqa: NPY002 - what emcee takes
+    sampler.random_state = np.random.RandomState(seed % 2**32).get_state()
     state = sampler.run_mcmc(start, block // 3)
     sampler.reset()
     wanted = block

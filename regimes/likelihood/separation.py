@@ -69,7 +69,8 @@ class SeparationLikelihood:
     Parameters
     ----------
     counts : SeparationCounts
-        Separation bins are the cells of `grid_edges`; starts are first passages of the lowest separation.
+        Separation bins are the cells of `grid_edges`, the two end cells open; starts are first passages of the
+        lowest separation.
     tempering : float
         kappa, magnitude adjustment from the cluster sandwich; one value for all kernels.
 
@@ -86,7 +87,9 @@ class SeparationLikelihood:
         used = np.flatnonzero(self.counts.start_count > 0)
         total = np.ascontiguousarray(np.moveaxis(self.counts.total()[:, used, :], 1, 2))
         starts = np.ascontiguousarray(self.counts.start_log_mean[used])
-        return np.log(self.counts.separation_edges), total, starts, np.ascontiguousarray(self.counts.times)
+        inner = np.log(self.counts.separation_edges[1:-1])
+        log_edges = np.concatenate(([inner[0] - CELL], inner, [inner[-1] + CELL]))
+        return log_edges, total, starts, np.ascontiguousarray(self.counts.times)
 
     def evaluator(self, model, space):
         """Function from parameters (m, size) to tempered log L (m,), prior not included."""
@@ -123,9 +126,7 @@ class SeparationLikelihood:
         )
         used = np.cumsum(self.counts.start_count > 0) - 1
         c = self.counts
-        return np.bincount(
-            c.row, c.count * log_p[c.time, c.separation, used[c.start]], minlength=c.weight.size
-        )
+        return np.bincount(c.row, c.count * log_p[c.time, c.separation, used[c.start]], minlength=c.weight.size)
 
     def tempered(self, model, theta, space) -> "SeparationLikelihood":
         """The likelihood with kappa measured at one model's best parameters.

@@ -1,0 +1,180 @@
+"""From fits to the analysis: numbers, decision, words, bands."""
+
+import platform
+from importlib.metadata import version
+
+import numpy as np
+
+from regimes.analysis import Analysis, Bands, Provenance
+from regimes.curves import DispersionStatistics, default_times, dispersion_statistics
+from regimes.inference.predict import dispersion_bands, fit_p_value, mixed_kernels, rate_band
+from regimes.inference.record import Inference
+from regimes.inference.slope import mixed_slope_over, slope_over
+from regimes.pairs import CHANCE, LAUNCHED, Pairs
+from regimes.pipeline.options import Options
+from regimes.pipeline.rates import Rates, rate_table
+from regimes.tracks import Tracks
+from regimes.verdict.decide import Evidence, decide
+from regimes.verdict.numbers import by_separation, sequences, slope_record, transition_scales
+from regimes.verdict.record import Slope, Supported, Verdict
+from regimes.verdict.words import methods_text, verdict_sentence
+
+_LIBRARIES = ("numpy", "scipy", "numba", "emcee")
+
+
+def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysis:
+    leading, second, missing, moved = fits
+    rng = np.random.default_rng(options.seed)
+    edges = rates.likelihood.thresholds
+    numbers = by_separation(leading, edges, options.seed)
+    other = by_separation(second, edges, options.seed) if second is not None else None
+    slopes = quoted_slopes(rates, leading, second, options, rng)
+    space = leading.space
+    p_named = fit_p_value(rates.likelihood, leading.named_posteriors(), space, options.seed)
+    p_free = fit_p_value(rates.likelihood, leading.free_posteriors(), space, options.seed)
+    evidence = Evidence(
+        leading,
+        second,
+        numbers,
+        other,
+        p_named,
+        p_free,
+        rates.spread.clusters,
+        rates.within_release,
+        slopes,
+        tracks.position_error,
+        float(np.nan_to_num(rates.everything.zero_fraction[rates.resolved.intervals][0])),
+        missing,
+    )
+    decision = decide(evidence)
+    moves = transition_scales(leading)
+    sentence = verdict_sentence(decision, moves, [s for s in slopes if s.curve == "exit_rate"])
+    record = provenance(pairs, tracks, options.seed)
+    facts = _facts(record, rates, options)
+    healths = [f.health for f in (leading, second) if f is not None]
+    verdict = Verdict(
+        decision=decision.decision,
+        reasons=decision.reasons,
+        sentence=sentence,
+        methods=methods_text(facts, leading, decision, sentence, (rates.resolved.low, rates.resolved.high)),
+        supported=tuple(Supported(s.regime, s.low, s.high) for s in decision.supported),
+        sequences=sequences(leading),
+        by_separation=numbers,
+        log_bayes_factor=float(leading.challenge),
+        challenger_preferred=bool(leading.challenge > np.log(20.0)),
+        transitions=moves,
+        slopes=slopes,
+        resolved=(rates.resolved.low, rates.resolved.high),
+        limited_by=rates.resolved.limited_by,
+        fit_p_value=p_named,
+        healthy=all(h.ok for h in healths),
+        health_reason="; ".join(h.reason for h in healths if h.reason),
+        rhat_max=max(h.rhat_max for h in healths),
+        ess_min=min(h.ess_min for h in healths),
+        cautions=decision.cautions,
+    )
+    fitted = {"exit_rate": leading} | ({"separation": second} if second is not None else {})
+    passage = dispersion_of(tracks, moved)
+    return Analysis(
+        provenance=record,
+        rates=rate_table(rates),
+        exponent=rates.everything.curve(),
+        dispersion=dispersion_of(tracks, pairs),
+        passage_dispersion=passage,
+        passage_separation=rates.resolved.low,
+        fits=fitted,
+        bands=bands(leading, rates, moved, passage, rng),
+        verdict=verdict,
+    )
+
+
+def dispersion_of(tracks: Tracks, pairs: Pairs) -> DispersionStatistics:
+    return dispersion_statistics(tracks, pairs, default_times(pairs, tracks.step))
+
+
+def quoted_slopes(rates: Rates, leading: Inference, second, options: Options, rng) -> tuple[Slope, ...]:
+    """Slopes over the wished range and over each range of the best sequence that is not diffusive."""
+    low, high = rates.resolved.low, rates.resolved.high
+    best = leading.named[int(np.argmax(leading.sequence_probability()))]
+    moves = best.posterior.draws[:, 1 + best.model.n_free :]
+    inner = np.exp(np.quantile(moves, 0.16, axis=0)) if moves.size else np.empty(0)
+    outer = np.exp(np.quantile(moves, 0.84, axis=0)) if moves.size else np.empty(0)
+    starts, ends = np.append(low, outer), np.append(inner, high)
+    ranges = [] if options.slope_range is None else [options.slope_range]
+    ranges += [
+        (float(a), float(b))
+        for piece, a, b in zip(best.model.pieces, starts, ends, strict=True)
+        if piece != "diffusive" and b > a
+    ]
+    out = []
+    for a, b in ranges:
+        wished = (a, b) == options.slope_range
+        found = slope_over(rates.likelihood, a, b, rng)
+        if found.kind == "none" and found.reason.startswith("fewer") and not wished:
+            continue
+        out.append(slope_record(found, "exit_rate"))
+        inside = (max(a, low), min(b, high))
+        if second is not None and inside[1] > 2.0 * inside[0]:
+            out.append(slope_record(mixed_slope_over(second.free_posteriors(), *inside, rng), "separation"))
+    return tuple(out)
+
+
+def bands(leading: Inference, rates: Rates, moved: Pairs, passage, rng) -> Bands:
+    space = leading.space
+    ratio = float(np.exp(rates.everything.log_ratio.mean()))
+    grid = np.exp(np.linspace(np.log(space.lowest), np.log(space.highest / ratio), 80))
+    named = mixed_kernels(leading.named_posteriors(), space, 400, rng)
+    free = mixed_kernels(leading.free_posteriors(), space, 400, rng)
+    times = passage.times[passage.times > 0]
+    largest = float(np.nanmax(np.sqrt(passage.relative_dispersion().value)))
+    square, log = dispersion_bands(named[:: max(1, len(named) // 60)], moved.start_separation, times, largest)
+    return Bands(grid, rate_band(named, grid, ratio), rate_band(free, grid, ratio), times, square, log)
+
+
+def provenance(pairs: Pairs, tracks: Tracks, seed: int) -> Provenance:
+    """What can be said of the input without its file."""
+    versions = {"regimes": version("regimes"), "python": platform.python_version()}
+    versions |= {name: version(name) for name in _LIBRARIES}
+    used = np.unique(np.concatenate([pairs.first, pairs.second]))
+    return Provenance(
+        case="in memory",
+        seed=seed,
+        versions=versions,
+        source="memory",
+        sha256="",
+        n_fixes=int(np.sum(~np.isnan(tracks.position[:, 0]))),
+        n_particles=int(used.size),
+        n_pairs=int(pairs.first.size),
+        n_clusters=int(pairs.n_cluster),
+        kind=_kind_of(pairs),
+        step=float(tracks.step),
+        longest_gap=float("nan"),
+        position_error=float(tracks.position_error),
+        max_separation=float(pairs.start_separation.max()),
+        median_start=float(np.median(pairs.start_separation)),
+        start_p90=float(np.quantile(pairs.start_separation, 0.9)),
+        median_duration=float(np.median(pairs.length - 1) * tracks.step),
+        cleaning=(),
+    )
+
+
+def _kind_of(pairs: Pairs) -> str:
+    launched, chance = np.any(pairs.kind == LAUNCHED), np.any(pairs.kind == CHANCE)
+    return "both" if launched and chance else "launched" if launched else "chance"
+
+
+def _facts(record: Provenance, rates: Rates, options: Options) -> dict:
+    """What the methods text mentions."""
+    return {
+        "n_pairs": record.n_pairs,
+        "n_particles": record.n_particles,
+        "n_clusters": record.n_clusters,
+        "clusters": rates.spread.clusters,
+        "kind": record.kind,
+        "max_separation": record.max_separation,
+        "median_duration": record.median_duration,
+        "step": record.step,
+        "ratio": options.ratio,
+        "within_release": rates.within_release,
+        "version": record.versions["regimes"],
+    }
