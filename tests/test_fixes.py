@@ -11,6 +11,7 @@ import xarray as xr
 
 from regimes.errors import CaseError, DataError
 from regimes.fixes import Columns, Fixes, fixes_from_frame, read_fixes, write_fixes
+from regimes.fixes.reading import sha256_of
 
 GEO = Columns(particle="id", time="time", longitude="lon", latitude="lat")
 GEO_RELEASE = Columns(particle="id", time="time", longitude="lon", latitude="lat", release="release")
@@ -102,6 +103,16 @@ def test_names_stay_as_they_are_written(tmp_path):
     frame = iso(drifts()).assign(id=["007"] * 5 + ["NA"] * 3 + ["1e5"] * 4)
     frame.to_csv(tmp_path / "f.csv", index=False)
     assert read_fixes(tmp_path / "f.csv", GEO, 5.0).labels == ("007", "1e5", "NA")
+    frame.assign(id=["007"] * 5 + ["08"] * 7, time=epoch(drifts())).to_csv(tmp_path / "f.csv", index=False)
+    assert read_fixes(tmp_path / "f.csv", GEO, 5.0, highest_speed=1e4).labels == ("007", "08")
+
+
+def test_padding_around_names_goes():
+    frame = drifts()
+    frame["id"] = [name + " " * (k % 3) for k, name in enumerate(frame["id"])]
+    check(fixes_from_frame(frame, GEO, 5.0))
+    frame["id"] = [name.strip().encode() + b"\0" * (k % 2) for k, name in enumerate(frame["id"])]
+    check(fixes_from_frame(frame, GEO, 5.0))
 
 
 def test_numbered_particles_are_in_numerical_order():
@@ -208,12 +219,12 @@ def ragged(**count_attributes):
     )
 
 
-def matrix(fill):
+def matrix(fill, width=6):
     """The fixes as particle x time, padded."""
     flat = table()
     out = {}
     for name in ("time", "lon", "lat"):
-        values = np.full((3, 6), fill)
+        values = np.full((3, width), fill)
         for k, name_of_particle in enumerate(COUNTS):
             own = flat[name].values[flat["id"].values == name_of_particle]
             values[k, : len(own)] = own
@@ -257,13 +268,19 @@ def test_zarr_of_both_formats_without_summary_file(tmp_path, zarr_format):
     np.testing.assert_array_equal(fixes.time, epoch(drifts()))
 
 
-def test_checksum_of_a_folder_sees_content_and_names(tmp_path):
+def test_checksum_of_a_folder_sees_names_and_where_files_end(tmp_path):
+    sums = set()
+    for k, content in enumerate(({"x": "12", "y": ""}, {"x": "1", "y": "2"}, {"x": "1", "z": "2"})):
+        (tmp_path / str(k) / "in").mkdir(parents=True)
+        for name, text in content.items():
+            (tmp_path / str(k) / "in" / name).write_text(text)
+        sums.add(sha256_of(tmp_path / str(k)))
+    assert len(sums) == 3
+
+
+def test_checksum_of_a_store_sees_its_content(tmp_path):
     for name, value in (("a", 1.0), ("b", 1.0), ("c", 2.0)):
-        data = (
-            table()
-            .drop_vars(["id", "release"])
-            .assign(id=("obs", np.repeat([1, 2, 3], list(COUNTS.values()))))
-        )
+        data = table().drop_vars(["id", "release"]).assign(id=("obs", np.repeat([1, 2, 3], list(COUNTS.values()))))
         data["lat"] = data["lat"] + value
         data.to_zarr(tmp_path / f"{name}.zarr", zarr_format=2, consolidated=False)
     sums = [read_fixes(tmp_path / f"{name}.zarr", GEO, 5.0).source.sha256 for name in "abc"]
@@ -293,9 +310,7 @@ def test_one_time_axis_for_all_particles(tmp_path):
         }
     ).set_coords(["time", "lon"])
     data.to_netcdf(tmp_path / "f.nc", engine="h5netcdf")
-    fixes = read_fixes(
-        tmp_path / "f.nc", Columns(particle="p", time="time", longitude="lon", latitude="lat"), 5.0
-    )
+    fixes = read_fixes(tmp_path / "f.nc", Columns(particle="p", time="time", longitude="lon", latitude="lat"), 5.0)
     np.testing.assert_array_equal(fixes.time, np.tile(epoch(drifts())[:4], 2))
     np.testing.assert_array_equal(fixes.position[:, 0], np.arange(8) / 100)
 
@@ -319,25 +334,28 @@ def test_units_of_time(tmp_path, units, origin, unit):
     data["time"] = since((epoch(drifts()) - shift) / unit, units)
     data.to_netcdf(tmp_path / "f.nc", engine="h5netcdf")
     fixes = read_fixes(tmp_path / "f.nc", GEO, 5.0)
-    np.testing.assert_allclose(
-        fixes.time, epoch(drifts()), rtol=0, atol=1e-4
-    )  # round-off of days in a double
+    np.testing.assert_allclose(fixes.time, epoch(drifts()), rtol=0, atol=1e-4)  # round-off of days in a double
 
 
 def test_padding_with_whole_numbers_is_no_time(tmp_path):
-    data = matrix(np.nan)
+    data = matrix(np.nan, width=30)
     times = np.where(np.isnan(data["time"]), -2147483647, data["time"]).astype(np.int32)
     data["time"] = since(times, dims=("trajectory", "obs"))
     data.to_netcdf(tmp_path / "f.nc", engine="h5netcdf")
     fixes = read_fixes(tmp_path / "f.nc", GEO, 5.0)
     check(fixes)
-    assert [(item.reason, item.count) for item in fixes.cleaning] == [("fill-value times", 6)]
+    assert [(item.reason, item.count) for item in fixes.cleaning] == [("fill-value times", 78)]
+
+
+def test_more_padding_than_data(tmp_path):
+    matrix(FILL, width=30).to_netcdf(tmp_path / "f.nc", engine="h5netcdf")
+    fixes = read_fixes(tmp_path / "f.nc", GEO, 5.0)
+    check(fixes)
+    assert [(item.reason, item.count) for item in fixes.cleaning] == [("fill-value times", 78)]
 
 
 def test_kilometres_become_metres(tmp_path):
-    data = table().assign(
-        x_m=("obs", np.arange(12.0), {"units": "km"}), y_m=("obs", np.full(12, -5.0), {"units": "m"})
-    )
+    data = table().assign(x_m=("obs", np.arange(12.0), {"units": "km"}), y_m=("obs", np.full(12, -5.0), {"units": "m"}))
     data.to_netcdf(tmp_path / "f.nc", engine="h5netcdf")
     fixes = read_fixes(tmp_path / "f.nc", PLANE, 5.0)
     np.testing.assert_array_equal(fixes.position[:, 0], np.arange(12) * 1000.0)
@@ -402,9 +420,7 @@ def test_bytes_of_a_written_table(tmp_path):
 
 
 def test_refuses_to_write_another_ending(tmp_path):
-    with pytest.raises(
-        CaseError, match=r"f\.nc: cannot write this ending; known: \.csv, \.csv\.gz, \.parquet"
-    ):
+    with pytest.raises(CaseError, match=r"f\.nc: cannot write this ending; known: \.csv, \.csv\.gz, \.parquet"):
         write_fixes(fixes_from_frame(drifts(), GEO, 5.0), tmp_path / "f.nc")
 
 
@@ -511,6 +527,7 @@ def frame_of(**changes):
             PLANE,
             r"x and y look like degrees: all lie within 360 and move 2\.8e-06 m/s in the median; must be met",
         ),
+        ({"lon": 0.0, "lat": 0.0}, GEO, "all 12 fixes of all 3 particles lie at one point"),
         ({"lon": 1.0, "lat": 2.0}, GEO, "all 12 fixes of all 3 particles lie at one point"),
         (
             {"lon": "10,5"},
@@ -585,9 +602,7 @@ def test_gridded_times_that_cannot_be_used(tmp_path):
         ({"units": "days since 1970-01-01"}, "no seconds since 1970 between 1973 and 2100"),
     ):
         gridded(tmp_path, table().assign(time=("obs", epoch(drifts()), attributes)), message)
-    gridded(
-        tmp_path, table().assign(time=("obs", np.array(["x"] * 12))), "time: holds .*; must hold numbers with"
-    )
+    gridded(tmp_path, table().assign(time=("obs", np.array(["x"] * 12))), "time: holds .*; must hold numbers with")
 
 
 def test_days_of_an_early_epoch_in_the_proleptic_calendar(tmp_path):
@@ -617,22 +632,17 @@ def test_gridded_layouts_that_cannot_be_used(tmp_path):
     deep = table().drop_vars("id").expand_dims(id=2, depth=2)
     gridded(tmp_path, deep, "do not fit together; must be all along one dimension")
     short = ragged(sample_dimension="obs").isel(obs=slice(0, 9))
-    gridded(
-        tmp_path, short, "variable size: counts 12 fixes but dimension obs has 9; the file is damaged or cut"
-    )
-    beyond = (
-        ragged().assign(owner=("obs", np.arange(12), {"instance_dimension": "trajectory"})).drop_vars("size")
-    )
-    gridded(
-        tmp_path, beyond, "variable owner: points beyond dimension trajectory; the file is damaged or cut"
-    )
+    gridded(tmp_path, short, "variable size: counts 12 fixes but dimension obs has 9; the file is damaged or cut")
+    beyond = ragged().assign(owner=("obs", np.arange(12), {"instance_dimension": "trajectory"})).drop_vars("size")
+    gridded(tmp_path, beyond, "variable owner: points beyond dimension trajectory; the file is damaged or cut")
 
 
 def test_rows_of_no_particle_are_left_out_of_ragged_arrays(tmp_path):
-    data = ragged(sample_dimension="obs").pad(obs=(0, 3), constant_values=1.0)
+    data = ragged(sample_dimension="obs").pad(obs=(0, 3), mode="edge")
+    data["time"] = data["time"] + xr.DataArray(np.arange(15) // 12 * 600.0, dims="obs")
     data["time"].attrs = {"units": "seconds since 1970-01-01"}
     data.to_netcdf(tmp_path / "f.nc", engine="h5netcdf")
-    check(read_fixes(tmp_path / "f.nc", GEO, 5.0))
+    check(read_fixes(tmp_path / "f.nc", GEO, 5.0, highest_speed=1e4))
 
 
 @pytest.mark.parametrize(("error", "speed"), [(-1.0, None), (np.nan, None), (5.0, 0.0), (5.0, -2.0)])

@@ -63,6 +63,7 @@ def dirty():
     frame = insert(frame, 70)
     frame = insert(frame, 80, lat=-20.0)
     frame = insert(frame, 90, lat=np.nan)
+    frame = insert(frame, 110, lat=frame.loc[110, "lat"] + 1e-4)
     return insert(frame, 100, id="alone", release="two")
 
 
@@ -96,10 +97,11 @@ def test_names_never_matter():
 
 
 def test_winding_of_longitude_never_matters():
-    frame = dirty()
+    frame = changed(dirty(), 4, lon=-180.0)
     rng = np.random.default_rng(2)
     mixed = np.where(rng.uniform(size=len(frame)) < 0.5, frame["lon"] % 360, frame["lon"])
-    for lon in (frame["lon"] % 360, mixed):
+    edge = frame["lon"].replace(-180.0, np.nextafter(-180.0, -200.0))  # its remainder rounds to 360
+    for lon in (frame["lon"] % 360, mixed, edge):
         got = clean(frame.assign(lon=lon))
         same(got, clean(frame))
         assert counts(got) == counts(clean(frame))
@@ -123,6 +125,13 @@ def test_missing_values():
     fixes = clean(frame)
     assert counts(fixes) == {"missing values": 5}
     assert fixes.n_fix == 235
+
+
+def test_missing_dates():
+    frame = drift()
+    frame["time"] = pd.to_datetime(frame["time"], unit="s", utc=True)
+    frame.loc[7, "time"] = pd.NaT
+    assert counts(clean(frame)) == {"missing values": 1}
 
 
 def test_times_that_cannot_be():
@@ -233,6 +242,19 @@ def test_a_jump_that_persists_is_kept_and_counted():
     assert fixes.n_fix == 240
 
 
+def test_a_fix_is_not_blamed_for_a_jump_that_its_loss_would_hide_or_keep():
+    n = 20
+    frame = pd.DataFrame({"id": "a", "time": T0 + 3600.0 * np.arange(n), "x": 100.0 * np.arange(n), "y": 0.0})
+    # 22 km in an hour: above 5 m/s, but not over two hours.
+    aside = frame.assign(y=np.where(frame.index >= 10, 22e3, 0.0))
+    assert counts(clean(aside, PLANE)) == {"jumps that persist": 1}
+    # 17 km one way at a possible speed, then 60 km back: far off the way, and impossible without it too.
+    bent = frame.assign(x=np.where(frame.index >= 10, 36e3, 100.0 * frame.index), y=0.0)
+    bent.loc[9, "x"] = -16.5e3
+    bent.loc[10:, "y"] = 27e3
+    assert counts(clean(bent, PLANE)) == {"jumps that persist": 1}
+
+
 def test_wrong_fixes_and_jumps_of_several_particles_are_told_apart():
     frame = drift()
     moved = frame.assign(lat=frame["lat"] + np.where((frame["id"] == "d1") & (frame.index >= 90), 1.0, 0.0))
@@ -287,7 +309,7 @@ def test_summary_tells_everything():
     assert [line.split(" (")[0].strip() for line in lines[1:]] == [
         "missing values: 1",
         "rows out of time order: 1",
-        "duplicates: 1",
+        "duplicates: 2",
         "conflicting duplicates: 2",
         "impossible speeds: 1",
         "particles of one fix: 1",

@@ -68,6 +68,16 @@ def test_across_a_pole(sign):
         np.testing.assert_allclose(np.hypot(east, north), r, rtol=1e-12)
 
 
+def test_along_the_equator():
+    # The equator is a circle, so an arc of it is its radius (6378137 m in WGS84) times its angle.
+    degrees = np.array([1e-3, 1.0, 10.0, 20.0, 30.0, 34.0, 36.0, 90.0, 150.0])
+    r, east, _ = separation(
+        to_cartesian(np.full(9, -170.0), np.zeros(9)), to_cartesian(degrees - 170, degrees * 0), False
+    )
+    np.testing.assert_allclose(r, 6378137.0 * np.radians(degrees), rtol=2e-7)  # promised of the series
+    np.testing.assert_allclose(east, r, rtol=1e-12)  # round-off
+
+
 def test_antisymmetric_and_zero_for_one_point():
     start, end, _, _ = geodesics(4, 50, 10.0, 1e6)
     there, back = separation(start, end, False), separation(end, start, False)
@@ -132,5 +142,5 @@ def test_conversions_pass_missing_values_through():
 def test_windings_of_longitude():
     given = [-180.0, 180.0, 540.0, 359.5, -1e-17, 12.3]
     np.testing.assert_array_equal(wrap_longitude(given), [-180.0, -180.0, -180.0, -0.5, -1e-17, 12.3])
-    assert wrap_longitude(-180.0 - 1e-14) < 180.0
+    assert wrap_longitude(np.nextafter(-180.0, -200.0)) == -180.0  # its remainder rounds to 360
     np.testing.assert_allclose(to_cartesian([350.0], [45.0]), to_cartesian([-10.0], [45.0]), atol=1e-8)

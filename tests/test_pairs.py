@@ -34,14 +34,15 @@ def line(n, x, y=0.0, speed=0.0):
     return np.column_stack([x + speed * np.arange(n), np.full(n, float(y))])
 
 
-def world(seed, n=14):
+def world(seed, n=14, trimmed=True):
     """Random walks with gaps, staggered starts and a mixture of known and unknown releases."""
     rng = np.random.default_rng(seed)
     paths, starts, release = [], [], []
     for _ in range(n):
         path = rng.uniform(0, 3000, 2) + np.cumsum(rng.normal(0, 400, (rng.integers(5, 40), 2)), axis=0)
         hole = rng.uniform(size=len(path)) < 0.3
-        hole[[0, -1]] = False
+        if trimmed:
+            hole[[0, -1]] = False
         path[hole] = np.nan
         paths.append(path)
         starts.append(int(rng.integers(0, 20)))
@@ -83,7 +84,7 @@ def as_dict(pairs):
 
 @pytest.mark.parametrize("seed", range(25))
 def test_agrees_with_brute_force(seed):
-    paths, starts, release = world(seed)
+    paths, starts, release = world(seed, trimmed=seed % 2 == 0)
     expected = brute_force(paths, starts, release, 900.0, 6)
     tracks = make(paths, starts, release)
     got = as_dict(find_pairs(tracks, "both", 900.0, 6 * STEP))
@@ -192,6 +193,14 @@ def test_clusters_by_release_or_by_launch():
     assert pairs.n_cluster == 2
     wide = find_pairs(tracks, "both", 10_000.0)
     assert wide.cluster[0] == wide.cluster[1] >= 0
+
+
+def test_tracks_of_one_release_are_one_cluster_even_if_no_pair_ties_them():
+    paths = [line(9, 0), line(9, 9000), line(9, 1800, speed=-400), line(9, 10_800, speed=-400)]
+    pairs = find_pairs(make(paths, [0] * 4, [1, 1, -1, -1]), "both", 500.0)
+    assert sorted(zip(pairs.first.tolist(), pairs.second.tolist(), strict=True)) == [(0, 2), (1, 3)]
+    assert pairs.cluster[0] == pairs.cluster[1]
+    assert pairs.n_cluster == 3
 
 
 def test_both_members_of_a_launched_pair_share_their_cluster():

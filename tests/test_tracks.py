@@ -70,6 +70,15 @@ def test_fractional_seconds_do_not_lose_the_last_step():
     np.testing.assert_allclose(tracks.position[:, 0], t, atol=1e-6)
 
 
+@pytest.mark.parametrize("step", [0.1, 0.7, 400.0])
+@pytest.mark.parametrize("off", [-3e-7, 0.0, 3e-7])  # a time near 1.7e9 s is a double to 2.4e-7 s
+def test_fixes_at_a_gap_are_kept_in_spite_of_round_off(step, off):
+    t = np.append(np.arange(100), np.arange(150, 250)) * step + off
+    tracks = make_tracks(planar_fixes((t, t, t)), step=step, longest_gap=1.5 * step)
+    np.testing.assert_array_equal(np.flatnonzero(np.isnan(tracks.position[:, 0])), np.arange(100, 150))
+    assert tracks.n_step[0] == 250
+
+
 def test_a_long_gap_is_not_bridged():
     t = np.array([0, 400, 800, 2800, 3200]) + 0.0
     tracks = make_tracks(planar_fixes((t, t, t)), step=400.0, longest_gap=1600.0)
@@ -124,9 +133,7 @@ def test_default_step_is_a_round_interval(interval, step):
 
 def test_geographic_positions_across_the_date_line():
     lon = np.array([179.9, 179.98, -179.94, -179.86])
-    fixes = Fixes(
-        [0] * 4, ("a",), T0 + 400.0 * np.arange(4), np.column_stack([lon, [5.0] * 4]), False, [-1], (), 1.0
-    )
+    fixes = Fixes([0] * 4, ("a",), T0 + 400.0 * np.arange(4), np.column_stack([lon, [5.0] * 4]), False, [-1], (), 1.0)
     tracks = make_tracks(fixes, step=200.0)
     back = to_geographic(tracks.position)
     np.testing.assert_allclose(back[0] % 360, 179.9 + 0.04 * np.arange(7), atol=1e-8)
@@ -166,9 +173,7 @@ def test_shift_of_time_by_whole_steps_changes_only_the_clock():
 def test_summary():
     t = np.array([0, 400, 800, 2800, 3200]) + 0.0
     text = make_tracks(planar_fixes((t, t, t)), step=400.0, longest_gap=400.0).summary()
-    assert text == (
-        "1 track every 0.1111 h, 0.037 to 0.037 days long (median 0.037), 44.4% of the steps in gaps"
-    )
+    assert text == ("1 track every 0.1111 h, 0.037 to 0.037 days long (median 0.037), 44.4% of the steps in gaps")
 
 
 @pytest.mark.parametrize("value", [0.0, -1.0, np.nan, np.inf])
@@ -188,9 +193,7 @@ def test_refuses_a_step_that_would_invent_positions():
 
 def test_refuses_when_nothing_is_left():
     t = np.arange(5) * 400.0 + 10
-    with pytest.raises(
-        DataError, match=r"no particle has two positions on an axis of 400 s.*over 300 s"
-    ):
+    with pytest.raises(DataError, match=r"no particle has two positions on an axis of 400 s.*over 300 s"):
         make_tracks(planar_fixes((t, t, t)), step=400.0, longest_gap=300.0)
 
 

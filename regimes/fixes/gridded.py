@@ -41,7 +41,6 @@ def read_zarr(path: Path, columns: Columns) -> Rows:
 
 def _rows(dataset: xr.Dataset, columns: Columns) -> Rows:
     check_names(columns, [*dataset.variables, *dataset.sizes], "variable")
-    dataset = dataset.reset_coords()
     names = wanted(columns)
     parts = {name: dataset[name].variable for name in names}
     parts[columns.time] = _seconds(dataset[columns.time], columns.time)
@@ -108,7 +107,7 @@ def _flatten(dataset: xr.Dataset, parts: dict[str, xr.Variable], columns: Column
             "instance_dimension"
         )
     sizes = parts[columns.position[0]].sizes
-    return {name: part.set_dims(sizes).transpose(*sizes).values.ravel() for name, part in parts.items()}
+    return {name: part.set_dims(sizes).values.ravel() for name, part in parts.items()}
 
 
 @dataclass(frozen=True, slots=True)

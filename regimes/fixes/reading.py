@@ -108,12 +108,12 @@ def fixes_from_frame(
 
 
 def sha256_of(path: Path) -> str:
-    """SHA-256 of a file, or of all files in a folder with their names, in sorted order."""
+    """SHA-256 of a file, or of all files in a folder with their names and sizes, in sorted order."""
     digest = hashlib.sha256()
     files = [path] if path.is_file() else sorted(part for part in path.rglob("*") if part.is_file())
     for file in files:
         if file != path:
-            digest.update(file.relative_to(path).as_posix().encode())
+            digest.update(f"{file.relative_to(path).as_posix()}\0{file.stat().st_size}\0".encode())
         with file.open("rb") as content:
             while chunk := content.read(_CHUNK):
                 digest.update(chunk)

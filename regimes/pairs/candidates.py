@@ -38,7 +38,7 @@ class CommonTimes:
     ----------
     tracks : Tracks
     next_valid, previous_valid : (n_sample,) int arrays
-        Row of the nearest valid sample at or after, and at or before, each sample in the same track;
+        Row of the nearest valid sample at or after, and at or before, each sample, be it of another track;
         `NEVER` and -1 where there is none.
     """
 
@@ -51,11 +51,8 @@ class CommonTimes:
         """The valid neighbours of every sample."""
         valid = ~np.isnan(tracks.position[:, 0])
         row = np.arange(len(valid))
-        begin, end = (np.repeat(edge, tracks.n_step) for edge in (tracks.offset[:-1], tracks.offset[1:]))
         following = np.minimum.accumulate(np.where(valid, row, NEVER)[::-1])[::-1]
         preceding = np.maximum.accumulate(np.where(valid, row, -1))
-        following[following >= end] = NEVER
-        preceding[preceding < begin] = -1
         return cls(tracks, following, preceding)
 
     def first_common(self, first: np.ndarray, second: np.ndarray) -> np.ndarray:
