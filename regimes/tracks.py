@@ -136,10 +136,8 @@ def make_tracks(fixes: Fixes, step: float | None = None, longest_gap: float | No
             f"would be invented by interpolation; choose a step of at least {FINEST_STEP * interval:g} s "
             f"(observations.step_h = {FINEST_STEP * interval / HOUR:.4g})"
         )
-    if longest_gap is None:
-        longest_gap = GAP_STEPS * max(step, interval)
-    else:
-        longest_gap = _positive("longest_gap", longest_gap)
+    default = GAP_STEPS * max(step, interval)
+    longest_gap = default if longest_gap is None else _positive("longest_gap", longest_gap)
     axis_start = float(np.floor(fixes.time.min() / step))
     clock = _Clock(step, axis_start, longest_gap)
     return _assemble(fixes, clock, *_sample(fixes, clock))

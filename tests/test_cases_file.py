@@ -59,9 +59,7 @@ def test_defaults(folder):
 
 
 def test_everything_given_in_si_units(folder):
-    text = SMALLEST.replace(
-        "position_error_m = 10.0", "position_error_m = 10\nstep_h = 0.5\nlongest_gap_h = 2.0"
-    )
+    text = SMALLEST.replace("position_error_m = 10.0", "position_error_m = 10\nstep_h = 0.5\nlongest_gap_h = 2.0")
     text += 'kind = "both"\nlaunched_within_h = 3\n'
     text += "[curves]\nseparation_ratio = 1.2\nseparations_km = [0.5, 500.0]\n"
     text += '[models]\nregimes = ["richardson", "diffusive"]\nmost_transitions = 0\n'
@@ -231,8 +229,7 @@ def test_one_problem(folder, old, new, problem):
         ),
         (
             "[reprot]",
-            "reprot: unknown key; known: name, seed, observations, pairs, curves, models, report; "
-            "did you mean report?",
+            "reprot: unknown key; known: name, seed, observations, pairs, curves, models, report; did you mean report?",
         ),
     ],
 )

@@ -264,9 +264,7 @@ def test_wrong_fixes_and_jumps_of_several_particles_are_told_apart():
 
 def test_position_error_is_no_speed():
     # Ten seconds and 40 m apart is 4 m/s on top of the drift; errors of 10 m explain it.
-    frame = insert(
-        drift(), 30, time=drift().loc[30, "time"] + 1.0, lat=drift().loc[30, "lat"] + 0.00045
-    )  # 50 m
+    frame = insert(drift(), 30, time=drift().loc[30, "time"] + 1.0, lat=drift().loc[30, "lat"] + 0.00045)  # 50 m
     assert clean(frame, error=10.0).n_fix == 241
     assert clean(frame, error=1.0).n_fix == 240
 

@@ -211,9 +211,7 @@ def test_both_members_of_a_launched_pair_share_their_cluster():
 
 def test_geographic_pairs_across_the_date_line():
     east, west = to_cartesian([179.998] * 3, [10.0] * 3), to_cartesian([-179.999] * 3, [10.0] * 3)
-    tracks = Tracks(
-        np.concatenate([east, west]), [0, 3, 6], [0, 0], STEP, 0.0, False, ("a", "b"), [-1, -1], 1.0
-    )
+    tracks = Tracks(np.concatenate([east, west]), [0, 3, 6], [0, 0], STEP, 0.0, False, ("a", "b"), [-1, -1], 1.0)
     pairs = find_pairs(tracks, "launched", 1000.0)
     expected = Geodesic.WGS84.Inverse(10.0, 179.998, 10.0, -179.999)["s12"]  # Karney 2013, via geographiclib
     np.testing.assert_allclose(pairs.start_separation, expected, rtol=1e-7)
@@ -294,13 +292,9 @@ def test_says_how_close_the_launches_were():
 
 def test_says_that_releases_never_overlap():
     tracks = make([line(5, 0), line(5, 0)], [0, 10])
-    with pytest.raises(
-        DataError, match=r'no two of one release have a valid position at the same time.*"chance"'
-    ):
+    with pytest.raises(DataError, match=r'no two of one release have a valid position at the same time.*"chance"'):
         find_pairs(tracks, "launched", 1000.0)
-    with pytest.raises(
-        DataError, match=r"no chance pair.*no two of them have a valid position at the same time"
-    ):
+    with pytest.raises(DataError, match=r"no chance pair.*no two of them have a valid position at the same time"):
         find_pairs(tracks, "chance", 1000.0)
 
 

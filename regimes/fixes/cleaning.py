@@ -110,9 +110,7 @@ def _complete(rows: Rows) -> tuple[Rows, list[Cleaning]]:
             "check the columns and their fill values"
         )
     return rest, [
-        Cleaning(
-            "fill-value times", int(absurd.sum()), "padding, unreadable, or not in 1973 to 2100; dropped"
-        ),
+        Cleaning("fill-value times", int(absurd.sum()), "padding, unreadable, or not in 1973 to 2100; dropped"),
         Cleaning("missing values", int(missing.sum()), "no particle, time or usable position; dropped"),
     ]
 

@@ -33,9 +33,7 @@ def read_netcdf(path: Path, columns: Columns) -> Rows:
 def read_zarr(path: Path, columns: Columns) -> Rows:
     """Rows of a Zarr store in a folder."""
     consolidated = (path / ".zmetadata").exists()
-    with xr.open_dataset(
-        path, engine="zarr", decode_times=False, consolidated=consolidated, chunks=None
-    ) as dataset:
+    with xr.open_dataset(path, engine="zarr", decode_times=False, consolidated=consolidated, chunks=None) as dataset:
         return _rows(dataset, columns)
 
 
@@ -160,7 +158,5 @@ def _indexed(dataset: xr.Dataset, sample: str, name: str) -> _Ragged:
     instance = str(dataset[name].attrs["instance_dimension"])
     index = np.nan_to_num(dataset[name].values, nan=-1).astype(np.int64)
     if instance not in dataset.sizes or index.max(initial=-1) >= dataset.sizes[instance]:
-        raise DataError(
-            f"variable {name}: points beyond dimension {instance}; the file is damaged or cut short"
-        )
+        raise DataError(f"variable {name}: points beyond dimension {instance}; the file is damaged or cut short")
     return _Ragged(instance, sample, index)

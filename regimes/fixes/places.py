@@ -22,9 +22,7 @@ def checked_places(rows: Rows) -> tuple[Rows, list[Cleaning]]:
     known = np.isfinite(rows.position).all(axis=1)
     if not known.any():
         words = "x and y" if rows.planar else "longitude and latitude"
-        raise DataError(
-            f"not one of {len(known)} rows has both {words}; check the columns and their fill values"
-        )
+        raise DataError(f"not one of {len(known)} rows has both {words}; check the columns and their fill values")
     if rows.planar:
         _refuse_degrees(rows, known)
         return rows, []

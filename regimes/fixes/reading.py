@@ -31,9 +31,7 @@ _READERS: dict[str, tuple[str, Callable[[Path, Columns], Rows]]] = {
 _CHUNK = 1 << 20
 
 
-def read_fixes(
-    path: str | Path, columns: Columns, position_error: float, highest_speed: float | None = None
-) -> Fixes:
+def read_fixes(path: str | Path, columns: Columns, position_error: float, highest_speed: float | None = None) -> Fixes:
     """Read position fixes of drifting particles.
 
     Parameters
@@ -70,9 +68,7 @@ def read_fixes(
         raise DataError(f"{path}: {_without(str(error), path)}") from error
     except (OSError, EOFError, zlib.error, ValueError, KeyError) as error:
         reason = _first_line(error, path)
-        raise DataError(
-            f"{path}: cannot be read as {name} ({reason}); is it damaged or another format?"
-        ) from error
+        raise DataError(f"{path}: cannot be read as {name} ({reason}); is it damaged or another format?") from error
     try:
         return cleaned(rows, quality, Source(str(path), checksum))
     except DataError as error:

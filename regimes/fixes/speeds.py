@@ -84,9 +84,11 @@ class _Path:
     slack: float
 
     def length(self, a: np.ndarray, b: np.ndarray) -> np.ndarray:
+        """Distances [m] between fixes a and b."""
         return distances(self.position[a], self.position[b], self.planar)
 
     def possible(self, a: np.ndarray, b: np.ndarray) -> np.ndarray:
+        """Whether the limit allows the way from fixes a to b."""
         return self.length(a, b) <= self.limit * (self.time[b] - self.time[a]) + self.slack
 
 

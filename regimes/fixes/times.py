@@ -161,7 +161,6 @@ def _origin(text: str, name: str) -> pd.Timestamp:
         origin = pd.Timestamp(plain)
     except ValueError:
         raise DataError(
-            f"variable {name}: the date {text!r} in its units cannot be read; must be like "
-            "1970-01-01 00:00:00"
+            f"variable {name}: the date {text!r} in its units cannot be read; must be like 1970-01-01 00:00:00"
         ) from None
     return origin.tz_localize("UTC") if origin.tz is None else origin.tz_convert("UTC")
