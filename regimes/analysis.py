@@ -1,6 +1,7 @@
 """Everything one run has found: the record that the report is made from."""
 
 from dataclasses import dataclass
+from html import escape
 
 import numpy as np
 
@@ -155,3 +156,15 @@ class Analysis:
     fits: dict[str, Inference]
     bands: Bands
     verdict: Verdict
+
+    def summary(self) -> str:
+        """What was analysed and what came out, as a few lines of text."""
+        origin = self.provenance
+        head = (
+            f"{origin.case}: {origin.n_pairs} pairs of {origin.n_particles} particles in {origin.n_clusters} clusters"
+        )
+        return f"{head}\n{self.verdict.summary()}"
+
+    def _repr_html_(self) -> str:
+        head = escape(self.summary().splitlines()[0])
+        return f"<p>{head}</p>{self.verdict._repr_html_()}"

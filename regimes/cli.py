@@ -24,9 +24,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     Returns
     -------
     int
-        0 done (also when the verdict is "undecided"), 2 a wrong argument or case file, 3 data that cannot answer the
-        question, 4 a fit that did not converge (its report is written all the same), 1 a defect of this program, 130
-        interrupted.
+        0 done (also when the verdict is "undecided"), 2 a wrong argument or case file, 3 data that cannot
+        answer the question, 4 a fit that did not converge (its report is written all the same), 1 a defect of
+        this program, 130 interrupted.
     """
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):
@@ -57,16 +57,18 @@ def _defect(error: Exception) -> str:
     place = traceback.extract_tb(error.__traceback__)[-1]
     words = " ".join(str(error).split())
     return (
-        f"regimes: internal error: {type(error).__name__}: {words} (line {place.lineno} of {Path(place.filename).name}); "
-        "this is a defect of regimes, not of the data; please report it with this line and the case file"
+        f"regimes: internal error: {type(error).__name__}: {words} (line {place.lineno} of "
+        f"{Path(place.filename).name}); this is a defect of regimes, not of the data; please report it "
+        "with this line and the case file"
     )
 
 
 def _parser() -> argparse.ArgumentParser:
     parser = argparse.ArgumentParser(
         prog="regimes",
-        description="Turbulence regimes, transition scales and spectral slope from pair separations of drifting instruments.",
-        epilog="Exit codes: 0 done, 2 wrong argument or case file, 3 unusable data, 4 sampling did not converge.",
+        description="Turbulence regimes, transition scales and spectral slope from pair separations of "
+        "drifting instruments.",
+        epilog="Exit codes: 0 done, 2 wrong argument or case file, 3 unusable data, 4 no convergence.",
     )
     parser.add_argument("--version", action="version", version=_version())
     commands = parser.add_subparsers(required=True, metavar="COMMAND")
@@ -84,7 +86,9 @@ def _parser() -> argparse.ArgumentParser:
 
     simulate = commands.add_parser("simulate", help="make fixes with known truth")
     simulate.add_argument("recipe", type=Path, metavar="RECIPE", help="recipe file (TOML)")
-    simulate.add_argument("--out", type=Path, metavar="FILE", required=True, help="fixes to write (.csv, .csv.gz or .parquet)")
+    simulate.add_argument(
+        "--out", type=Path, metavar="FILE", required=True, help="fixes to write (.csv, .csv.gz or .parquet)"
+    )
     simulate.set_defaults(command=_simulate)
     return parser
 
@@ -127,7 +131,7 @@ def _run(chosen: argparse.Namespace) -> int:
         analysis = analyse(case, progress=report, jobs=chosen.jobs or os.cpu_count() or 1, seed=chosen.seed)
     files = write_report(analysis, folder)
     verdict = analysis.verdict
-    _tell(f"{verdict.decision.replace('_', ' ')}: {verdict.sentence}")
+    _tell(verdict.sentence)
     _tell(f"report: {_short(files['report.html'])}")
     if not verdict.healthy:
         return _say(f"regimes: sampling did not converge: {verdict.health_reason}; the report says so", UNHEALTHY)
@@ -152,7 +156,7 @@ def _simulate(chosen: argparse.Namespace) -> int:
 
 
 def default_folder(case_file: Path, name: str) -> Path:
-    """``reports/`` and the folder of a ``case.toml``, else the case file's own name, else the name of the case."""
+    """``reports/`` and the folder of a ``case.toml``, else the name of the file, else that of the case."""
     path = case_file.resolve()
     word = path.parent.name if path.stem == "case" else path.stem
     return Path("reports") / (_slug(word) or _slug(name) or "case")
@@ -184,7 +188,12 @@ class _progress:
         from rich.console import Console
         from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 
-        columns = (TextColumn("{task.description}"), BarColumn(), TextColumn("{task.completed}/{task.total}"), TimeRemainingColumn())
+        columns = (
+            TextColumn("{task.description}"),
+            BarColumn(),
+            TextColumn("{task.completed}/{task.total}"),
+            TimeRemainingColumn(),
+        )
         self.bars = Progress(*columns, console=Console(stderr=True), transient=True)
         self.tasks: dict[str, int] = {}
         self.bars.start()

@@ -6,6 +6,7 @@ from regimes.analysis import Analysis
 from regimes.report.digits import count, probability, significant, span
 from regimes.report.words import DECISIONS, DISPLAY
 from regimes.units import KM
+from regimes.verdict.digits import km
 
 TITLES = {
     "exponent": "Exponent against separation",
@@ -35,77 +36,82 @@ def _who(analysis: Analysis) -> str:
 
 
 def _resolved(analysis: Analysis) -> str:
-    return f"{span(*(end / KM for end in analysis.verdict.resolved))} km"
+    return f"{span(*analysis.verdict.resolved)} km"
 
 
 def _passage(analysis: Analysis) -> str:
-    return f"{significant(analysis.passage_separation / KM)} km"
+    return f"{km(analysis.passage_separation)} km"
 
 
 def _exponent(analysis: Analysis) -> str:
     return (
-        f"Finite-scale Lyapunov exponent against separation ({_who(analysis)}). Points: exits over time at risk, with "
-        "unfinished passages counted; bars are 95 % intervals that treat clusters as independent. Filled points entered "
-        f"the fit ({_resolved(analysis)}); hollow points did not. Shading and line: 95 % interval and median of the "
-        "sequences of named regimes; dashed: 95 % interval of kernels with free exponents. Grey crosses: the textbook "
-        "estimate from completed exits alone (common practice), biased where records end. Short lines: slopes of the four "
+        f"Finite-scale Lyapunov exponent against separation ({_who(analysis)}). Points: exits over time "
+        "at risk, with unfinished passages counted; bars are 95 % intervals that treat clusters as "
+        f"independent. Filled points entered the fit ({_resolved(analysis)}); hollow points did not. "
+        "Shading and line: 95 % interval and median of the sequences of named regimes; dashed: 95 % "
+        "interval of kernels with free exponents. Grey crosses: the textbook estimate from completed "
+        "exits alone (common practice), biased where records end. Short lines: slopes of the four "
         "regimes."
     )
 
 
 def _regimes(analysis: Analysis) -> str:
     return (
-        "Probability of each named regime at each separation, summed over all sequences of regimes. Bars on top mark "
-        "separations where a regime is supported: probability of at least 0.95 (dotted line) and a free exponent whose 95 % "
-        f"interval contains that regime and no other. Resolved range {_resolved(analysis)}."
+        "Probability of each named regime at each separation, summed over all sequences of regimes. Bars "
+        "on top mark separations where a regime is supported: probability of at least 0.95 (dotted line) "
+        "and a free exponent whose 95 % interval contains that regime and no other. Resolved range "
+        f"{_resolved(analysis)}."
     )
 
 
 def _slope(analysis: Analysis) -> str:
     return (
-        "Local slope α of the energy spectrum E(k) ~ k^-α that the free-exponent kernels imply at each separation: "
-        "median (line) and 95 % interval (shading). Exponents cannot tell slopes of 3 and steeper apart, nor of 1 and "
-        "flatter; where the kernel is diffusive (grey strip) no spectrum is implied. A separation feels a broad band of "
-        "wavelengths, so the slope is that of a range, not of one wavenumber."
+        "Local slope α of the energy spectrum E(k) ∝ k^{-α} that the free-exponent kernels imply at each "
+        "separation: median (line) and 95 % interval (shading). Exponents cannot tell slopes of 3 and "
+        "steeper apart, nor of 1 and flatter; where the kernel is diffusive (grey strip) no spectrum is "
+        "implied. A separation feels a broad band of wavelengths, so the slope is that of a range, not "
+        "of one wavenumber."
     )
 
 
 def _transitions(_analysis: Analysis) -> str:
     return (
-        "Posterior of each transition separation between named regimes with probability above 0.05 (in brackets). The area "
-        "under a curve is the probability of the transition."
+        "Posterior of each transition separation between named regimes with probability above 0.05 (in "
+        "brackets). The area under a curve is the probability of the transition."
     )
 
 
 def _slopes(_analysis: Analysis) -> str:
     return (
-        "Spectral slope α implied over ranges of separation, from exit rates (filled) and from separations at fixed times "
-        "(open). Dot: median; thick line: 68 %; thin line: 95 %. An arrow starts at the 95 % bound where only a bound is known. "
-        "Dotted lines: slopes 5/3, 2 and 3."
+        "Spectral slope α implied over ranges of separation, from exit rates (filled) and from "
+        "separations at fixed times (open). Dot: median; thick line: 68 %; thin line: 95 %. An arrow "
+        "starts at the 95 % bound where only a bound is known. Dotted lines: slopes 5/3, 2 and 3."
     )
 
 
 def _mean_log(analysis: Analysis) -> str:
     return (
-        f"Geometric mean separation (the exponential of the mean of ln r) since first passage of {_passage(analysis)}: data "
-        "with 95 % cluster intervals, and what the kernels fitted to the exit rates predict (bands, 68 and 95 %). Nothing was "
-        "fitted here. The mean of ln r has no heavy tail and is the sharper test."
+        "Geometric mean separation (the exponential of the mean of ln r) since first passage of "
+        f"{_passage(analysis)}: data with 95 % cluster intervals, and what the kernels fitted to the exit "
+        "rates predict (bands, 68 and 95 %). Nothing was fitted here. The mean of ln r has no heavy tail "
+        "and is the sharper test."
     )
 
 
 def _dispersion_passage(analysis: Analysis) -> str:
     return (
-        f"Relative dispersion (mean squared separation) since first passage of {_passage(analysis)}: data with 95 % cluster "
-        "intervals, and what the kernels fitted to the exit rates predict (bands, 68 and 95 %). Nothing was fitted here. "
-        "Few pairs carry the mean while growth is exponential, so that a sample tends to lie low."
+        f"Relative dispersion (mean squared separation) since first passage of {_passage(analysis)}: data "
+        "with 95 % cluster intervals, and what the kernels fitted to the exit rates predict (bands, 68 "
+        "and 95 %). Nothing was fitted here. Few pairs carry the mean while growth is exponential, so "
+        "that a sample tends to lie low."
     )
 
 
 def _dispersion(analysis: Analysis) -> str:
     return (
-        f"Relative dispersion since the start of each pair ({_who(analysis)}), total and east and north parts, with 95 % cluster "
-        "intervals of the logarithm. Short lines: late power laws of three regimes, reached only long after the start; the "
-        "exponential regime has none."
+        f"Relative dispersion since the start of each pair ({_who(analysis)}), total and east and north "
+        "parts, with 95 % cluster intervals of the logarithm. Short lines: late power laws of three "
+        "regimes, reached only long after the start; the exponential regime has none."
     )
 
 
@@ -115,13 +121,13 @@ def _see_exponent(analysis: Analysis) -> str:
     if rate.size == 0:
         return "No exponent is resolved."
     return (
-        f"Over {_resolved(analysis)} the exponent goes from {significant(rate[0])} per day at the smallest to "
-        f"{significant(rate[-1])} per day at the largest separation."
+        f"Over {_resolved(analysis)} the exponent goes from {significant(rate[0])} per day at the "
+        f"smallest to {significant(rate[-1])} per day at the largest separation."
     )
 
 
 def _see_regimes(analysis: Analysis) -> str:
-    found = [f"{DISPLAY[s.regime]} from {span(s.low / KM, s.high / KM)} km" for s in analysis.verdict.supported]
+    found = [f"{DISPLAY[s.regime]} from {span(s.low, s.high)} km" for s in analysis.verdict.supported]
     said = f"Decision: {DECISIONS[analysis.verdict.decision].lower()}. "
     return said + ("Supported: " + "; ".join(found) + "." if found else "No regime is supported anywhere.")
 
@@ -134,7 +140,8 @@ def _see_slope(analysis: Analysis) -> str:
 
 def _see_transitions(analysis: Analysis) -> str:
     found = [
-        f"{DISPLAY[t.lower]} to {DISPLAY[t.upper]} near {significant(t.scale.median / KM)} km (probability {probability(t.probability)})"
+        f"{DISPLAY[t.lower]} to {DISPLAY[t.upper]} near {significant(t.scale.median / KM)} km "
+        f"(probability {probability(t.probability)})"
         for t in analysis.verdict.transitions
         if t.probability > 0.05
     ]

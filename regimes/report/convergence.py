@@ -5,8 +5,11 @@ import numpy as np
 from regimes.analysis import Analysis
 from regimes.inference.record import Fit, Inference
 from regimes.report.digits import fixed, probability, rounded, spread
-from regimes.report.words import CURVES, sequence
+from regimes.report.words import CURVES, DISPLAY, sequence
 from regimes.units import KM
+from regimes.verdict.digits import km
+
+COMPARED = 7  # separations at which the curves are compared
 
 
 def opinion_rows(analysis: Analysis) -> list[dict[str, object]]:
@@ -22,7 +25,8 @@ def _opinion(inference: Inference) -> dict[str, object]:
     for transition in inference.transitions()[:3]:
         low, middle, high = np.percentile(transition.draws / KM, (16, 50, 84))
         sigma = spread(low, high)
-        words = f"{sequence((transition.lower, transition.upper))}: {rounded(middle, sigma)} \u00b1 {rounded(sigma, sigma)} km"
+        scale = f"{rounded(middle, sigma)} \u00b1 {rounded(sigma, sigma)} km"
+        words = f"{sequence((transition.lower, transition.upper))}: {scale}"
         moves.append((words, probability(transition.probability)))
     return {
         "curve": CURVES[inference.curve],
@@ -33,8 +37,19 @@ def _opinion(inference: Inference) -> dict[str, object]:
     }
 
 
+def compared_rows(analysis: Analysis) -> list[tuple[str, ...]]:
+    """The most probable regime at a few separations, by each curve: separation, then a cell per curve."""
+    separation = np.geomspace(*analysis.verdict.resolved, COMPARED + 2)[1:-1]
+    columns = [[km(r) for r in separation]]
+    for inference in analysis.fits.values():
+        chances = inference.regime_probability(separation)
+        names = [max(chances, key=lambda name, i=i: chances[name][i]) for i in range(separation.size)]
+        columns.append([f"{DISPLAY[name]} ({probability(float(chances[name][i]))})" for i, name in enumerate(names)])
+    return list(zip(*columns, strict=True))
+
+
 def convergence_rows(analysis: Analysis) -> list[tuple[str, ...]]:
-    """One row per sampled model: curve, pieces, ln evidence, split R-hat, effective draws, length, verdict."""
+    """One row per sampled model: curve, pieces, ln evidence, split R-hat, effective draws, length, state."""
     rows = []
     for inference in analysis.fits.values():
         fits = [fit for fit in (*inference.named, *inference.free) if fit.health is not None]

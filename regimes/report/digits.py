@@ -2,6 +2,8 @@
 
 import math
 
+from regimes.verdict.digits import km
+
 SIGNIFICANT = 2  # digits of the uncertainty that are printed; common practice, no source
 THIN_SPACE = "\u202f"
 MISSING = "not determined"
@@ -38,7 +40,7 @@ def significant(value: float, digits: int = SIGNIFICANT) -> str:
 
 
 def rounded(value: float, uncertainty: float) -> str:
-    """`value` to the last place of two significant digits of `uncertainty`; three digits where that is nothing."""
+    """`value` to two significant digits of `uncertainty`; to three of its own where that is zero."""
     if not math.isfinite(value):
         return MISSING
     if not (math.isfinite(uncertainty) and uncertainty > 0):
@@ -57,8 +59,8 @@ def between(low: float, high: float, uncertainty: float) -> str:
 
 
 def span(low: float, high: float) -> str:
-    """A range whose ends are not uncertain, to two significant digits: ``"1.2 to 150"``."""
-    return f"{significant(low)} to {significant(high)}"
+    """A range of separations [m] in km, in the digits of the verdict's sentences: ``"1.2 to 150"``."""
+    return f"{km(low)} to {km(high)}"
 
 
 def probability(value: float) -> str:

@@ -2,7 +2,6 @@
 
 import json
 import os
-import shutil
 import tempfile
 from pathlib import Path
 
@@ -77,8 +76,8 @@ def check_folder(folder: str | Path) -> Path:
     if foreign or not _is_report(folder / "verdict.json"):
         what = f"{foreign[0]} in it" if foreign else "no verdict.json of an earlier report in it"
         raise CaseError(
-            f"report folder: got {folder} with {what}; must be new, empty, or hold an earlier report and nothing else; "
-            "choose another with --out, or move the other files away"
+            f"report folder: got {folder} with {what}; must be new, empty, or hold an earlier report and "
+            "nothing else; choose another with --out, or move the other files away"
         )
     return folder
 

@@ -4,18 +4,18 @@ import re
 from importlib import resources
 from typing import Any
 
-import numpy as np
 from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup, escape
 
 from regimes.analysis import Analysis
 from regimes.report.captions import TITLES, caption, description
-from regimes.report.convergence import convergence_rows, opinion_rows
+from regimes.report.convergence import compared_rows, convergence_rows, opinion_rows
 from regimes.report.digits import between, count, fixed, probability, rounded, significant, span, spread
 from regimes.report.tables import slope_text
 from regimes.report.words import CURVES, DECISIONS, DISPLAY, sequence
 from regimes.units import DAY, HOUR, KM
 from regimes.verdict.record import Slope, TransitionScale
+from regimes.verdict.rule import CHALLENGE
 
 SEQUENCES_SHOWN = 6
 TRANSITIONS_FROM = 0.05
@@ -37,48 +37,72 @@ def page(analysis: Analysis, figures: dict[str, str]) -> str:
         Self-contained: style and figures inside, no script, no network.
     """
     loader = PackageLoader("regimes.report", "")
-    environment = Environment(loader=loader, autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True)
+    environment = Environment(loader=loader, autoescape=True, undefined=StrictUndefined)
+    environment.trim_blocks = environment.lstrip_blocks = True
+    environment.filters["typeset"] = typeset
     style = resources.files("regimes.report").joinpath("page.css").read_text(encoding="utf-8")
-    return environment.get_template("page.html.j2").render(style=Markup(style), **_content(analysis, figures))  # noqa: S704
+    return environment.get_template("page.html.j2").render(style=Markup(style), **_content(analysis, figures))
+
+
+def typeset(text: object) -> Markup:
+    """Text for the page: ``k^{-2}`` with a raised exponent, a true minus sign before a number."""
+    safe = re.sub(r"(?<![\w.])-(?=[\d.])", "\u2212", str(escape(text)))
+    return Markup(re.sub(r"\^\{([^{}]*)\}", r"<sup>\1</sup>", safe).replace("<sup>-", "<sup>\u2212"))
 
 
 def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
     verdict, origin = analysis.verdict, analysis.provenance
+    sentence, reasons = _headline(analysis)
     return {
         "case": origin.case,
         "decision": verdict.decision,
         "decision_word": DECISIONS[verdict.decision],
         "sign": SIGNS[verdict.decision],
         "verdict": verdict,
+        "sentence": sentence,
+        "reasons": reasons,
         "facts": _facts(analysis),
-        "supported": [(DISPLAY[s.regime], f"{span(s.low / KM, s.high / KM)} km") for s in verdict.supported],
+        "supported": [(DISPLAY[s.regime], f"{span(s.low, s.high)} km") for s in verdict.supported],
         "sequences": [(sequence(s.regimes), probability(s.probability)) for s in verdict.sequences[:SEQUENCES_SHOWN]],
         "more_sequences": max(len(verdict.sequences) - SEQUENCES_SHOWN, 0),
         "transitions": [_transition(t) for t in verdict.transitions if t.probability > TRANSITIONS_FROM],
         "slopes": [_slope(s) for s in verdict.slopes],
         "bayes_factor": fixed(verdict.log_bayes_factor, 1),
+        "challenge": fixed(CHALLENGE, 1),
         "figures": [
-            {"name": name, "title": TITLES[name], "svg": _inline(svg, name, analysis), "caption": caption(name, analysis)}
+            {
+                "name": name,
+                "title": TITLES[name],
+                "svg": _inline(svg, name, analysis),
+                "caption": caption(name, analysis),
+            }
             for name, svg in figures.items()
         ],
         "opinions": opinion_rows(analysis),
+        "curves": [CURVES[name] for name in analysis.fits],
+        "compared": compared_rows(analysis),
         "convergence": convergence_rows(analysis),
         "cleaning": [(reason, count(n), note) for reason, n, note in origin.cleaning],
         "provenance": _provenance(analysis),
     }
 
 
-def _facts(analysis: Analysis) -> list[tuple[str, str]]:
+def _headline(analysis: Analysis) -> tuple[str, list[str]]:
+    """The sentence without the decision's word, which the badge shows, and the reasons it does not hold already."""
+    verdict = analysis.verdict
+    sentence = verdict.sentence.removeprefix(DECISIONS[verdict.decision] + ": ")
+    return sentence[:1].upper() + sentence[1:], [r for r in verdict.reasons if r not in verdict.sentence]
+
+
+def _facts(analysis: Analysis) -> list[tuple[str, str, str]]:
     verdict, origin = analysis.verdict, analysis.provenance
-    low, high = (end / KM for end in verdict.resolved)
+    limits = "below: {}; above: {}".format(*verdict.limited_by)
     return [
-        ("pairs", count(origin.n_pairs)),
-        ("independent clusters", count(origin.n_clusters)),
-        ("resolved separations", f"{span(low, high)} km"),
-        ("limited below by", verdict.limited_by[0]),
-        ("limited above by", verdict.limited_by[1]),
-        ("predictive check", f"p = {probability(verdict.fit_p_value).replace('= <', '<')}"),
-        ("convergence", "good" if verdict.healthy else "not good"),
+        ("pairs", count(origin.n_pairs), origin.kind if origin.kind != "both" else "launched and chance"),
+        ("clusters", count(origin.n_clusters), "independent of one another"),
+        ("resolved separations", f"{span(*verdict.resolved)} km", limits),
+        ("predictive check", f"p = {probability(verdict.fit_p_value)}", "of the exit rates"),
+        ("convergence", "good" if verdict.healthy else "not good", "of the sampling"),
     ]
 
 
@@ -95,17 +119,24 @@ def _transition(transition: TransitionScale) -> tuple[str, str, str, str, str]:
 
 
 def _slope(slope: Slope) -> tuple[str, str, str, str]:
-    return (f"{span(slope.low / KM, slope.high / KM)} km", CURVES[slope.curve], slope_text(slope), slope.reason)
+    return (
+        f"{span(slope.low, slope.high)} km",
+        CURVES[slope.curve],
+        slope_text(slope),
+        slope.reason,
+    )
 
 
 def _provenance(analysis: Analysis) -> list[tuple[str, str]]:
     origin = analysis.provenance
+    start = (significant(r / KM) for r in (origin.median_start, origin.start_p90))
+    farthest = significant(origin.max_separation / KM, 3)
     return [
         ("case", origin.case),
         ("fixes", f"{count(origin.n_fixes)} of {count(origin.n_particles)} particles, from {origin.source}"),
         ("SHA-256 of the input", origin.sha256),
-        ("pairs", f"{count(origin.n_pairs)}, {origin.kind}, at most {significant(origin.max_separation / KM, 3)} km apart at the start"),
-        ("separation at the start", f"median {significant(origin.median_start / KM)} km, 90th percentile {significant(origin.start_p90 / KM)} km"),
+        ("pairs", f"{count(origin.n_pairs)}, {origin.kind}, at most {farthest} km apart at the start"),
+        ("separation at the start", "median {} km, 90th percentile {} km".format(*start)),
         ("duration of the pairs", f"median {significant(origin.median_duration / DAY)} d"),
         ("common time step", f"{significant(origin.step / HOUR, 3)} h"),
         ("longest gap bridged", f"{significant(origin.longest_gap / HOUR, 3)} h"),
@@ -122,5 +153,5 @@ def _inline(svg: str, name: str, analysis: Analysis) -> Markup:
     head, body = drawing.split(">", 1)
     head = re.sub(r'\s(width|height)="[^"]*"', "", head)
     words = escape(description(name, analysis))
-    label = f'{name}-words'
-    return Markup(f'{head} role="img" aria-labelledby="{label}"><title id="{label}">{words}</title>{body}')  # noqa: S704
+    label = f"{name}-words"
+    return Markup(f'{head} role="img" aria-labelledby="{label}"><title id="{label}">{words}</title>{body}')

@@ -10,12 +10,16 @@ from regimes.inference.record import Fit
 
 UNITS = {
     "log_rate": ("ln(1/s)", "ln of kernel over squared separation at the reference separation"),
-    "spectral_slope": ("1", "spectral slope of a free piece; the kernel exponent saturates below 1 and above 3"),
+    "spectral_slope": (
+        "1",
+        "spectral slope of a free piece; the kernel exponent saturates below 1 and above 3",
+    ),
     "log_transition": ("ln(m)", "ln of a transition separation"),
 }
 LAYOUT = (
-    "Variables are named curve.model.parameter; a model is a sequence of pieces from small to large separations, one "
-    "letter each: B ballistic, E exponential, R richardson, D diffusive, F free. Walkers of the ensemble are the chains."
+    "Variables are named curve.model.parameter; a model is a sequence of pieces from small to large "
+    "separations, one letter each: B ballistic, E exponential, R richardson, D diffusive, F free. "
+    "Walkers of the ensemble are the chains."
 )
 
 
@@ -30,9 +34,9 @@ def write_posterior(analysis: Analysis, path: Path) -> None:
 
     Notes
     -----
-    Dimensions are chain (walkers) and draw (thinned steps). Models may differ in both; what a model does not have is
-    NaN. In `sample_stats`, ``lp.curve.model`` is the log likelihood and ``log_evidence.curve.model`` the log evidence
-    (a scalar).
+    Dimensions are chain (walkers) and draw (thinned steps). Models may differ in both; what a model does not
+    have is NaN. In `sample_stats`, ``lp.curve.model`` is the log likelihood, which is the log posterior but for
+    a constant (the priors are uniform), and ``log_evidence.curve.model`` the log evidence (a scalar).
     """
     fits = [(curve, fit) for curve, inference in analysis.fits.items() for fit in (*inference.named, *inference.free)]
     sampled = [(curve, fit) for curve, fit in fits if fit.sampled]
@@ -41,11 +45,19 @@ def write_posterior(analysis: Analysis, path: Path) -> None:
     draws, statistics = {}, {}
     for curve, fit in sampled:
         draws.update(_parameters(curve, fit, size))
-        statistics[f"lp.{curve}.{fit.model.label}"] = (("chain", "draw"), _padded(fit.log_likelihood, size), {"units": "1"})
+        statistics[f"lp.{curve}.{fit.model.label}"] = (
+            ("chain", "draw"),
+            _padded(fit.log_likelihood, size),
+            {"units": "1"},
+        )
     for curve, fit in fits:
         statistics[f"log_evidence.{curve}.{fit.model.label}"] = ((), fit.log_evidence, {"units": "1"})
     coordinates = {"chain": np.arange(size[0]), "draw": np.arange(size[1])}
-    header = {"title": f"posterior draws of {analysis.provenance.case}", "comment": LAYOUT, "seed": analysis.provenance.seed}
+    header = {
+        "title": f"posterior draws of {analysis.provenance.case}",
+        "comment": LAYOUT,
+        "seed": analysis.provenance.seed,
+    }
     for mode, group, variables in (("w", "posterior", draws), ("a", "sample_stats", statistics)):
         dataset = xr.Dataset(variables, coordinates, header)
         dataset.to_netcdf(path, mode=mode, group=group, engine="h5netcdf")
@@ -56,7 +68,11 @@ def _parameters(curve: str, fit: Fit, size: tuple[int, int]) -> dict[str, tuple]
     for i, name in enumerate(fit.model.parameters):
         unit, long_name = UNITS[name.rstrip("_0123456789")]
         values = _padded(fit.draws[:, :, i], size)
-        out[f"{curve}.{fit.model.label}.{name}"] = (("chain", "draw"), values, {"units": unit, "long_name": long_name})
+        out[f"{curve}.{fit.model.label}.{name}"] = (
+            ("chain", "draw"),
+            values,
+            {"units": unit, "long_name": long_name},
+        )
     return out
 
 

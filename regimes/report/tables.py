@@ -9,18 +9,21 @@ import xarray as xr
 
 from regimes.analysis import Analysis
 from regimes.curves import Curve
-from regimes.report.digits import between, probability, rounded, significant, span, spread
+from regimes.report.digits import between, probability, rounded, span, spread
 from regimes.report.words import CURVES, DISPLAY
 from regimes.units import KM
+from regimes.verdict.digits import slope_text as alpha
 from regimes.verdict.record import Slope, TransitionScale
 
 COLUMNS = (
-    "curve", "axis_name", "axis_value", "axis_unit", "value", "unit", "standard_error", "lo95", "hi95", "n_cluster", "n_pair"
+    "curve", "axis_name", "axis_value", "axis_unit", "value", "unit", "standard_error", "lo95", "hi95",
+    "n_cluster", "n_pair",
 )  # fmt: skip
 AXIS_UNIT = {"separation": "m", "time": "s"}
 NORMAL95 = 1.96
 TEX = {
-    "\\": r"\textbackslash{}", "&": r"\&", "%": r"\%", "$": r"\$", "#": r"\#", "_": r"\_", "{": r"\{", "}": r"\}",
+    "\\": r"\textbackslash{}", "&": r"\&", "%": r"\%", "$": r"\$", "#": r"\#", "_": r"\_", "{": r"\{",
+    "}": r"\}",
     "~": r"\textasciitilde{}", "^": r"\textasciicircum{}", "\u2192": r"$\rightarrow$", "\u2265": r"$\geq$",
     "\u2264": r"$\leq$", "<": r"$<$", ">": r"$>$", "\u202f": r"\,",
 }  # fmt: skip
@@ -35,7 +38,10 @@ def curves_of(analysis: Analysis) -> dict[str, tuple[Curve, np.ndarray]]:
         out[prefix + "dispersion"] = (statistics.relative_dispersion(), pairs)
         out[prefix + "dispersion_east"] = (statistics.east(), pairs)
         out[prefix + "dispersion_north"] = (statistics.north(), pairs)
-        out[prefix + "mean_log_separation"] = (statistics.mean_log_separation(), statistics.weight @ statistics.log_count)
+        out[prefix + "mean_log_separation"] = (
+            statistics.mean_log_separation(),
+            statistics.weight @ statistics.log_count,
+        )
     return out
 
 
@@ -45,8 +51,8 @@ def curve_table(analysis: Analysis) -> pd.DataFrame:
     Returns
     -------
     pandas.DataFrame
-        Columns as in `COLUMNS`. The interval of the exponent is that of the pooled dispersion; that of every other curve
-        is the value plus and minus 1.96 standard errors over clusters.
+        Columns as in `COLUMNS`. The interval of the exponent is that of the pooled dispersion; that of every
+        other curve is the value plus and minus 1.96 standard errors over clusters.
     """
     frames = []
     for key, (curve, pairs) in curves_of(analysis).items():
@@ -78,7 +84,11 @@ def write_curves_netcdf(analysis: Analysis, path: Path) -> None:
         axis = ("passage_" if key.startswith("passage_") else "") + curve.axis_name
         unit = "1" if curve.unit == "ln m" else curve.unit.replace("1/s", "s-1")
         variables[key] = ((axis,), rows.value.to_numpy(), {"units": unit, "long_name": curve.name})
-        for column, words in (("standard_error", "standard error"), ("lo95", "lower 95 % end"), ("hi95", "upper 95 % end")):
+        for column, words in (
+            ("standard_error", "standard error"),
+            ("lo95", "lower 95 % end"),
+            ("hi95", "upper 95 % end"),
+        ):
             attributes = {"units": unit, "long_name": f"{curve.name}, {words}"}
             variables[f"{key}_{column}"] = ((axis,), rows[column].to_numpy(), attributes)
         for column, words in (("n_cluster", "clusters"), ("n_pair", "pairs")):
@@ -94,22 +104,26 @@ def _header(analysis: Analysis) -> dict[str, str]:
         "Conventions": "CF-1.10",
         "title": f"pair separation curves of {origin.case}",
         "source": f"{origin.source}, sha256 {origin.sha256}",
-        "comment": f"resolved from {span(*(end / KM for end in analysis.verdict.resolved))} km; seed {origin.seed}",
+        "comment": f"resolved: {span(*analysis.verdict.resolved)} km; seed {origin.seed}",
     }
 
 
 def _coordinates(analysis: Analysis) -> dict[str, tuple]:
     length, time = {"units": "m"}, {"units": "s"}
     return {
-        "separation": ("separation", analysis.exponent.axis, length | {"long_name": "lower separation threshold"}),
+        "separation": ("separation", analysis.exponent.axis, length | {"long_name": "lower threshold"}),
         "time": ("time", analysis.dispersion.times, time | {"long_name": "time since the start of the pair"}),
         "passage_time": (
             "passage_time", analysis.passage_dispersion.times,
             time | {"long_name": f"time since first passage of {analysis.passage_separation:.6g} m"},
         ),
-        "band_separation": ("band_separation", analysis.bands.separation, length | {"long_name": "separation"}),
+        "band_separation": (
+            "band_separation", analysis.bands.separation, length | {"long_name": "lower threshold"}
+        ),
         "band_time": ("band_time", analysis.bands.times, time | {"long_name": "time since first passage"}),
-        "percentile": ("percentile", [2.5, 16.0, 50.0, 84.0, 97.5], {"units": "percent", "long_name": "percentile"}),
+        "percentile": (
+            "percentile", [2.5, 16.0, 50.0, 84.0, 97.5], {"units": "percent", "long_name": "percentile"}
+        ),
     }  # fmt: skip
 
 
@@ -122,7 +136,8 @@ def _rate_variables(analysis: Analysis) -> dict[str, tuple]:
             "separation", rates.zero_fraction, {"units": "1", "long_name": "share of exits within one sample"}
         ),
         "exponent_resolved": (
-            "separation", rates.resolved.astype(np.int8), {"units": "1", "long_name": "1 where the interval entered the fit"}
+            "separation", rates.resolved.astype(np.int8),
+            {"units": "1", "long_name": "1 where the interval entered the fit"},
         ),
     }  # fmt: skip
 
@@ -130,8 +145,18 @@ def _rate_variables(analysis: Analysis) -> dict[str, tuple]:
 def _band_variables(analysis: Analysis) -> dict[str, tuple]:
     bands = analysis.bands
     table = {
-        "band_exponent_named": (bands.rate_named, "band_separation", "s-1", "exponent of the named sequences"),
-        "band_exponent_free": (bands.rate_free, "band_separation", "s-1", "exponent of the free-exponent kernels"),
+        "band_exponent_named": (
+            bands.rate_named,
+            "band_separation",
+            "s-1",
+            "exponent of the named sequences",
+        ),
+        "band_exponent_free": (
+            bands.rate_free,
+            "band_separation",
+            "s-1",
+            "exponent of the free-exponent kernels",
+        ),
         "band_dispersion": (bands.dispersion, "band_time", "m2", "predicted relative dispersion"),
         "band_mean_log_separation": (bands.mean_log, "band_time", "1", "predicted mean of ln(r / 1 m)"),
     }
@@ -152,11 +177,10 @@ def tex_table(analysis: Analysis) -> str:
     lines = [f"% {_tex(analysis.provenance.case)}", r"\begin{tabular}{lll}", r"\hline"]
     lines += [r"result & separation (km) & value \\", r"\hline"]
     for s in verdict.supported:
-        lines.append(_row(f"{DISPLAY[s.regime]} regime", span(s.low / KM, s.high / KM), "supported"))
+        lines.append(_row(f"{DISPLAY[s.regime]} regime", span(s.low, s.high), "supported"))
     lines += [_transition_row(t) for t in verdict.transitions if t.probability > 0.05]
     lines += [_slope_row(s) for s in verdict.slopes]
-    low, high = (end / KM for end in verdict.resolved)
-    lines.append(_row("resolved range", span(low, high), f"{verdict.decision.replace('_', ' ')}"))
+    lines.append(_row("resolved range", span(*verdict.resolved), verdict.decision.replace("_", " ")))
     return "\n".join([*lines, r"\hline", r"\end{tabular}", ""])
 
 
@@ -172,15 +196,14 @@ def slope_text(slope: Slope) -> str:
     """A slope as far as it is known: an estimate with its 95 % interval, a bound, or why there is none."""
     value = slope.value
     if slope.kind == "estimate":
-        sigma = spread(value.lo68, value.hi68)
-        return f"{rounded(value.median, sigma)} ({between(value.lo95, value.hi95, sigma)})"
+        return f"{alpha(value.median)} ({alpha(value.lo95)} to {alpha(value.hi95)})"
     if slope.kind == "lower_bound":
-        return f"\u2265 {significant(value.lo95)}"
-    return f"\u2264 {significant(value.hi95)}" if slope.kind == "upper_bound" else "none implied"
+        return f"\u2265 {alpha(value.lo95)}"
+    return f"\u2264 {alpha(value.hi95)}" if slope.kind == "upper_bound" else "none implied"
 
 
 def _slope_row(slope: Slope) -> str:
-    return _row(f"spectral slope, {CURVES[slope.curve]}", span(slope.low / KM, slope.high / KM), slope_text(slope))
+    return _row(f"spectral slope, {CURVES[slope.curve]}", span(slope.low, slope.high), slope_text(slope))
 
 
 def _row(*cells: str) -> str:

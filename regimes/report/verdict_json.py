@@ -24,8 +24,8 @@ def verdict_document(analysis: Analysis) -> dict[str, Any]:
     Returns
     -------
     dict
-        Only dicts, lists, strings, booleans, finite numbers and None (for what is not determined). Lengths in km;
-        slopes and exponents as in the report.
+        Only dicts, lists, strings, booleans, finite numbers and None (for what is not determined). Lengths in
+        km; slopes and exponents as in the report.
     """
     verdict, origin = analysis.verdict, analysis.provenance
     document = {
@@ -45,9 +45,7 @@ def verdict_document(analysis: Analysis) -> dict[str, Any]:
         "reasons": list(verdict.reasons),
         "sentence": verdict.sentence,
         "methods": verdict.methods,
-        "supported": [
-            {"regime": s.regime, "low_km": s.low / KM, "high_km": s.high / KM} for s in verdict.supported
-        ],
+        "supported": [{"regime": s.regime, "low_km": s.low / KM, "high_km": s.high / KM} for s in verdict.supported],
         "resolved_km": [end / KM for end in verdict.resolved],
         "limited_by": list(verdict.limited_by),
         "sequences": [{"regimes": list(s.regimes), "probability": s.probability} for s in verdict.sequences],

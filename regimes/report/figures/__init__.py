@@ -2,7 +2,6 @@
 
 from collections.abc import Callable
 
-import matplotlib
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 

@@ -13,7 +13,12 @@ PROBABLE = 0.95
 SHOWN = 0.1  # a regime that stays below this probability gets no name of its own
 BAR = 1.09  # height at which supported stretches are drawn
 FLOOR = 0.45  # where a diffusive kernel, which has no slope, is drawn
-LANDMARKS = ((5 / 3, "5/3 Richardson"), (2.0, "2"), (3.0, "3 or steeper"), (1.0, "1 or flatter"))
+LANDMARKS = (
+    (1.0, "\u2264 1", "ballistic"),
+    (5 / 3, "5/3", "Richardson"),
+    (2.0, "2", "frontal"),
+    (3.0, "\u2265 3", "nonlocal"),
+)
 
 
 @figure_function
@@ -43,9 +48,15 @@ def plot_regimes(analysis: Analysis, ax: Axes) -> Axes:
             ends, BAR - 0.025, BAR + 0.025, facecolor=COLOUR[stretch.regime], hatch=HATCH[stretch.regime],
             edgecolor="white", lw=0,
         )  # fmt: skip
-        middle = np.sqrt(ends.prod())
+        _name(ax, np.sqrt(ends.prod()), BAR + 0.04, DISPLAY[stretch.regime], va="bottom", fontsize=9.5)
+    if analysis.verdict.supported:
         ax.annotate(
-            f"supported: {DISPLAY[stretch.regime]}", (middle, BAR + 0.04), ha="center", va="bottom", fontsize=9.5
+            "supported",
+            (-0.02, BAR),
+            xycoords=("axes fraction", "data"),
+            ha="right",
+            va="center",
+            fontsize=9.5,
         )
     ax.set_ylim(0, 1.22)
     ax.set_yticks([0, 0.2, 0.4, 0.6, 0.8, PROBABLE], ["0", "0.2", "0.4", "0.6", "0.8", "0.95"])
@@ -66,13 +77,16 @@ def _name_at_peak(ax: Axes, by: BySeparation, name: str, p: np.ndarray) -> None:
         return
     high = np.flatnonzero(p >= 0.97 * np.max(p))
     x = np.exp(np.mean(np.log(by.separation[high]))) / KM
-    low, top = np.log(ax.get_xlim())
-    place = np.clip((np.log(x) - low) / (top - low), 0.14, 0.86)
-    ax.annotate(
-        DISPLAY[name], (np.exp(low + place * (top - low)), np.max(p)), xytext=(0, -5), textcoords="offset points",
-        ha="center", va="top", color=INK, zorder=4,
-        bbox={"boxstyle": "round,pad=0.15", "fc": "white", "ec": COLOUR[name], "lw": 0.8, "alpha": 0.9},
-    )  # fmt: skip
+    box = {"boxstyle": "round,pad=0.15", "fc": "white", "ec": COLOUR[name], "lw": 0.8, "alpha": 0.9}
+    _name(ax, x, np.max(p) - 0.03, DISPLAY[name], va="top", bbox=box)
+
+
+def _name(ax: Axes, x: float, y: float, words: str, **looks) -> None:
+    """Words centred at `x`, but never across the sides of the axes."""
+    low, high = np.log(ax.get_xlim())
+    margin = 0.017 * len(words)
+    place = np.clip((np.log(x) - low) / (high - low), margin, 1.0 - margin)
+    ax.annotate(words, (place, y), xycoords=("axes fraction", "data"), ha="center", color=INK, zorder=4, **looks)
 
 
 @figure_function
@@ -95,18 +109,16 @@ def plot_slope(analysis: Analysis, ax: Axes) -> Axes:
     x = by.edges / KM
     ax.axhspan(FLOOR - 0.15, FLOOR + 0.15, color=PALE, lw=0, zorder=0)
     ax.annotate(
-        "diffusive: no spectrum implied", (0.03, FLOOR), xycoords=("axes fraction", "data"), va="center", fontsize=9.5,
+        "diffusive: no spectrum implied", (0.03, FLOOR), xycoords=("axes fraction", "data"), va="center",
+        fontsize=9.5,
     )  # fmt: skip
-    for value, words in LANDMARKS:
+    for value, _, words in LANDMARKS:
         ax.axhline(value, color=GREY, lw=0.8, ls=(0, (2, 2)), zorder=1)
-        ax.annotate(
-            words, (1.0, value), xycoords=("axes fraction", "data"), xytext=(-2, 2), textcoords="offset points",
-            ha="right", va="bottom", fontsize=9.5, zorder=4,
-        )  # fmt: skip
+        ax.annotate(words, (1.01, value), xycoords=("axes fraction", "data"), va="center", fontsize=9.5)
     ax.stairs(high, x, baseline=low, fill=True, color=BLUE, alpha=0.22, lw=0, label="95 %")
     ax.stairs(middle, x, baseline=None, color=BLUE, lw=2.2, label="median", zorder=3)
     ax.set_ylim(FLOOR - 0.15, 3.35)
-    ax.set_yticks([1, 5 / 3, 2, 3], ["1", "5/3", "2", "3"])
+    ax.set_yticks([value for value, _, _ in LANDMARKS], [number for _, number, _ in LANDMARKS])
     ax.set_ylabel("spectral slope α")
     ax.legend(loc="lower left", bbox_to_anchor=(0.0, 0.2))
     return ax

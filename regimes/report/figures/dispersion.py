@@ -7,8 +7,13 @@ from regimes.analysis import Analysis
 from regimes.curves import Curve
 from regimes.report.figures.style import BLUE, COLOUR, GREEN, INK, LINE, VERMILION, figure_function, log_axis
 from regimes.units import DAY, KM
+from regimes.verdict.digits import km
 
-LAWS = {"richardson": (3.0, "Richardson $t^{3}$"), "ballistic": (2.0, "ballistic $t^{2}$"), "diffusive": (1.0, "diffusive $t$")}
+LAWS = {
+    "richardson": (3.0, "Richardson $t^{3}$", "bottom"),
+    "ballistic": (2.0, "ballistic $t^{2}$", "center"),
+    "diffusive": (1.0, "diffusive $t$", "top"),
+}
 
 
 @figure_function
@@ -35,8 +40,8 @@ def plot_dispersion(analysis: Analysis, ax: Axes) -> Axes:
         x, y, low, high = _log_bars(curve)
         style = {"ms": 4.2, "mfc": colour if marker == "o" else "white", "mec": colour}
         ax.errorbar(
-            x * shift / DAY, y / KM**2, np.stack([y - low, high - y]) / KM**2, fmt=marker, color=colour, elinewidth=0.9,
-            label=label, **style,
+            x * shift / DAY, y / KM**2, np.stack([y - low, high - y]) / KM**2, fmt=marker, color=colour,
+            elinewidth=0.9, label=label, **style,
         )  # fmt: skip
     _finish(ax)
     _laws(ax)
@@ -91,7 +96,7 @@ def plot_mean_log(analysis: Analysis, ax: Axes) -> Axes:
 
 
 def _since(analysis: Analysis) -> str:
-    return f"time since first passage of {analysis.passage_separation / KM:.3g} km (days)"
+    return f"time since first passage of {km(analysis.passage_separation)} km (days)"
 
 
 def _axes(ax: Axes, x: str, y: str) -> None:
@@ -131,10 +136,10 @@ def _finish(ax: Axes) -> None:
 def _laws(ax: Axes) -> None:
     """Slopes of the late laws of three regimes as a fan in the empty lower right corner."""
     (x_low, x_high), (y_low, y_high) = np.log10(ax.get_xlim()), np.log10(ax.get_ylim())
-    start = np.array([x_high - 0.42 * (x_high - x_low), y_low + 0.05 * (y_high - y_low)])
+    start = np.array([x_high - 0.47 * (x_high - x_low), y_low + 0.05 * (y_high - y_low)])
     aspect = ax.bbox.height / ax.bbox.width
-    for name, (slope, words) in LAWS.items():
+    for name, (slope, words, side) in LAWS.items():
         run = np.array([1.0 / (x_high - x_low), slope * aspect / (y_high - y_low)])
-        end = start + 0.2 / np.hypot(*run) * np.array([1.0, slope])
+        end = start + 0.25 / np.hypot(*run) * np.array([1.0, slope])
         ax.plot(*10.0 ** np.stack([start, end], axis=1), color=COLOUR[name], ls=LINE[name], zorder=1)
-        ax.annotate(words, 10.0**end, xytext=(4, 0), textcoords="offset points", va="center", fontsize=9.5)
+        ax.annotate(words, 10.0**end, xytext=(4, 0), textcoords="offset points", va=side, fontsize=9.5)

@@ -14,6 +14,7 @@ SLOPE_WORDS = {
     "ballistic": "ballistic $r^{-1}$",
     "diffusive": "diffusive $r^{-2}$",
 }
+BELOW_LEGEND, ABOVE_FAN = 0.66, 0.44  # heights kept free of data, on the right and on the left, as shares of the axes
 FAN_REACH = 0.27  # length of the guide lines as a share of the width of the axes
 
 
@@ -54,43 +55,64 @@ def plot_exponent(analysis: Analysis, ax: Axes) -> Axes:
 def _points(ax: Axes, rates: RateTable) -> None:
     """Resolved exponents filled, the others hollow, the textbook estimate as crosses."""
     x = rates.thresholds[:-1] / KM
-    for used, face, label in ((rates.resolved, INK, "data, 95 %"), (~rates.resolved, "white", "not resolved")):
+    for used, face, label in (
+        (rates.resolved, INK, "data, 95 %"),
+        (~rates.resolved, "white", "not resolved"),
+    ):
         show = used & np.isfinite(rates.rate) & (rates.rate > 0)
         if not np.any(show):
             continue
         y = rates.rate[show] * DAY
         bars = np.abs(np.stack([rates.low95[show], rates.high95[show]]) * DAY - y)
         ax.errorbar(
-            x[show], y, np.nan_to_num(bars), fmt="o", ms=4.8, mfc=face, mec=INK, ecolor=INK if face == INK else GREY,
-            elinewidth=1.0, label=label, zorder=3,
+            x[show], y, np.nan_to_num(bars), fmt="o", ms=4.8, mfc=face, mec=INK,
+            ecolor=INK if face == INK else GREY, elinewidth=1.0, label=label, zorder=3,
         )  # fmt: skip
     show = np.isfinite(rates.textbook) & (rates.textbook > 0)
-    ax.plot(x[show], rates.textbook[show] * DAY, "x", color=GREY, ms=4.5, mew=1.0, label="textbook estimate", zorder=2)
+    ax.plot(
+        x[show],
+        rates.textbook[show] * DAY,
+        "x",
+        color=GREY,
+        ms=4.5,
+        mew=1.0,
+        label="textbook estimate",
+        zorder=2,
+    )
 
 
 def _limits(ax: Axes, analysis: Analysis) -> None:
-    """Axes wide enough for points and bands, with room below for the guide lines."""
+    """Axes wide enough for points and bands, with room for the legend and, below, for the guide lines."""
     rates, bands = analysis.rates, analysis.bands
-    shown = np.concatenate([rates.rate, rates.textbook, rates.high95, bands.rate_named.ravel(), bands.rate_free.ravel()])
-    shown = shown[np.isfinite(shown) & (shown > 0)] * DAY
-    lowest = np.concatenate([rates.rate, bands.rate_named[0], bands.rate_free[0]])
-    lowest = lowest[np.isfinite(lowest) & (lowest > 0)] * DAY
-    x = np.concatenate([rates.thresholds[:-1][np.isfinite(rates.rate)], bands.separation]) / KM
-    ax.set_xlim(x.min() / 1.25, x.max() * 1.25)
-    ax.set_ylim(lowest.min() / 2.0, shown.max() * 2.5)
+    rows = [rates.rate, rates.high95, rates.textbook]
+    rows += [np.where(rates.resolved, rates.low95, np.nan)]
+    separation = np.concatenate([np.tile(rates.thresholds[:-1], len(rows)), np.tile(bands.separation, 4)])
+    value = np.concatenate([*rows, bands.rate_named[0], bands.rate_named[4], bands.rate_free[0], bands.rate_free[4]])
+    show = np.isfinite(value) & (value > 0)
+    x, y = np.log10(separation[show] / KM), np.log10(value[show] * DAY)
+    x_low, x_high = x.min() - 0.1, x.max() + 0.1
+    left, right = y[x < 0.5 * (x_low + x_high)], y[x > x_low + 0.45 * (x_high - x_low)]
+    low, high = y.min() - 0.1, y.max() + 0.1
+    for _ in range(20):
+        if right.size:
+            high = max(high, low + (right.max() - low) / BELOW_LEGEND)
+        if left.size:
+            low = min(low, (left.min() - ABOVE_FAN * high) / (1.0 - ABOVE_FAN))
+    ax.set_xlim(10.0**x_low, 10.0**x_high)
+    ax.set_ylim(10.0**low, 10.0**high)
 
 
 def _fan(ax: Axes) -> None:
     """Guide lines of equal length from one point in the empty lower left corner, each named at its end."""
     (x_low, x_high), (y_low, y_high) = np.log10(ax.get_xlim()), np.log10(ax.get_ylim())
     aspect = ax.bbox.height / ax.bbox.width
-    start = np.array([x_low + 0.05 * (x_high - x_low), y_low + 0.40 * (y_high - y_low)])
+    start = np.array([x_low + 0.05 * (x_high - x_low), y_low + 0.38 * (y_high - y_low)])
     for name, slope in SLOPES.items():
         run = np.array([1.0 / (x_high - x_low), slope * aspect / (y_high - y_low)])
         length = FAN_REACH / np.hypot(*run)
         end = start + length * np.array([1.0, slope])
         ax.plot(*10.0 ** np.stack([start, end], axis=1), color=COLOUR[name], ls=LINE[name], lw=1.6, zorder=1)
         ax.annotate(
-            SLOPE_WORDS[name], 10.0**end, xytext=(4, 0), textcoords="offset points", va="center", fontsize=9.5,
-            color=INK,
+            SLOPE_WORDS[name], 10.0**end, xytext=(4, 0), textcoords="offset points", va="center",
+            fontsize=9.5, color=INK,
         )  # fmt: skip

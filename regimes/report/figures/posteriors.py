@@ -5,14 +5,32 @@ from matplotlib.axes import Axes
 
 from regimes.analysis import Analysis
 from regimes.report.digits import probability, span
-from regimes.report.figures.style import BLACK, BLUE, GREY, HATCH, INK, ORANGE, PURPLE, SKY, figure_function, log_axis
-from regimes.report.words import ARROW, CURVES, DISPLAY
+from regimes.report.figures.style import (
+    BLACK,
+    BLUE,
+    GREY,
+    INK,
+    ORANGE,
+    PURPLE,
+    SKY,
+    figure_function,
+    log_axis,
+)
+from regimes.report.words import sequence
 from regimes.units import KM
+from regimes.verdict.digits import slope_text
 from regimes.verdict.record import Slope
 
 LEAST = 0.05  # transitions less probable than this are left out
 BINS = 48
-SHADES = ((BLUE, "-"), (ORANGE, (0, (5, 1.6))), (PURPLE, (0, (1.2, 1.2))), (BLACK, (0, (6, 1.5, 1, 1.5))), (SKY, "-"))
+SHADES = (
+    (BLUE, "-"),
+    (ORANGE, (0, (5, 1.6))),
+    (PURPLE, (0, (1.2, 1.2))),
+    (BLACK, (0, (6, 1.5, 1, 1.5))),
+    (SKY, "-"),
+)
+SHORT = {"exit_rate": "exit rates", "separation": "fixed times"}
 LANDMARKS = ((5 / 3, "5/3"), (2.0, "2"), (3.0, "3"))
 
 
@@ -40,16 +58,21 @@ def plot_transitions(analysis: Analysis, ax: Axes) -> Axes:
     edges = np.geomspace(low, high, BINS + 1)
     for transition, (colour, line) in zip(shown, SHADES, strict=False):
         density = np.histogram(transition.draws, edges)[0] / transition.draws.size / np.log(edges[1] / edges[0])
-        label = f"{DISPLAY[transition.lower]}{ARROW}{DISPLAY[transition.upper]} ({probability(transition.probability)})"
+        label = f"{sequence((transition.lower, transition.upper))} ({probability(transition.probability)})"
         y = density * transition.probability
         ax.stairs(y, edges / KM, color=colour, ls=line, lw=1.6, label=label)
         ax.stairs(y, edges / KM, fill=True, color=colour, alpha=0.15, lw=0)
     if shown:
-        ax.set_ylim(0, 1.0 * ax.get_ylim()[1] * (1.15 + 0.09 * len(shown)))
+        ax.set_ylim(0, ax.get_ylim()[1] * (1.15 + 0.09 * len(shown)))
         ax.legend(loc="upper left", borderaxespad=0.2, labelspacing=0.3)
     else:
         ax.set_yticks([])
-        ax.annotate(f"no transition is more probable than {LEAST:g}", (0.5, 0.5), xycoords="axes fraction", ha="center")
+        ax.annotate(
+            f"no transition is more probable than {LEAST:g}",
+            (0.5, 0.5),
+            xycoords="axes fraction",
+            ha="center",
+        )
     return ax
 
 
@@ -60,7 +83,7 @@ def _transitions(analysis: Analysis):
 
 @figure_function
 def plot_slopes(analysis: Analysis, ax: Axes) -> Axes:
-    """Spectral slopes over ranges of separation: median, 68 and 95 % intervals; arrows where only a bound is known.
+    """Spectral slopes over ranges of separation: median, 68 and 95 % intervals; arrows for bounds.
 
     Parameters
     ----------
@@ -87,14 +110,21 @@ def plot_slopes(analysis: Analysis, ax: Axes) -> Axes:
 
 
 def _range_words(slope: Slope) -> str:
-    return f"{span(slope.low / KM, slope.high / KM)} km\n{CURVES[slope.curve].replace(' at ', chr(10) + 'at ')}"
+    return f"{span(slope.low, slope.high)} km\n{SHORT[slope.curve]}"
 
 
 def _slope_row(ax: Axes, row: int, slope: Slope) -> None:
     value, filled = slope.value, slope.curve == "exit_rate"
     face = INK if filled else "white"
     if slope.kind == "none":
-        ax.annotate("no spectrum implied", (2.0, row), ha="center", va="center", fontsize=9.5, backgroundcolor="white")
+        ax.annotate(
+            "no spectrum implied",
+            (2.0, row),
+            ha="center",
+            va="center",
+            fontsize=9.5,
+            bbox={"fc": "white", "ec": "none", "pad": 1.5},
+        )
     elif slope.kind == "estimate":
         ax.plot([value.lo95, value.hi95], [row, row], color=INK, lw=1.2)
         ax.plot([value.lo68, value.hi68], [row, row], color=INK, lw=3.5)
@@ -104,6 +134,6 @@ def _slope_row(ax: Axes, row: int, slope: Slope) -> None:
         ax.annotate("", (to, row), (at, row), arrowprops={"arrowstyle": "->", "color": INK, "lw": 1.4, "shrinkA": 0})
         ax.plot(at, row, "|", ms=12, mew=1.8, color=INK)
         ax.annotate(
-            f"α {word} {at:.2g} (95 %)", ((at + to) / 2, row), xytext=(0, 4), textcoords="offset points", ha="center",
-            fontsize=9.5,
+            f"α {word} {slope_text(at)} (95 %)", ((at + to) / 2, row), xytext=(0, 5), textcoords="offset points",
+            ha="center", fontsize=9.5, bbox={"fc": "white", "ec": "none", "pad": 1.0},
         )  # fmt: skip

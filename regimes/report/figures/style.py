@@ -1,4 +1,4 @@
-"""One look for all figures: sizes, colours that everybody can tell apart, axes, and files with the same bytes."""
+"""One look for all figures: sizes, colours that everybody can tell apart, axes, files of equal bytes."""
 
 import io
 import re
@@ -20,7 +20,12 @@ VERMILION, PURPLE, SKY = "#D55E00", "#CC79A7", "#56B4E9"
 INK, GREY, PALE = "#1a1a1a", "#6b6b6b", "#d9d9d9"
 
 COLOUR = {"ballistic": GREEN, "exponential": BLUE, "richardson": VERMILION, "diffusive": PURPLE}
-LINE = {"ballistic": (0, (6, 1.5, 1, 1.5)), "exponential": "-", "richardson": (0, (5, 1.6)), "diffusive": (0, (1.2, 1.2))}
+LINE = {
+    "ballistic": (0, (6, 1.5, 1, 1.5)),
+    "exponential": "-",
+    "richardson": (0, (5, 1.6)),
+    "diffusive": (0, (1.2, 1.2)),
+}
 HATCH = {"ballistic": "..", "exponential": "", "richardson": "//", "diffusive": "\\\\"}
 
 SIZE = (4.9, 3.75)  # inches; wide enough for one column of a page, letters readable at 360 px
@@ -66,7 +71,7 @@ def new_axes() -> Axes:
 
 
 def log_axis(axis: Axis) -> None:
-    """Plain numbers on a logarithmic axis; also at 2 and 5 where fewer than two and a half decades are shown."""
+    """Plain numbers on a logarithmic axis; also at 2 and 5 where fewer than 2.5 decades are shown."""
     low, high = axis.get_view_interval()
     decades = np.log10(high / low)
     steps = (1.0,) if decades > 2.5 else (1.0, 2.0, 5.0)
