@@ -1,8 +1,11 @@
 """The verdict: what may be said, with every number behind it."""
 
 from dataclasses import dataclass
+from html import escape
 
 import numpy as np
+
+from regimes.verdict.digits import km, km_interval
 
 
 @dataclass(frozen=True, slots=True)
@@ -165,3 +168,23 @@ class Verdict:
     rhat_max: float
     ess_min: float
     cautions: tuple[Caution, ...]
+
+    def summary(self) -> str:
+        """The verdict as a few lines of text: sentence, reasons, transitions, cautions."""
+        lines = [self.sentence]
+        lines += [f"  because {reason}" for reason in self.reasons if reason not in self.sentence]
+        lines += [
+            f"  {t.lower} to {t.upper} at {km_interval(t.scale.median, t.scale.lo95, t.scale.hi95)}, "
+            f"probability {t.probability:.2f}"
+            for t in self.transitions
+        ]
+        lines.append(f"  resolved: {km(self.resolved[0])} to {km(self.resolved[1])} km")
+        lines += [f"  caution: {caution.text}" for caution in self.cautions]
+        if not self.healthy:
+            lines.append(f"  not converged: {self.health_reason}")
+        return "\n".join(lines)
+
+    def _repr_html_(self) -> str:
+        first, *rest = (escape(line.strip()) for line in self.summary().splitlines())
+        items = "".join(f"<li>{line}</li>" for line in rest)
+        return f"<p><strong>{first}</strong></p><ul>{items}</ul>"
