@@ -14,6 +14,7 @@ SLOPE_WORDS = {
     "ballistic": "ballistic $r^{-1}$",
     "diffusive": "diffusive $r^{-2}$",
 }
+NUDGE = {"richardson": 2, "ballistic": -2}  # points by which the names of neighbouring lines are moved apart
 BELOW_LEGEND, ABOVE_FAN = 0.66, 0.44  # heights kept free of data, on the right and on the left, as shares of the axes
 FAN_REACH = 0.27  # length of the guide lines as a share of the width of the axes
 
@@ -113,6 +114,6 @@ def _fan(ax: Axes) -> None:
         end = start + length * np.array([1.0, slope])
         ax.plot(*10.0 ** np.stack([start, end], axis=1), color=COLOUR[name], ls=LINE[name], lw=1.6, zorder=1)
         ax.annotate(
-            SLOPE_WORDS[name], 10.0**end, xytext=(4, 0), textcoords="offset points", va="center",
+            SLOPE_WORDS[name], 10.0**end, xytext=(4, NUDGE.get(name, 0)), textcoords="offset points", va="center",
             fontsize=9.5, color=INK,
         )  # fmt: skip
