@@ -7,7 +7,8 @@ from numba import njit
 
 from regimes.errors import DataError
 from regimes.pairs import Pairs
-from regimes.synthetic.kernel_flow import as_tracks_and_pairs, check_sizes, kernel_pairs, kernel_pieces
+from regimes.synthetic.kernel_flow import kernel_pairs, kernel_pieces
+from regimes.synthetic.releases import as_tracks_and_pairs, check_sizes, polygon
 from regimes.theory.kernel import Kernel
 from regimes.tracks import Tracks
 
@@ -171,13 +172,6 @@ def _groups_walk(pieces, corners, step, rng, position):
                 for i in range(n):
                     position[g, i, t, axis] = points[i, axis] - centre
     return shares / substeps
-
-
-def polygon(n: int, side: float) -> np.ndarray:
-    """Corners (n, 2) of a regular polygon with the given side [m]; for n = 2 its two ends."""
-    angle = 2.0 * np.pi * np.arange(n) / n
-    radius = side / (2.0 * np.sin(np.pi / n))
-    return radius * np.stack([np.cos(angle), np.sin(angle)], axis=1)
 
 
 def release_tracks(
