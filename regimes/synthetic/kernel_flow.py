@@ -16,7 +16,7 @@ from regimes.theory.kernel import Kernel
 from regimes.tracks import Tracks
 
 # Longest substep in units of r2 / K, and the shortest that a near transition may ask for.
-PAIR_SUBSTEP = 0.1
+PAIR_SUBSTEP = 0.04
 _AT_TRANSITION = 0.003
 # Pairs that come very close in a kernel that is flat there would need ever shorter substeps.
 _MOST_SUBSTEPS = 1000.0
