@@ -2,15 +2,20 @@
 
 import argparse
 import os
+import signal
 import sys
+import threading
 import traceback
 from collections.abc import Callable, Sequence
 from pathlib import Path
+from tempfile import TemporaryDirectory
 
-from regimes.errors import FitError, RegimesError
+from regimes.errors import CaseError, FitError, RegimesError
 
 DONE, INTERNAL, USAGE, INTERRUPTED, PIPE_CLOSED = 0, 1, 2, 130, 141
+ENDINGS = ".csv, .csv.gz, .parquet"
 UNHEALTHY = FitError.exit_code
+INTERRUPTED_WORDS = "interrupted; nothing was written"
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -38,7 +43,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except RegimesError as error:
         return _say(f"regimes: {error}", error.exit_code)
     except KeyboardInterrupt:
-        return _say("interrupted; nothing was written", INTERRUPTED)
+        return _say(INTERRUPTED_WORDS, INTERRUPTED)
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return PIPE_CLOSED
@@ -86,9 +91,7 @@ def _parser() -> argparse.ArgumentParser:
 
     simulate = commands.add_parser("simulate", help="make fixes with known truth")
     simulate.add_argument("recipe", type=Path, metavar="RECIPE", help="recipe file (TOML)")
-    simulate.add_argument(
-        "--out", type=Path, metavar="FILE", required=True, help="fixes to write (.csv, .csv.gz or .parquet)"
-    )
+    simulate.add_argument("--out", type=_fixes_file, metavar="FILE", required=True, help=f"fixes to write ({ENDINGS})")
     simulate.set_defaults(command=_simulate)
     return parser
 
@@ -100,6 +103,12 @@ def _version() -> str:
         return f"regimes {version('regimes')}"
     except PackageNotFoundError:
         return "regimes, not installed (run from its sources)"
+
+
+def _fixes_file(text: str) -> Path:
+    if not text.lower().endswith(tuple(ENDINGS.split(", "))):
+        raise argparse.ArgumentTypeError(f"got {text!r}; must end in one of {ENDINGS}")
+    return Path(text)
 
 
 def _natural(text: str) -> int:
@@ -127,7 +136,7 @@ def _run(chosen: argparse.Namespace) -> int:
 
     case = load_case(chosen.case)
     folder = check_folder(chosen.out or default_folder(chosen.case, case.name))
-    with _progress() as report:
+    with _Watch() as report:
         analysis = analyse(case, progress=report, jobs=chosen.jobs or os.cpu_count() or 1, seed=chosen.seed)
     files = write_report(analysis, folder)
     verdict = analysis.verdict
@@ -150,8 +159,17 @@ def _simulate(chosen: argparse.Namespace) -> int:
     from regimes.fixes import write_fixes
     from regimes.synthetic import load_recipe, simulate
 
-    write_fixes(simulate(load_recipe(chosen.recipe)), chosen.out)
-    _tell(f"fixes: {_short(chosen.out)}")
+    recipe, out = load_recipe(chosen.recipe), chosen.out.resolve()
+    try:
+        with TemporaryDirectory(prefix=".fixes-", dir=out.parent) as scratch:
+            write_fixes(simulate(recipe), Path(scratch) / out.name)
+            os.replace(Path(scratch) / out.name, out)
+    except OSError as error:
+        raise CaseError(
+            f"--out: got {chosen.out}, which cannot be written ({error.strerror or error}); "
+            "must be a file in a folder that exists; choose another"
+        ) from error
+    _tell(f"fixes: {_short(out)}")
     return DONE
 
 
@@ -178,35 +196,45 @@ def _short(path: Path) -> Path:
     return path.relative_to(here) if path.is_relative_to(here) else path
 
 
-class _progress:
-    """Bars with the time left on a terminal's stderr; nothing elsewhere."""
+class _Watch:
+    """While nothing is being written: bars with the time left where stderr is a terminal, and Ctrl-C ends at once.
+
+    Threads that sample would otherwise be waited for, which can take a minute.
+    """
 
     def __enter__(self) -> Callable[[str, int, int], None] | None:
         self.bars = None
+        self.tasks: dict[str, int] = {}
+        in_main = threading.current_thread() is threading.main_thread()
+        self.before = signal.signal(signal.SIGINT, self._leave) if in_main else None
         if not sys.stderr.isatty():
             return None
         from rich.console import Console
         from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 
-        columns = (
-            TextColumn("{task.description}"),
-            BarColumn(),
-            TextColumn("{task.completed}/{task.total}"),
-            TimeRemainingColumn(),
-        )
+        words, share = TextColumn("{task.description}"), TextColumn("{task.completed}/{task.total}")
+        columns = (words, BarColumn(), share, TimeRemainingColumn())
         self.bars = Progress(*columns, console=Console(stderr=True), transient=True)
-        self.tasks: dict[str, int] = {}
         self.bars.start()
         return self._report
+
+    def __exit__(self, *_details: object) -> None:
+        if self.before is not None:
+            signal.signal(signal.SIGINT, self.before)
+        if self.bars is not None:
+            self.bars.stop()
 
     def _report(self, stage: str, done: int, total: int) -> None:
         if stage not in self.tasks:
             self.tasks[stage] = self.bars.add_task(stage, total=total)
         self.bars.update(self.tasks[stage], completed=done, total=total)
 
-    def __exit__(self, *_details: object) -> None:
+    def _leave(self, *_details: object) -> None:
         if self.bars is not None:
             self.bars.stop()
+        _say(INTERRUPTED_WORDS, INTERRUPTED)
+        sys.stderr.flush()
+        os._exit(INTERRUPTED)
 
 
 if __name__ == "__main__":

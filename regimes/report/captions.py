@@ -30,6 +30,12 @@ def description(name: str, analysis: Analysis) -> str:
     return f"{TITLES[name]}. {_SHOWN[name](analysis)}"
 
 
+FEW = (
+    "Times with fewer than 5 pairs are left out; a point has no bar where the scatter between clusters cannot be "
+    "estimated."
+)
+
+
 def _who(analysis: Analysis) -> str:
     origin = analysis.provenance
     return f"{count(origin.n_pairs)} pairs in {count(origin.n_clusters)} clusters"
@@ -94,7 +100,7 @@ def _mean_log(analysis: Analysis) -> str:
         "Geometric mean separation (the exponential of the mean of ln r) since first passage of "
         f"{_passage(analysis)}: data with 95 % cluster intervals, and what the kernels fitted to the exit "
         "rates predict (bands, 68 and 95 %). Nothing was fitted here. The mean of ln r has no heavy tail "
-        "and is the sharper test."
+        "and is the sharper test. " + FEW
     )
 
 
@@ -103,15 +109,15 @@ def _dispersion_passage(analysis: Analysis) -> str:
         f"Relative dispersion (mean squared separation) since first passage of {_passage(analysis)}: data "
         "with 95 % cluster intervals, and what the kernels fitted to the exit rates predict (bands, 68 "
         "and 95 %). Nothing was fitted here. Few pairs carry the mean while growth is exponential, so "
-        "that a sample tends to lie low."
+        "that a sample tends to lie low. " + FEW
     )
 
 
 def _dispersion(analysis: Analysis) -> str:
     return (
         f"Relative dispersion since the start of each pair ({_who(analysis)}), total and east and north "
-        "parts, with 95 % cluster intervals of the logarithm. Short lines: late power laws of three "
-        "regimes, reached only long after the start; the exponential regime has none."
+        "parts (x and y on a plane), with 95 % cluster intervals of the logarithm. Short lines: late power laws of three "
+        "regimes, reached only long after the start; the exponential regime has none. " + FEW
     )
 
 

@@ -45,15 +45,26 @@ def write_report(analysis: Analysis, folder: str | Path) -> dict[str, Path]:
             new = Path(scratch) / "new"
             new.mkdir()
             _write_all(analysis, new)
-            if folder.exists():
-                os.replace(folder, Path(scratch) / "old")
-            os.replace(new, folder)
+            _put_in_place(new, folder, Path(scratch) / "old")
     except OSError as error:
         raise CaseError(
             f"report folder: got {folder}, which cannot be written ({error.strerror or error}); "
             "must be a place where files may be created; choose another with --out"
         ) from error
     return {name: folder / name for name in (*FILES, *FIGURE_FILES)}
+
+
+def _put_in_place(new: Path, folder: Path, aside: Path) -> None:
+    """Move `new` to `folder`; what was there comes back if that fails."""
+    earlier = folder.exists()
+    if earlier:
+        os.replace(folder, aside)
+    try:
+        os.replace(new, folder)
+    except BaseException:
+        if earlier:
+            os.replace(aside, folder)
+        raise
 
 
 def check_folder(folder: str | Path) -> Path:
@@ -65,11 +76,19 @@ def check_folder(folder: str | Path) -> Path:
         If something else is there.
     """
     folder = Path(folder).resolve()
-    if not folder.exists():
-        return folder
-    if not folder.is_dir():
-        raise CaseError(f"report folder: got {folder}, which is a file; must be a folder; choose another with --out")
-    found = {path.relative_to(folder).as_posix() for path in folder.rglob("*") if not path.is_dir()}
+    try:
+        if not folder.exists():
+            return folder
+        if not folder.is_dir():
+            raise CaseError(
+                f"report folder: got {folder}, which is a file; must be a folder; choose another with --out"
+            )
+        found = {path.relative_to(folder).as_posix() for path in folder.rglob("*") if not path.is_dir()}
+    except OSError as error:
+        raise CaseError(
+            f"report folder: got {str(folder)[:200]}, which cannot be read ({error.strerror or error}); "
+            "must be a place where files may be created; choose another with --out"
+        ) from error
     if not found:
         return folder
     foreign = sorted(found - {*FILES, *FIGURE_FILES})
@@ -95,11 +114,11 @@ def _write_all(analysis: Analysis, folder: Path) -> None:
     for name in FIGURES:
         figure = draw(name, analysis)
         drawings[name] = svg(figure, name)
-        (folder / "figures" / f"{name}.svg").write_text(drawings[name], encoding="utf-8")
+        (folder / "figures" / f"{name}.svg").write_text(drawings[name], encoding="utf-8", newline="\n")
         (folder / "figures" / f"{name}.pdf").write_bytes(pdf(figure, name))
     write_curves_csv(analysis, folder / "curves.csv")
     write_curves_netcdf(analysis, folder / "curves.nc")
     write_posterior(analysis, folder / "posterior.nc")
     write_tex(analysis, folder / "table.tex")
-    (folder / "report.html").write_text(page(analysis, drawings), encoding="utf-8")
-    (folder / "verdict.json").write_text(verdict_text(analysis), encoding="utf-8")
+    (folder / "report.html").write_text(page(analysis, drawings), encoding="utf-8", newline="\n")
+    (folder / "verdict.json").write_text(verdict_text(analysis), encoding="utf-8", newline="\n")

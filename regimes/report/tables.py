@@ -168,7 +168,7 @@ def _band_variables(analysis: Analysis) -> dict[str, tuple]:
 
 def write_tex(analysis: Analysis, path: Path) -> None:
     r"""Results as a LaTeX tabular that needs no package: ``\input{table.tex}``."""
-    path.write_text(tex_table(analysis), encoding="utf-8")
+    path.write_text(tex_table(analysis), encoding="utf-8", newline="\n")
 
 
 def tex_table(analysis: Analysis) -> str:
@@ -199,7 +199,7 @@ def slope_text(slope: Slope) -> str:
         return f"{alpha(value.median)} ({alpha(value.lo95)} to {alpha(value.hi95)})"
     if slope.kind == "lower_bound":
         return f"\u2265 {alpha(value.lo95)}"
-    return f"\u2264 {alpha(value.hi95)}" if slope.kind == "upper_bound" else "none implied"
+    return f"\u2264 {alpha(value.hi95)}" if slope.kind == "upper_bound" else "none quoted"
 
 
 def _slope_row(slope: Slope) -> str:

@@ -120,7 +120,7 @@ def plot_slope(analysis: Analysis, ax: Axes) -> Axes:
     ax.set_ylim(FLOOR - 0.15, 3.35)
     ax.set_yticks([value for value, _, _ in LANDMARKS], [number for _, number, _ in LANDMARKS])
     ax.set_ylabel("spectral slope α")
-    ax.legend(loc="lower left", bbox_to_anchor=(0.0, 0.2))
+    ax.legend(loc="lower left", bbox_to_anchor=(0.0, 1.0), ncol=2, borderaxespad=0.0)
     return ax
 
 

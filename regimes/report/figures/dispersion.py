@@ -4,11 +4,13 @@ import numpy as np
 from matplotlib.axes import Axes
 
 from regimes.analysis import Analysis
-from regimes.curves import Curve
+from regimes.curves import Curve, DispersionStatistics
 from regimes.report.figures.style import BLUE, COLOUR, GREEN, INK, LINE, VERMILION, figure_function, log_axis
 from regimes.units import DAY, KM
 from regimes.verdict.digits import km
 
+LEAST_PAIRS = 5  # common practice, no source
+NORMAL95 = 1.96
 LAWS = {
     "richardson": (3.0, "Richardson $t^{3}$", "bottom"),
     "ballistic": (2.0, "ballistic $t^{2}$", "center"),
@@ -37,7 +39,7 @@ def plot_dispersion(analysis: Analysis, ax: Axes) -> Axes:
         (statistics.north(), "s", GREEN, "north", 1.03),
         (statistics.relative_dispersion(), "o", INK, "total, 95 %", 1.0),
     ):
-        x, y, low, high = _log_bars(curve)
+        x, y, low, high = _log_bars(statistics, curve)
         style = {"ms": 4.2, "mfc": colour if marker == "o" else "white", "mec": colour}
         ax.errorbar(
             x * shift / DAY, y / KM**2, np.stack([y - low, high - y]) / KM**2, fmt=marker, color=colour,
@@ -64,7 +66,8 @@ def plot_passage(analysis: Analysis, ax: Axes) -> Axes:
     """
     _axes(ax, _since(analysis), "relative dispersion (km²)")
     _band(ax, analysis, analysis.bands.dispersion / KM**2)
-    x, y, low, high = _log_bars(analysis.passage_dispersion.relative_dispersion())
+    statistics = analysis.passage_dispersion
+    x, y, low, high = _log_bars(statistics, statistics.relative_dispersion())
     _data(ax, x, y / KM**2, low / KM**2, high / KM**2)
     _finish(ax)
     return ax
@@ -86,10 +89,10 @@ def plot_mean_log(analysis: Analysis, ax: Axes) -> Axes:
     """
     _axes(ax, _since(analysis), "geometric mean separation (km)")
     _band(ax, analysis, np.exp(analysis.bands.mean_log) / KM)
-    curve = analysis.passage_dispersion.mean_log_separation()
-    margin = 1.96 * np.nan_to_num(curve.standard_error)
-    show = np.isfinite(curve.value)
-    value, margin = curve.value[show], margin[show]
+    statistics = analysis.passage_dispersion
+    curve = statistics.mean_log_separation()
+    show = _enough(statistics) & np.isfinite(curve.value) & (curve.axis > 0)
+    value, margin = curve.value[show], NORMAL95 * np.nan_to_num(curve.standard_error[show])
     _data(ax, curve.axis[show], *(np.exp(value + k * margin) / KM for k in (0, -1, 1)))
     _finish(ax)
     return ax
@@ -106,11 +109,17 @@ def _axes(ax: Axes, x: str, y: str) -> None:
     ax.set_ylabel(y)
 
 
-def _log_bars(curve: Curve) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+def _enough(statistics: DispersionStatistics) -> np.ndarray:
+    """Times at which enough pairs are left to be worth a point (all, where there never were more)."""
+    pairs = statistics.weight @ statistics.count
+    return pairs >= min(LEAST_PAIRS, pairs.max())
+
+
+def _log_bars(statistics: DispersionStatistics, curve: Curve) -> tuple[np.ndarray, ...]:
     """Axis, value and 95 % ends, from the error of the logarithm; no bar where there is no error."""
-    show = np.isfinite(curve.value) & (curve.value > 0) & (curve.axis > 0)
+    show = _enough(statistics) & np.isfinite(curve.value) & (curve.value > 0) & (curve.axis > 0)
     value = curve.value[show]
-    factor = np.exp(1.96 * np.nan_to_num(curve.standard_error[show]) / value)
+    factor = np.exp(NORMAL95 * np.nan_to_num(curve.standard_error[show]) / value)
     return curve.axis[show], value, value / factor, value * factor
 
 

@@ -1,5 +1,7 @@
 """Posteriors of single numbers: transition separations and spectral slopes."""
 
+from textwrap import fill
+
 import numpy as np
 from matplotlib.axes import Axes
 
@@ -118,7 +120,7 @@ def _slope_row(ax: Axes, row: int, slope: Slope) -> None:
     face = INK if filled else "white"
     if slope.kind == "none":
         ax.annotate(
-            "no spectrum implied",
+            fill(slope.reason, 44),
             (2.0, row),
             ha="center",
             va="center",
