@@ -9,6 +9,8 @@ import pytest
 from geographiclib.geodesic import Geodesic
 from scipy import stats
 from scipy.integrate import quad, solve_ivp
+from scipy.sparse.csgraph import minimum_spanning_tree
+from scipy.spatial.distance import pdist, squareform
 from scipy.special import gamma as gamma_function
 from scipy.special import hyp1f1, j0, j1
 
@@ -26,7 +28,7 @@ from regimes.synthetic import (
     simulate,
     truth,
 )
-from regimes.synthetic.kernel_groups import GROUP_SUBSTEP
+from regimes.synthetic.kernel_groups import GROUP_SUBSTEP, _span
 from regimes.synthetic.spectrum import fourier_modes
 from regimes.theory.kernel import Kernel
 
@@ -209,6 +211,17 @@ class TestReleases:
             assert pairs.n_pair == 3 * n * (n - 1) // 2
             assert np.array_equal(pairs.cluster[pairs.first], pairs.cluster[pairs.second])
 
+    def test_tree_is_the_shortest(self):
+        """scipy's minimum spanning tree of the same points."""
+        rng = np.random.default_rng(0)
+        for n in (2, 3, 6, 10):
+            points = rng.standard_normal((n, 2))
+            tree = np.empty((n - 1, 2), dtype=np.int64)
+            _span(points, tree, np.empty((n, 2)))
+            found = np.linalg.norm(points[tree[:, 0]] - points[tree[:, 1]], axis=1).sum()
+            assert found == pytest.approx(minimum_spanning_tree(squareform(pdist(points))).sum(), rel=1e-12)
+            assert sorted([0, *tree[:, 0]]) == list(range(n))
+
     def test_two_runs_of_one_seed_agree_to_the_byte(self):
         one, two = (release_tracks(power_law(1.0), (3, 4), 1.0, 0.1, 5, seed=6)[0].position for _ in range(2))
         assert one.tobytes() == two.tobytes()
@@ -258,11 +271,13 @@ class TestSpectrum:
         rng = np.random.default_rng(1)
         r = np.array([3.0, 20.0, 100.0])
         along, across = np.empty((2, 4000, 3))
+        heading = np.array([np.cos(0.6), np.sin(0.6)])
         for i in range(4000):
             modes = fourier_modes(spectrum, rng)
-            phase = np.outer(r, modes[:, 0])  # separations along x
+            phase = np.outer(r, modes[:, :2] @ heading)
             change = (np.cos(phase) - 1) @ modes[:, 3:5] + np.sin(phase) @ modes[:, 5:7]
-            along[i], across[i] = change[:, 0] ** 2, change[:, 1] ** 2
+            along[i] = (change @ heading) ** 2
+            across[i] = np.sum(change**2, axis=1) - along[i]
         ends = 2 * np.pi / BROKEN.wavelengths
         for j in range(3):
 
@@ -459,7 +474,8 @@ class TestSurvey:
         rows = {(p, t): tuple(x) for p, t, x in zip(whole.particle, whole.time, whole.position, strict=True)}
         for p, t, x in zip(holes.particle, holes.time, holes.position, strict=True):
             assert rows[p, t] == tuple(x)
-        assert np.bincount(holes.particle).size == 24, "no particle vanishes altogether"
+        first = np.flatnonzero(np.diff(holes.particle, prepend=-1))
+        assert set(holes.time[first]) == set(whole.time[np.flatnonzero(np.diff(whole.particle, prepend=-1))])
 
     def test_gaps_last_as_long_as_asked(self):
         """Gaps start with probability p and last 1 + floor(exponential of mean m) fixes: mean 1 + 1/(e^(1/m) - 1)."""
@@ -469,6 +485,16 @@ class TestSurvey:
         expected = 1 + 1 / np.expm1(1 / 3)
         # 0.1: gaps that overlap, or run past the end of a record and are not seen
         assert np.mean(gaps) == pytest.approx(expected, abs=SIGMAS * gaps.std() / np.sqrt(gaps.size) + 0.1)
+
+    def test_share_of_missing_fixes(self):
+        """A fix is there if no gap that began k fixes ago lasts k more: product of 1 - p exp(-k / m)."""
+        p, m = 0.01, 3.0
+        made = recipe(releases={"number": 2000}, records={"gap_probability": p, "gap_h": 3.0 * m})
+        fixes = simulate(made)
+        late = np.sum(fixes.time - np.repeat(np.arange(2000), 3)[fixes.particle] * 108000.0 > 16 * 10800 + 1935360000)
+        missing, expected = 1 - late / (6000 * 16), 1 - np.prod(1 - p * np.exp(-np.arange(40) / m))
+        error = np.sqrt(expected * 2 * (1 + m) / (6000 * 16))  # fixes are lost in runs of 1 + m or so
+        assert abs(missing - expected) < SIGMAS * error
 
     def test_position_error(self):
         clean, noisy = simulate(recipe(place=None)), simulate(recipe(place=None, records={"position_error_m": 20.0}))
