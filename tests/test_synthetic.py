@@ -469,7 +469,7 @@ class TestSurvey:
             assert abs(share - expected) < SIGMAS * np.sqrt(expected * (1 - expected) / 1200)
 
     def test_gaps_leave_the_paths_alone(self):
-        whole, holes = simulate(recipe()), simulate(recipe(records={"gap_probability": 0.1, "gap_h": 9.0}))
+        whole, holes = simulate(recipe()), simulate(recipe(records={"gap_probability": 0.2, "gap_h": 9.0}))
         assert holes.n_fix < 0.9 * whole.n_fix
         rows = {(p, t): tuple(x) for p, t, x in zip(whole.particle, whole.time, whole.position, strict=True)}
         for p, t, x in zip(holes.particle, holes.time, holes.position, strict=True):
