@@ -124,9 +124,7 @@ class DispersionStatistics:
         m2, m4 = square.value, fourth.value
         m2 = np.where(m2 > 0, m2, np.nan)
         influence = fourth.influence / m2**2 - 2.0 * m4 / m2**3 * square.influence
-        return Kurtosis(
-            self.times, m4 / m2**2, influence, self.weight, square.n_cluster, self.weight @ self.count
-        )
+        return Kurtosis(self.times, m4 / m2**2, influence, self.weight, square.n_cluster, self.weight @ self.count)
 
     def merge(self, other: "DispersionStatistics") -> "DispersionStatistics":
         """Statistics of the clusters of both; the other's clusters must be different ones.
@@ -200,8 +198,8 @@ def dispersion_statistics(tracks: Tracks, pairs: Pairs, times: np.ndarray) -> Di
     """
     lags = nearest_lags(times, tracks.step)
     spans, rows, weight = spans_and_rows(tracks, pairs)
-    sums = np.zeros((len(_SUMS), weight.size, lags.size))
+    sums = np.zeros((weight.size, lags.size, len(_SUMS)))
     position = np.ascontiguousarray(tracks.position, dtype=float)
     dispersion_pass(position, bool(tracks.planar), spans, rows, lags, sums)
-    named = dict(zip(_SUMS, sums, strict=True))
+    named = dict(zip(_SUMS, np.moveaxis(sums, -1, 0), strict=True))
     return DispersionStatistics(lags * float(tracks.step), **named, weight=weight, step=float(tracks.step))

@@ -10,7 +10,16 @@ from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
 
-_PER_ROW = ("exits", "time_at_risk", "finished_time")
+_PER_ROW = (
+    "exits",
+    "time_at_risk",
+    "finished_time",
+    "at_once",
+    "start_over",
+    "start_over_square",
+    "exit_over",
+    "exit_over_square",
+)
 _TOTALS = ("passages", "zero_length", "censored")
 _LOOSE = ("loose_row", "loose_interval", "loose_log")
 _BLOCK = 1 << 16  # pairs at a time, so that the table of unfinished passages stays small
@@ -35,6 +44,11 @@ class ExitStatistics:
         S, duration of all passages, finished or not.
     finished_time : (n_row, n) float array [s]
         Duration of the passages that ended in an exit.
+    at_once : (n_row, n) float array
+        Zero-length exits.
+    start_over, start_over_square, exit_over, exit_over_square : (n_row, n) float arrays
+        Of all other passages: sums of u and u^2, u = ln(r / threshold) at the samples where they start (threshold
+        n) and exit (threshold n + 1), since samples never fall on a threshold.
     weight : (n_row,) float array
         +1 for clusters, -1 for couples of clusters; see `Curve`.
     passages, zero_length, censored : (n,) int arrays
@@ -51,6 +65,11 @@ class ExitStatistics:
     exits: np.ndarray
     time_at_risk: np.ndarray
     finished_time: np.ndarray
+    at_once: np.ndarray
+    start_over: np.ndarray
+    start_over_square: np.ndarray
+    exit_over: np.ndarray
+    exit_over_square: np.ndarray
     weight: np.ndarray
     passages: np.ndarray
     zero_length: np.ndarray
@@ -207,7 +226,7 @@ def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Exi
             "positive numbers, each larger than the one before; sort them and drop repeats"
         )
     spans, rows, weight = spans_and_rows(tracks, pairs)
-    sums = np.zeros((3, weight.size, thresholds.size - 1))
+    sums = np.zeros((len(_PER_ROW), weight.size, thresholds.size - 1))
     totals = np.zeros((3, thresholds.size - 1), dtype=np.int64)
     levels = guarded_levels(thresholds, tracks.planar)
     position = np.ascontiguousarray(tracks.position, dtype=float)
@@ -215,9 +234,9 @@ def exit_statistics(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Exi
     for chosen in np.array_split(np.arange(len(spans)), max(1, -(-len(spans) // _BLOCK))):
         loose = np.empty((chosen.size * (thresholds.size - 1), 3))
         part = (spans[chosen], rows[chosen])
-        count = exit_pass(position, bool(tracks.planar), *part, levels, sums, totals, loose)
+        count = exit_pass(position, bool(tracks.planar), *part, levels, sums, (totals, loose))
         found.append(_spread(loose[:count], part[1]))
-    sums[1:] *= tracks.step
+    sums[1:3] *= tracks.step
     return ExitStatistics(
         thresholds,
         **dict(zip(_PER_ROW, sums, strict=True)),

@@ -16,9 +16,12 @@ _GUARD = 1.0 - 1e-5
 # A threshold longer than this [m] is beyond what the chord can bound safely, so every sample is measured.
 _LONGEST_GUARDED = 4.0e6
 
+# Squared chords that are computed ahead of a walk.
+_CHORDS = 256
+
 EXITED, CENSORED = 1.0, 2.0
 # Columns of the table of one pair, a row per threshold interval.
-STATE, STEPS, LAST = range(3)
+STATE, STEPS, LAST, FIRST = range(4)
 
 
 def spans_and_rows(tracks: Tracks, pairs: Pairs) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
@@ -54,11 +57,18 @@ def guarded_levels(thresholds: np.ndarray, planar: bool) -> np.ndarray:
 
 
 @njit(cache=True, error_model="numpy")
-def _squared_chord(position, i, j):
-    dx = position[j, 0] - position[i, 0]
-    dy = position[j, 1] - position[i, 1]
-    dz = position[j, 2] - position[i, 2]
-    return dx * dx + dy * dy + dz * dz
+def _squared_chords(flat, i, j, out):
+    """Squared chords of as many samples as `out` holds, from rows i and j of the flattened positions.
+
+    A loop of its own over flat slices, without branches, so that the compiler can take several at a time.
+    """
+    n = out.size
+    a, b = flat[3 * i : 3 * (i + n)], flat[3 * j : 3 * (j + n)]
+    for t in range(n):
+        dx = b[3 * t] - a[3 * t]
+        dy = b[3 * t + 1] - a[3 * t + 1]
+        dz = b[3 * t + 2] - a[3 * t + 2]
+        out[t] = dx * dx + dy * dy + dz * dz
 
 
 @njit(cache=True, error_model="numpy")
@@ -78,8 +88,8 @@ def _reached(thresholds, r, top):
 
 @njit(cache=True, error_model="numpy")
 def _censor(position, planar, span, passage, table):
-    """Close an unfinished passage (threshold index, start, last valid sample)."""
-    n, start, last = passage
+    """Close an unfinished passage (threshold index, start, last valid sample, ln r at the start)."""
+    n, start, last, log_start = passage
     r = 0.0
     t = last
     while r <= 0.0:  # two fixes may coincide after rounding; the start lies at or beyond a threshold
@@ -88,64 +98,74 @@ def _censor(position, planar, span, passage, table):
     table[n, STATE] = CENSORED
     table[n, STEPS] = last - start
     table[n, LAST] = math.log(r)
+    table[n, FIRST] = log_start
 
 
 @njit(cache=True, error_model="numpy")
-def _walk(position, planar, span, levels, table):
+def _walk(position, planar, span, levels, work):
     """First passages of one pair through the thresholds, into a table cleared beforehand."""
-    thresholds = levels[0]
+    table, chords = work
+    flat, thresholds = position.reshape(-1), levels[0]
     highest = thresholds.size - 1
-    top, start, last = -1, -1, -1  # start < 0: no passage in progress
+    top, start, last, log_start = -1, -1, -1, 0.0  # start < 0: no passage in progress
     blind = True  # the next valid sample opens the record, or follows a gap
     for t in range(span[2]):
-        chord2 = _squared_chord(position, span[0] + t, span[1] + t)
-        if chord2 != chord2:
+        k = t % chords.size
+        if k == 0:
+            ahead = min(chords.size, span[2] - t)
+            _squared_chords(flat, span[0] + t, span[1] + t, chords[:ahead])
+        if not blind and chords[k] < levels[1, top + 1]:
+            last = t
+            continue
+        if chords[k] != chords[k]:
             if start >= 0:
-                _censor(position, planar, span, (top, start, last), table)
+                _censor(position, planar, span, (top, start, last, log_start), table)
                 start = -1
             blind = True
             continue
-        if blind or chord2 >= levels[1, top + 1]:
-            r = _components(position, span[0] + t, span[1] + t, planar)[0]
-            reached = _reached(thresholds, r, top)
-            if blind:
-                # Thresholds passed out of sight are lost; a record may start exactly on one.
-                if last < 0 and 0 <= reached < highest and r == thresholds[reached]:
-                    start = t
-            elif reached > top:
-                if start >= 0:
-                    table[top, STATE], table[top, STEPS] = EXITED, t - start
-                for n in range(top + 1, reached):
-                    table[n, STATE] = EXITED
-                start = t
-            top = reached
-            if top == highest:
-                return
-            blind = False
-        last = t
+        r = _components(position, span[0] + t, span[1] + t, planar)[0]
+        reached = _reached(thresholds, r, top)
+        if blind:
+            # Thresholds passed out of sight are lost; a record may start exactly on one.
+            if last < 0 and 0 <= reached < highest and r == thresholds[reached]:
+                start, log_start = t, math.log(r)
+        elif reached > top:
+            if start >= 0:
+                table[top, STATE], table[top, STEPS] = EXITED, t - start
+                table[top, FIRST], table[top, LAST] = log_start, math.log(r)
+            for n in range(top + 1, reached):
+                table[n, STATE] = EXITED
+            start, log_start = t, math.log(r)
+        top, last, blind = reached, t, False
+        if top == highest:
+            return
     if start >= 0:
-        _censor(position, planar, span, (top, start, last), table)
+        _censor(position, planar, span, (top, start, last, log_start), table)
 
 
 @njit(cache=True, error_model="numpy")
-def exit_pass(position, planar, spans, rows, levels, sums, totals, loose):
-    """Add the passages of every pair; the number of unfinished ones written to `loose`.
+def exit_pass(position, planar, spans, rows, levels, sums, notes):
+    """Add the passages of every pair; returns the number of unfinished ones that it noted.
 
-    `sums` (3, n_row, n): exits, steps at risk, steps of finished passages. `totals` (3, n): passages, zero-length
-    exits, censored passages. `loose` (n_pair n, 3): pair, interval and ln r at the end of unfinished ones.
+    `sums` (8, n_row, n): exits, steps at risk, steps of finished passages, zero-length exits, and for the others
+    u and u^2 of their start and of their exit, u being ln of the separation over the threshold just passed.
+    `notes` is a pair of arrays: (3, n) passages, zero-length exits and censored passages, and (n_pair n, 3)
+    pair, interval and ln r at the end of unfinished ones.
     """
+    totals, loose = notes
     n_interval = levels.shape[1] - 1
-    table = np.empty((n_interval, 3))
+    table, chords, logs = np.empty((n_interval, 4)), np.empty(_CHORDS), np.log(levels[0])
     n_loose = 0
     for p in range(spans.shape[0]):
         table[:] = 0.0
-        _walk(position, planar, spans[p], levels, table)
+        _walk(position, planar, spans[p], levels, (table, chords))
         for n in range(n_interval):
             if table[n, STATE] == 0.0:
                 continue
             exited = table[n, STATE] == EXITED
+            at_once = exited and table[n, STEPS] == 0.0
             totals[0, n] += 1
-            totals[1, n] += exited and table[n, STEPS] == 0.0
+            totals[1, n] += at_once
             totals[2, n] += not exited
             if not exited:
                 loose[n_loose, 0], loose[n_loose, 1] = p, n
@@ -157,6 +177,15 @@ def exit_pass(position, planar, spans, rows, levels, sums, totals, loose):
                     sums[0, row, n] += exited
                     sums[1, row, n] += table[n, STEPS]
                     sums[2, row, n] += table[n, STEPS] if exited else 0.0
+                    sums[3, row, n] += at_once
+                    if not at_once:
+                        over = table[n, FIRST] - logs[n]
+                        sums[4, row, n] += over
+                        sums[5, row, n] += over * over
+                        if exited:
+                            over = table[n, LAST] - logs[n + 1]
+                            sums[6, row, n] += over
+                            sums[7, row, n] += over * over
     return n_loose
 
 
@@ -164,7 +193,7 @@ def exit_pass(position, planar, spans, rows, levels, sums, totals, loose):
 def dispersion_pass(position, planar, spans, rows, lags, sums):
     """Add moments of the separation at each lag.
 
-    `sums` (8, n_row, n_lag): count, r2, east2, north2, east north, r4, ln r, count of r > 0.
+    `sums` (n_row, n_lag, 8): count, r2, east2, north2, east north, r4, ln r, count of r > 0.
     """
     for p in range(spans.shape[0]):
         for k in range(lags.size):
@@ -173,18 +202,18 @@ def dispersion_pass(position, planar, spans, rows, lags, sums):
             r, east, north = _components(position, spans[p, 0] + lags[k], spans[p, 1] + lags[k], planar)
             if r != r:
                 continue
+            log_r = math.log(r) if r > 0.0 else 0.0
             for m in range(3):
-                row = rows[p, m]
-                if row >= 0:
-                    sums[0, row, k] += 1.0
-                    sums[1, row, k] += r * r
-                    sums[2, row, k] += east * east
-                    sums[3, row, k] += north * north
-                    sums[4, row, k] += east * north
-                    sums[5, row, k] += r * r * r * r
-                    if r > 0.0:
-                        sums[6, row, k] += math.log(r)
-                        sums[7, row, k] += 1.0
+                if rows[p, m] >= 0:
+                    cell = sums[rows[p, m], k]
+                    cell[0] += 1.0
+                    cell[1] += r * r
+                    cell[2] += east * east
+                    cell[3] += north * north
+                    cell[4] += east * north
+                    cell[5] += r * r * r * r
+                    cell[6] += log_r
+                    cell[7] += r > 0.0
 
 
 @njit(cache=True, error_model="numpy")
