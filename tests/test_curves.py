@@ -99,7 +99,8 @@ def paths(tracks, pairs):
 
 
 def slow_passage(r, low, high):
-    """(exits, steps at risk, steps of exits, last r if unfinished) at one threshold, from the definition."""
+    """One threshold, from the definition: (exits, steps at risk, steps of exits, zero-length exits, sums of u and
+    u^2 at the start, of u and u^2 at the exit, last r if unfinished), u = ln(r / threshold) unless zero-length."""
     known = np.flatnonzero(np.isfinite(r))
     at_or_above = np.flatnonzero(r >= low)
     if r[known[0]] > low or at_or_above.size == 0:
@@ -112,9 +113,13 @@ def slow_passage(r, low, high):
     lost = rest[np.isnan(r[rest])]
     end = ends[0] if ends.size else r.size
     if ends.size and not (lost.size and lost[0] < end):
-        return 1, end - start, end - start, None
+        if end == start:
+            return 1, 0, 0, 1, 0, 0, 0, 0, None
+        u, v = np.log(r[start] / low), np.log(r[end] / high)
+        return 1, end - start, end - start, 0, u, u**2, v, v**2, None
     last = (lost[0] if lost.size else r.size) - 1
-    return 0, last - start, 0, r[last]
+    u = np.log(r[start] / low)
+    return 0, last - start, 0, 0, u, u**2, 0, 0, r[last]
 
 
 class TestPassagesByHand:
@@ -197,17 +202,22 @@ def test_passages_agree_with_the_definition_applied_one_threshold_at_a_time(plan
         thresholds = thresholds * scale * 111e3 * 5
         pairs = pairs_of(tracks, np.stack([pairs.first, pairs.second], axis=1), pairs.cluster)
     found = exit_statistics(tracks, pairs, thresholds)
-    expected, last = np.zeros((3, thresholds.size - 1)), []
+    expected, last = np.zeros((8, thresholds.size - 1)), []
     for r in paths(tracks, pairs):
         for n in range(thresholds.size - 1):
-            passage = slow_passage(r, thresholds[n], thresholds[n + 1]) or (0, 0, 0, None)
-            expected[:, n] += passage[:3]
-            last += [] if passage[3] is None else [(n, passage[3])]
+            passage = slow_passage(r, thresholds[n], thresholds[n + 1]) or (*[0] * 8, None)
+            expected[:, n] += passage[:8]
+            last += [] if passage[8] is None else [(n, passage[8])]
     w = found.weight
     assert expected[0].min() > 5, "the world must exercise every threshold"
     assert np.array_equal(w @ found.exits, expected[0])
     assert w @ found.time_at_risk == pytest.approx(expected[1] * tracks.step, rel=1e-12)
     assert w @ found.finished_time == pytest.approx(expected[2] * tracks.step, rel=1e-12)
+    assert np.array_equal(w @ found.at_once, expected[3])
+    assert np.array_equal(found.zero_length, expected[3])
+    over = (found.start_over, found.start_over_square, found.exit_over, found.exit_over_square)
+    for k, sums in enumerate(over):
+        assert w @ sums == pytest.approx(expected[4 + k], rel=1e-9)
     assert np.array_equal(found.passages - found.censored, expected[0])
     once = np.sort(found.loose_log[w[found.loose_row] < 0])
     inside = found.loose_log[w[found.loose_row] > 0]

@@ -110,9 +110,9 @@ def _walk(position, planar, span, levels, work):
     top, start, last, log_start = -1, -1, -1, 0.0  # start < 0: no passage in progress
     blind = True  # the next valid sample opens the record, or follows a gap
     for t in range(span[2]):
-        k = t % chords.size
+        k = t % _CHORDS
         if k == 0:
-            ahead = min(chords.size, span[2] - t)
+            ahead = min(_CHORDS, span[2] - t)
             _squared_chords(flat, span[0] + t, span[1] + t, chords[:ahead])
         if not blind and chords[k] < levels[1, top + 1]:
             last = t
