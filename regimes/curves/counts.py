@@ -4,9 +4,9 @@ from dataclasses import dataclass, fields, replace
 
 import numpy as np
 
+from regimes.arrays import frozen_array
 from regimes.curves.dispersion import nearest_lags
 from regimes.curves.passes import separation_pass, spans_and_rows
-from regimes.curves.record import read_only
 from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
@@ -57,7 +57,7 @@ class SeparationCounts:
         whole = (*_INDICES, "start_count", "outside")
         for field in fields(self):
             kind = np.int64 if field.name in whole else np.float64
-            object.__setattr__(self, field.name, read_only(getattr(self, field.name), kind))
+            object.__setattr__(self, field.name, frozen_array(getattr(self, field.name), kind))
 
     def total(self) -> np.ndarray:
         """(n_time, n_start, n_separation) counts over all rows, each pair once."""

@@ -4,8 +4,10 @@ from dataclasses import dataclass, fields, replace
 
 import numpy as np
 
+from regimes.arrays import frozen_array
+from regimes.curves.covariance import influence_covariance
 from regimes.curves.passes import dispersion_pass, spans_and_rows
-from regimes.curves.record import Curve, influence_covariance, read_only
+from regimes.curves.record import Curve
 from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
@@ -90,7 +92,7 @@ class DispersionStatistics:
     def __post_init__(self) -> None:
         for field in fields(self):
             if field.name != "step":
-                object.__setattr__(self, field.name, read_only(getattr(self, field.name)))
+                object.__setattr__(self, field.name, frozen_array(getattr(self, field.name), np.float64))
 
     def relative_dispersion(self) -> Curve:
         """Mean squared separation, both components together [m2]."""

@@ -4,8 +4,9 @@ from dataclasses import dataclass, fields, replace
 
 import numpy as np
 
+from regimes.arrays import frozen_array
 from regimes.curves.passes import exit_pass, guarded_levels, spans_and_rows
-from regimes.curves.record import Curve, read_only
+from regimes.curves.record import Curve
 from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
@@ -84,7 +85,7 @@ class ExitStatistics:
             if field.name != "step":
                 whole = field.name in (*_TOTALS, "loose_row", "loose_interval")
                 kind = np.int64 if whole else np.float64
-                object.__setattr__(self, field.name, read_only(getattr(self, field.name), kind))
+                object.__setattr__(self, field.name, frozen_array(getattr(self, field.name), kind))
 
     @property
     def separation(self) -> np.ndarray:

@@ -4,14 +4,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from regimes.arrays import frozen_array
+from regimes.curves.covariance import influence_covariance, small_sample
 from regimes.errors import DataError
-
-
-def read_only(values: object, dtype: type = np.float64) -> np.ndarray:
-    """Copy to a contiguous array that nobody can change afterwards."""
-    array = np.array(values, dtype=dtype, order="C", copy=True)
-    array.setflags(write=False)
-    return array
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,7 +51,7 @@ class Curve:
 
     def __post_init__(self) -> None:
         for field in ("axis", "numerator", "denominator", "weight"):
-            object.__setattr__(self, field, read_only(getattr(self, field)))
+            object.__setattr__(self, field, frozen_array(getattr(self, field), np.float64))
         _check(self)
 
     @property
@@ -109,7 +104,7 @@ class Curve:
                 f"{other.weight.size} rows, or rows of other weights; both curves must come from the same "
                 "pairs; compute them from the same pairs"
             )
-        scale = np.sqrt(np.outer(_small_sample(self.n_cluster), _small_sample(other.n_cluster)))
+        scale = np.sqrt(np.outer(small_sample(self.n_cluster), small_sample(other.n_cluster)))
         return scale * (self.influence.T @ (self.weight[:, None] * other.influence))
 
     def leave_one_out(self) -> np.ndarray:
@@ -131,8 +126,7 @@ class Curve:
         self._refuse_shared_pairs("leaving out a cluster", "use leave_one_out() for its values")
         if not 0 <= cluster < self.weight.size:
             raise DataError(
-                f"leaving out a cluster: got {cluster}; clusters are 0 to {self.weight.size - 1}; "
-                "choose one of them"
+                f"leaving out a cluster: got {cluster}; clusters are 0 to {self.weight.size - 1}; choose one of them"
             )
         keep = np.arange(self.weight.size) != cluster
         return replace(
@@ -197,63 +191,6 @@ class Curve:
             f"<tr><td>{x:.4g}</td><td>{v:.4g}</td><td>{e:.2g}</td><td>{n}</td></tr>" for x, v, e, n in columns
         )
         return f"<table>{head}{body}</table>"
-
-
-def influence_covariance(influence: np.ndarray, weight: np.ndarray, n_cluster: np.ndarray) -> np.ndarray:
-    r"""Covariance of a statistic from the influence of each row, for clusters that are independent.
-
-    .. math:: V_{bc} = \sqrt{f_b f_c} \sum_g w_g U_{gb} U_{gc}, \qquad f_b = \frac{C_b}{C_b - 1}
-
-    Where pairs connect clusters the weighted sum is no longer certain to be a covariance. The variance is
-    therefore kept at or above half the sum over the clusters alone, which is its value when pairs that
-    share a cluster are uncorrelated (each such pair stands in two rows); correlations whose matrix has
-    negative eigenvalues are replaced by those of the matrix with these set to zero (Rousseeuw &
-    Molenberghs 1993, Commun. Stat. Theory Methods 22, 965).
-
-    Parameters
-    ----------
-    influence : (n_row, n_bin) float array
-        NaN in bins without data.
-    weight : (n_row,) float array
-        +1 for a cluster, -1 for the pairs shared by two clusters.
-    n_cluster : (n_bin,) int array
-        Number of clusters that contribute to each bin.
-
-    Returns
-    -------
-    (n_bin, n_bin) float array
-        NaN where a bin has fewer than two clusters: one cluster says nothing about its own scatter.
-    """
-    scale = np.sqrt(_small_sample(n_cluster))
-    scaled = influence * scale
-    total = scaled.T @ (weight[:, None] * scaled)
-    if np.all(weight > 0):
-        return total
-    floor = 0.5 * np.sum(scaled[weight > 0] ** 2, axis=0)
-    variance = np.maximum(np.diag(total), floor)
-    return _with_variance(total, variance)
-
-
-def _with_variance(total: np.ndarray, variance: np.ndarray) -> np.ndarray:
-    """Covariance matrix with the given diagonal and the correlations of `total`, made non-negative."""
-    result = np.full(total.shape, np.nan)
-    used = np.isfinite(variance)
-    moving = used & (variance > 0)
-    result[np.ix_(used, used)] = 0.0
-    deviation = np.sqrt(variance[moving])
-    correlation = total[np.ix_(moving, moving)] / np.outer(deviation, deviation)
-    np.fill_diagonal(correlation, 1.0)
-    values, vectors = np.linalg.eigh(correlation)
-    if values.size and values[0] < 0:
-        correlation = (vectors * np.maximum(values, 0.0)) @ vectors.T
-        unit = np.sqrt(np.diag(correlation))
-        correlation /= np.outer(unit, unit)
-    result[np.ix_(moving, moving)] = correlation * np.outer(deviation, deviation)
-    return result
-
-
-def _small_sample(n_cluster: np.ndarray) -> np.ndarray:
-    return np.where(n_cluster > 1, n_cluster / np.maximum(n_cluster - 1, 1), np.nan)
 
 
 def _ratio(numerator: np.ndarray, denominator: np.ndarray) -> np.ndarray:
