@@ -1,0 +1,53 @@
+"""Whether intervals hold: known truth, hundreds of replicates."""
+
+import numpy as np
+import pytest
+from scipy.stats import binom
+
+from regimes.inference.slope import slope_over
+from regimes.pipeline import Options
+from regimes.pipeline.rates import exit_rates
+from tests.worlds import in_parallel, kernel, lossy_pairs
+
+pytestmark = [pytest.mark.slow, pytest.mark.calibration]
+
+REPLICATES = 200
+WORLDS = {"richardson": (4 / 3, 1.0, 30, 5 / 3), "exponent 1.8": (1.8, 0.5, 20, 2.6)}
+
+
+def one(arguments):
+    """Whether the 68 % and 95 % intervals of alpha hold the truth; alpha is "none" counts as a miss of neither."""
+    exponent, rate, days, n_pair, seed, truth = arguments
+    tracks, pairs = lossy_pairs(kernel([exponent], [], rate), n_pair, days, seed)
+    rates = exit_rates(tracks, pairs, Options())
+    found = slope_over(rates.likelihood, rates.resolved.low, rates.resolved.high, np.random.default_rng(seed))
+    if found.kind == "none":
+        return found.reason, np.nan, np.nan, np.nan
+    low95, low68, middle, high68, high95 = np.quantile(found.draws, (0.025, 0.16, 0.5, 0.84, 0.975))
+    return found.kind, low68 <= truth <= high68, low95 <= truth <= high95, middle - truth
+
+
+@pytest.mark.parametrize("n_pair", [20, 30, 60])
+@pytest.mark.parametrize("world", WORLDS)
+def test_slope_intervals_hold_the_truth(world, n_pair, record_property):
+    """Bars: 95 % intervals hold the truth in 91-98 %, 68 % intervals in 61-75 % of replicates.
+
+    Both bands are wider than two binomial standard errors of 200 replicates (1.5 % and 3.3 %).
+    """
+    exponent, rate, days, truth = WORLDS[world]
+    found = in_parallel(one, [(exponent, rate, days, n_pair, seed, truth) for seed in range(REPLICATES)])
+    quoted = [f for f in found if f[1] == f[1]]
+    in68, in95 = np.mean([f[1] for f in quoted]), np.mean([f[2] for f in quoted])
+    bias = np.mean([f[3] for f in quoted])
+    text = f"{world}, {n_pair} pairs: 68 % {in68:.3f}, 95 % {in95:.3f}, bias {bias:+.3f}, quoted {len(quoted)}"
+    record_property("coverage", text)
+    print(text)  # noqa: T201 - the figure is the product of this test
+    assert len(quoted) >= 0.9 * REPLICATES
+    slack = 0.5 / REPLICATES
+    assert 0.91 - slack <= in95 <= 0.98 + slack, text
+    assert 0.61 - slack <= in68 <= 0.75 + slack, text
+
+
+def test_bands_have_power():
+    """A method whose 95 % intervals hold only 88 % would leave the band in nine of ten runs."""
+    assert binom.cdf(0.91 * REPLICATES - 1, REPLICATES, 0.88) > 0.85
