@@ -17,6 +17,8 @@ from regimes.inference.health import Health
 from regimes.inference.models import Model, Space
 from regimes.inference.record import Fit, Inference
 from regimes.pairs import Pairs
+from regimes.report import files
+from regimes.report.figures import FIGURES, draw, svg
 from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.theory.fokker_planck import kernel_at, log_grid, moments, separation_masses
 from regimes.theory.kernel import Kernel
@@ -230,6 +232,18 @@ def demo_analysis(n_pair: int = 60) -> Analysis:
         bands=_bands(fits["exit_rate"], SPACE.lowest, times),
         verdict=_verdict(fits),
     )
+
+
+@cache
+def _drawings() -> dict[str, str]:
+    return {name: svg(draw(name, demo_analysis()), name) for name in FIGURES}
+
+
+def use_drawings_made_before(monkeypatch) -> None:
+    """Make reports quick where it is the folder or the command line that is tested."""
+    monkeypatch.setattr(files, "draw", lambda name, analysis: name)
+    monkeypatch.setattr(files, "svg", lambda figure, name: _drawings()[name])
+    monkeypatch.setattr(files, "pdf", lambda figure, name: b"%PDF")
 
 
 def with_verdict(analysis: Analysis, **changes) -> Analysis:

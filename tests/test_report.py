@@ -1,0 +1,327 @@
+"""The report folder, the page and the verdict document."""
+
+import itertools
+import json
+import re
+from dataclasses import replace
+from html.parser import HTMLParser
+from importlib import resources
+
+import jsonschema
+import numpy as np
+import pytest
+
+from regimes.errors import CaseError
+from regimes.report import check_folder, verdict_document, write_report
+from regimes.report import files as files_module
+from regimes.report.figures import FIGURES, draw, svg
+from regimes.report.page import page
+from regimes.report.verdict_json import plain, verdict_text
+from tests.report_fixture import demo_analysis, use_drawings_made_before, with_verdict
+
+VOID = {"meta", "link", "br", "img", "input", "hr"}  # elements without an end, HTML standard, section 13.1.2
+
+
+class Outline(HTMLParser):
+    """Tags of a page, with a check that every one is closed in turn."""
+
+    def __init__(self, text):
+        super().__init__(convert_charrefs=True)
+        self.stack, self.ids, self.tags, self.words = [], [], [], []
+        self.feed(text)
+        self.close()
+        assert self.stack == []
+
+    def handle_starttag(self, tag, attributes):
+        self.tags.append((tag, dict(attributes)))
+        self.ids += [value for key, value in attributes if key == "id"]
+        if tag not in VOID:
+            self.stack.append(tag)
+
+    def handle_startendtag(self, tag, attributes):
+        self.tags.append((tag, dict(attributes)))
+        self.ids += [value for key, value in attributes if key == "id"]
+
+    def handle_endtag(self, tag):
+        assert self.stack.pop() == tag
+
+    def handle_data(self, data):
+        if "style" not in self.stack:
+            self.words.append(data)
+
+    @property
+    def text(self):
+        return " ".join(" ".join(self.words).split())
+
+
+@pytest.fixture(scope="module")
+def analysis():
+    return demo_analysis()
+
+
+@pytest.fixture(scope="module")
+def report(analysis, tmp_path_factory):
+    return write_report(analysis, tmp_path_factory.mktemp("out") / "bank")
+
+
+@pytest.fixture(scope="module")
+def drawings():
+    return {name: svg(draw(name, demo_analysis()), name) for name in FIGURES}
+
+
+@pytest.fixture
+def light(monkeypatch):
+    use_drawings_made_before(monkeypatch)
+
+
+@pytest.fixture(scope="module")
+def outline(report):
+    return Outline(report["report.html"].read_text(encoding="utf-8"))
+
+
+# The page
+
+
+def test_page_is_well_formed_and_identifiers_are_unique(outline):
+    assert len(outline.ids) == len(set(outline.ids)) > 100
+
+
+def test_page_needs_nothing_from_elsewhere(report):
+    text = report["report.html"].read_text(encoding="utf-8")
+    names = re.findall(r'xmlns(?::\w+)?="[^"]*"', text)  # names of vocabularies, never fetched
+    for name in names:
+        text = text.replace(name, "")
+    assert "//" not in re.sub(r"/\*.*?\*/", "", text)
+    assert "<script" not in text
+    assert "@import" not in text
+    assert "url(" not in text.split("</style>")[0]
+
+
+def test_every_reference_inside_a_drawing_is_defined(report, outline):
+    text = report["report.html"].read_text(encoding="utf-8")
+    used = set(re.findall(r'(?:href="#|url\(#)([^")]+)', text))
+    assert used
+    assert used <= set(outline.ids)
+
+
+def test_links_lead_to_files_of_the_report(report, outline):
+    links = [a["href"] for tag, a in outline.tags if tag == "a"]
+    folder = report["report.html"].parent
+    assert {"verdict.json", "curves.csv", "curves.nc", "posterior.nc", "table.tex"} <= set(links)
+    assert all((folder / link).exists() for link in links)
+
+
+def test_headings_descend_one_level_at_a_time(outline):
+    levels = [int(tag[1]) for tag, _ in outline.tags if re.fullmatch(r"h[1-6]", tag)]
+    assert levels[0] == 1
+    assert levels.count(1) == 1
+    assert all(after - before <= 1 for before, after in itertools.pairwise(levels))
+
+
+def test_every_figure_has_words_for_those_who_cannot_see_it(outline):
+    drawings = [a for tag, a in outline.tags if tag == "svg"]
+    assert len(drawings) == 8
+    for attributes in drawings:
+        assert attributes["role"] == "img"
+        assert attributes["aria-labelledby"] in outline.ids
+    assert sum(tag == "figcaption" for tag, _ in outline.tags) == 8
+
+
+def test_page_says_verdict_reasons_cautions_and_method(analysis, outline):
+    verdict = analysis.verdict
+    for said in (verdict.sentence, *verdict.reasons, verdict.methods, verdict.cautions[0].text):
+        assert said in outline.text
+    assert "Supported" in outline.text
+    assert analysis.provenance.sha256 in outline.text
+    assert "not a basis for search and rescue, spill response or navigation" in outline.text
+    assert outline.text.count("search and rescue") == 1
+
+
+def test_page_gives_transitions_in_km_with_supported_digits(analysis, outline):
+    # 68 % half width is 1.7 km, so one decimal: two significant digits of the uncertainty, common practice, no source
+    scale = next(t for t in analysis.verdict.transitions if t.upper == "richardson").scale
+    half = (scale.hi68 - scale.lo68) / 2e3
+    assert 1.0 <= half < 9.5
+    assert f"{scale.median / 1e3:.1f} {scale.lo68 / 1e3:.1f} to {scale.hi68 / 1e3:.1f}" in outline.text
+
+
+def test_decision_word_stands_once_in_front(analysis, drawings):
+    changed = with_verdict(
+        analysis, decision="undecided", sentence="Undecided: too few pairs.", reasons=("too few pairs", "short records")
+    )
+    text = Outline(page(changed, drawings)).text
+    assert "Undecided Too few pairs. short records" in text
+
+
+def test_page_warns_of_a_fit_that_did_not_converge(analysis, drawings):
+    changed = with_verdict(analysis, healthy=False, health_reason="split R-hat 1.2 is not below 1.01")
+    text = Outline(page(changed, drawings)).text
+    assert "did not converge: split R-hat 1.2 is not below 1.01. Do not quote these numbers." in text
+
+
+def test_words_from_outside_are_harmless(analysis, light, tmp_path):
+    named = replace(analysis, provenance=replace(analysis.provenance, case='<script>alert("x")</script> & {{ 7*7 }}'))
+    files = write_report(named, tmp_path / "r")
+    text = files["report.html"].read_text(encoding="utf-8")
+    assert "<script" not in text
+    assert "&lt;script&gt;" in text
+    assert '<script>alert("x")</script> & {{ 7*7 }}' in Outline(text).text
+    assert json.loads(files["verdict.json"].read_text(encoding="utf-8"))["case"] == named.provenance.case
+
+
+def test_report_of_an_analysis_that_found_little(analysis):
+    bare = with_verdict(analysis, supported=(), transitions=(), slopes=(), cautions=(), decision="none_fits")
+    first = {"exit_rate": analysis.fits["exit_rate"]}
+    found = replace(bare, fits=first)
+    text = Outline(page(found, {name: svg(draw(name, found), name) for name in FIGURES})).text
+    for said in ("None fits", "None was raised", "No slope is quoted", "there is no second opinion"):
+        assert said in text
+
+
+# The folder
+
+
+def test_same_analysis_gives_the_same_bytes(analysis, report, tmp_path):
+    again = write_report(analysis, tmp_path / "bank")
+    assert set(again) == set(report)
+    different = [name for name in report if report[name].read_bytes() != again[name].read_bytes()]
+    assert different == []
+
+
+def test_earlier_report_is_replaced(analysis, light, tmp_path):
+    write_report(analysis, tmp_path / "r")
+    files = write_report(with_verdict(analysis, sentence="Something else."), tmp_path / "r")
+    assert json.loads(files["verdict.json"].read_text(encoding="utf-8"))["sentence"] == "Something else."
+    assert [p.name for p in tmp_path.iterdir()] == ["r"]
+
+
+def test_empty_folder_and_missing_parents_are_fine(analysis, light, tmp_path):
+    (tmp_path / "empty").mkdir()
+    assert write_report(analysis, tmp_path / "empty")["report.html"].exists()
+    assert write_report(analysis, tmp_path / "a" / "b" / "c")["report.html"].exists()
+
+
+def test_other_files_are_never_touched(analysis, light, tmp_path):
+    files = write_report(analysis, tmp_path / "r")
+    (tmp_path / "r" / "thesis.txt").write_text("years of work")
+    before = files["verdict.json"].read_bytes()
+    with pytest.raises(
+        CaseError, match=r"got .* with thesis\.txt in it; must be new, empty, or hold an earlier report"
+    ):
+        write_report(analysis, tmp_path / "r")
+    assert (tmp_path / "r" / "thesis.txt").read_text() == "years of work"
+    assert files["verdict.json"].read_bytes() == before
+
+
+def test_folder_without_a_verdict_is_not_ours(tmp_path):
+    (tmp_path / "verdict.json").write_text("[]")
+    with pytest.raises(CaseError, match=r"no verdict\.json of an earlier report in it"):
+        check_folder(tmp_path)
+
+
+def test_file_in_the_way(light, tmp_path):
+    (tmp_path / "r").write_text("")
+    with pytest.raises(CaseError, match="a file; must be a folder"):
+        check_folder(tmp_path / "r")
+    with pytest.raises(CaseError, match=r"cannot be (read|written)"):
+        write_report(demo_analysis(), tmp_path / "r" / "below")
+
+
+def test_name_too_long_for_the_file_system(tmp_path):
+    with pytest.raises(CaseError, match="cannot be read"):
+        check_folder(tmp_path / ("x" * 5000))
+
+
+def test_failure_on_the_way_leaves_what_was_there(analysis, light, tmp_path, monkeypatch):
+    def broken(*_):
+        raise OSError(28, "No space left on device")
+
+    files = write_report(analysis, tmp_path / "r")
+    before = {name: path.read_bytes() for name, path in files.items()}
+    monkeypatch.setattr(files_module, "write_tex", broken)
+    for name in ("r", "new"):
+        with pytest.raises(CaseError, match=r"cannot be written .No space left on device.; must be a place"):
+            write_report(analysis, tmp_path / name)
+    assert [p.name for p in tmp_path.iterdir()] == ["r"]
+    assert {name: path.read_bytes() for name, path in files.items()} == before
+
+
+def test_failure_of_the_last_move_brings_the_earlier_report_back(analysis, light, tmp_path, monkeypatch):
+    files = write_report(analysis, tmp_path / "r")
+    move = files_module.os.replace
+
+    def fails_for_new(source, target):
+        if source.name == "new":
+            raise OSError(16, "Device or resource busy")
+        move(source, target)
+
+    monkeypatch.setattr(files_module.os, "replace", fails_for_new)
+    with pytest.raises(CaseError, match="Device or resource busy"):
+        write_report(analysis, tmp_path / "r")
+    assert files["report.html"].exists()
+
+
+# The document
+
+
+@pytest.fixture(scope="module")
+def schema():
+    text = resources.files("regimes.report").joinpath("verdict.schema.json").read_text(encoding="utf-8")
+    found = json.loads(text)
+    jsonschema.Draft202012Validator.check_schema(found)
+    return jsonschema.Draft202012Validator(found)
+
+
+def test_document_follows_its_schema(analysis, report, schema):
+    text = report["verdict.json"].read_text(encoding="utf-8")
+
+    def refuse(word):
+        raise ValueError(f"{word} is no JSON")
+
+    written = json.loads(text, parse_constant=refuse)
+    schema.validate(written)
+    assert written == verdict_document(analysis)
+
+
+@pytest.mark.parametrize(
+    ("path", "value"),
+    [(("decision",), "maybe"), (("sequences", 0, "probability"), 1.5), (("resolved_km",), [1.0]), (("extra",), 1)],
+)
+def test_schema_refuses_what_it_should(analysis, schema, path, value):
+    document = json.loads(verdict_text(analysis))
+    inner = document
+    for key in path[:-1]:
+        inner = inner[key]
+    inner[path[-1]] = value
+    assert not schema.is_valid(document)
+
+
+def test_document_numbers_are_those_of_the_verdict(analysis):
+    document, verdict = verdict_document(analysis), analysis.verdict
+    assert document["resolved_km"] == [1.2, 150.0]
+    assert document["supported"][0]["low_km"] == pytest.approx(1.2, rel=1e-12)  # round-off
+    transition = document["transitions"][0]
+    assert (transition["from"], transition["to"]) == ("richardson", "diffusive")
+    assert transition["median_km"] == pytest.approx(
+        verdict.transitions[0].scale.median / 1000.0, rel=1e-12
+    )  # round-off
+    assert sum(s["probability"] for s in document["sequences"]) == pytest.approx(1.0, rel=1e-12)  # round-off
+    by = document["by_separation"]
+    assert len(by["edges_km"]) == len(by["separation_km"]) + 1
+    assert np.allclose(sum(np.array(p) for p in by["probability"].values()), 1.0, rtol=1e-12)  # round-off
+    none = [s for s in document["slopes"] if s["kind"] == "none"]
+    assert none
+    assert all(s["median"] is None for s in none)
+
+
+def test_infinite_numbers_become_null(analysis):
+    unhealthy = with_verdict(analysis, rhat_max=np.inf, fit_p_value=np.nan, healthy=False)
+    document = verdict_document(unhealthy)
+    assert document["health"]["rhat_max"] is None
+    assert document["fit_p_value"] is None
+    assert document["health"]["ok"] is False
+
+
+def test_document_is_made_of_plain_types_only():
+    with pytest.raises(TypeError, match="got a set; must be made of plain types"):
+        plain({"a": {1}})
