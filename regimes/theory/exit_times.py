@@ -55,7 +55,7 @@ def mean_exit_times(thresholds, exponents, breaks, reference):
                 high = min(top, np.log(breaks[piece] / reference))
             q = 2.0 - exponents[piece]
             width = high - low
-            grown = width if abs(q * width) < 1e-9 else np.expm1(q * width) / q
+            grown = width if abs(q * width) < 1e-14 else np.expm1(q * width) / q
             out[j] += 0.5 * np.exp(q * low - (log_c[piece] - shift)) * grown
             low = high
     return out

@@ -4,15 +4,14 @@ import numpy as np
 from numba import njit
 
 
-
 def log_grid(smallest, largest, cells):
-    """Edges of a geometric grid in ln r: ``cells`` cells between two separations [m]."""
+    """Edges (cells + 1,) of an even grid in ln r, with ``cells`` cells between two separations [m]."""
     return np.linspace(np.log(smallest), np.log(largest), int(cells) + 1)
 
 
 @njit(cache=True)
 def kernel_at(log_r, exponents, breaks, reference, rate):
-    """ln K of a piecewise power law at increasing ln r; K(reference) = rate reference^2."""
+    """ln K [ln m2/s] of a piecewise power law at increasing ln r, any number; K(reference) = rate reference^2."""
     n_piece = exponents.size
     const = np.zeros(n_piece)
     home = 0
@@ -87,7 +86,8 @@ def separation_masses(log_edges, kernel_log, starts, times, steps):
     times : (n_time,) float array [s]
         Increasing output times, > 0.
     steps : int
-        Time steps between outputs.
+        Time steps between outputs; those to the first one grow from a start that the grid hardly resolves, twelve
+        or `steps` of them, whichever is more.
 
     Returns
     -------
@@ -117,10 +117,11 @@ def separation_masses(log_edges, kernel_log, starts, times, steps):
         state[i, s] = 1.0 - share
         state[i + 1, s] = share
     out = np.empty((times.size, n, starts.size))
-    dt = times[0] / 2.0**6
-    _advance(state, down, up, dt, 2)
-    for k in range(1, 6):
-        _advance(state, down, up, dt * 2.0 ** (k - 1), 2)
+    per_stage = max(2, -(-steps // 6))  # six stages, each as long as all before it together
+    dt = times[0] / (32.0 * per_stage)
+    _advance(state, down, up, dt, per_stage)
+    for k in range(5):
+        _advance(state, down, up, dt * 2.0**k, per_stage)
     out[0] = state
     for j in range(1, times.size):
         _advance(state, down, up, (times[j] - times[j - 1]) / steps, steps)
@@ -139,7 +140,7 @@ def moments(log_edges, masses):
     Returns
     -------
     mean_log, second, fourth : (n_time, n_start) float arrays [ln m], [m2], [m4]
-        Uniform density per area inside a cell.
+        Uniform density per area inside a cell for the moments of r, its middle for ln r.
     """
     low, high = np.exp(log_edges[:-1]), np.exp(log_edges[1:])
     second = (high**2 + low**2) / 2.0

@@ -29,7 +29,7 @@ class Kernel:
     Raises
     ------
     FitError
-        If the shapes do not agree, breaks do not increase or a value is not positive.
+        If the shapes do not agree, breaks do not increase, a value is not finite or one but an exponent not positive.
 
     Notes
     -----
@@ -56,11 +56,13 @@ class Kernel:
             and np.all(self.breaks > 0)
             and self.rate > 0
             and self.reference > 0
+            and np.all(np.isfinite([*self.exponents, *self.breaks, self.rate, self.reference]))
         )
         if not ok:
             raise FitError(
-                f"kernel: got {self.exponents.size} exponents, breaks {self.breaks.tolist()}, rate {self.rate}, "
-                f"reference {self.reference}; need one exponent more than breaks, breaks increasing, all positive"
+                f"kernel: got {self.exponents.size} exponents {self.exponents.tolist()}, breaks "
+                f"{self.breaks.tolist()}, rate {self.rate}, reference {self.reference}; need one exponent more than "
+                "breaks, breaks increasing, all finite, all but exponents positive; correct the numbers"
             )
 
     def __call__(self, separation):

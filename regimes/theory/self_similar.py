@@ -45,9 +45,7 @@ def kurtosis(exponent, dimension=2):
     .. math:: \Gamma((4+d)/q) \Gamma(d/q) / \Gamma((2+d)/q)^2
     """
     q = 2.0 - exponent
-    return np.exp(
-        gammaln((4 + dimension) / q) + gammaln(dimension / q) - 2.0 * gammaln((2 + dimension) / q)
-    )
+    return np.exp(gammaln((4 + dimension) / q) + gammaln(dimension / q) - 2.0 * gammaln((2 + dimension) / q))
 
 
 def cumulative(separation, time, coefficient, exponent, dimension=2):
