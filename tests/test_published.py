@@ -155,7 +155,7 @@ def test_separation_at_which_a_cubic_growth_shows(slope, rms):
 
 
 def test_exponential_growth():
-    """K = r^2 / T: D2 = r0^2 exp(8 t/T), mean r exp(3 t/T), <r4> exp(24 t/T). Lundgren (1981) J. Fluid Mech. 111, 27."""
+    """D2 = r0^2 exp(8 t/T), mean r exp(3 t/T), <r4> exp(24 t/T): Lundgren (1981) J. Fluid Mech. 111, 27."""
     for order, growth in ((2, 8.0), (1, 3.0), (4, 24.0)):
         assert exponential_moment(order, 0.7, 0.5, 1.3) == pytest.approx(1.3**order * np.exp(growth * 0.35), rel=1e-12)
 

@@ -54,8 +54,9 @@ def test_intermediate_slopes_are_not_called_named_regimes(slope, rate, n_pair):
     found = in_parallel(campaign, [([exponent, 0.0], [100.0], rate, 120, n_pair, seed) for seed in range(100)])
     text = (
         f"alpha {slope}, then diffusive, {n_pair} pairs: supported where the free interval misses the truth "
-        f"{share(found, 'outside'):.2f}; any regime but diffusive supported {share(found, 'any'):.2f}, under the first "
-        f"half of the rule alone {share(found, 'first'):.2f}; free exponent preferred {share(found, 'challenged'):.2f}; "
+        f"{share(found, 'outside'):.2f}; any regime but diffusive supported {share(found, 'any'):.2f}, under the "
+        f"first half of the rule alone {share(found, 'first'):.2f}; free exponent preferred "
+        f"{share(found, 'challenged'):.2f}; "
         f"free interval covers {share(found, 'covered'):.3f}"
     )
     print(text)  # noqa: T201 - the figure is the product of this test

@@ -1,7 +1,7 @@
 """The models that compete: sequences of named regimes, and kernels with a free exponent."""
 
 from dataclasses import dataclass
-from itertools import product
+from itertools import pairwise, product
 from math import factorial
 
 import numpy as np
@@ -164,7 +164,7 @@ def named_models(regimes, most_transitions: int) -> tuple[Model, ...]:
     found = []
     for size in range(1, most_transitions + 2):
         for pieces in product(regimes, repeat=size):
-            if all(a != b for a, b in zip(pieces, pieces[1:], strict=False)):
+            if all(a != b for a, b in pairwise(pieces)):
                 found.append(Model(pieces))
     return tuple(found)
 

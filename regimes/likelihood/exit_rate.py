@@ -10,16 +10,16 @@ from regimes.theory.exit_times import mean_exit_times
 
 
 @njit(cache=True, nogil=True)
-def log_likelihood_batch(thresholds, exits, risk, dispersion, exponents, breaks, log_rate, reference):
-    """Quasi-log-likelihood of many kernels: rows of `exponents` and `breaks`, one `log_rate` each."""
+def log_likelihood_batch(thresholds, sums, exponents, breaks, log_rate, reference):
+    """Log-likelihood of many kernels (rows of `exponents` and `breaks`, one `log_rate` each) for (2, n) E and S."""
     out = np.empty(log_rate.size)
     for i in range(log_rate.size):
         mean = mean_exit_times(thresholds, exponents[i], breaks[i], reference)
         total = 0.0
         for n in range(mean.size):
             log_mu = np.log(mean[n]) - log_rate[i]
-            total -= exits[n] * log_mu + risk[n] * np.exp(-log_mu)
-        out[i] = total / dispersion
+            total -= sums[0, n] * log_mu + sums[1, n] * np.exp(-log_mu)
+        out[i] = total
     return out
 
 
@@ -55,9 +55,7 @@ class ExitRateLikelihood:
         theta = np.atleast_2d(np.asarray(theta, float))
         return log_likelihood_batch(
             self.thresholds,
-            self.exits,
-            self.risk,
-            self.dispersion,
+            np.stack([self.exits, self.risk]) / self.dispersion,
             np.ascontiguousarray(model.exponents(theta)),
             np.ascontiguousarray(model.breaks(theta)),
             np.ascontiguousarray(theta[:, 0]),

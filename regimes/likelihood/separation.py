@@ -34,19 +34,24 @@ def grid_edges(lowest: float, highest: float) -> np.ndarray:
 
 
 @njit(cache=True)
-def log_probability(log_edges, exponents, breaks, reference, log_rate, starts, times, steps):
-    """ln probability of each cell, (n_time, n_cell, n_start), under one kernel."""
+def log_probability(grid, exponents, breaks, reference, log_rate):
+    """ln probability of each cell, (n_time, n_cell, n_start), under one kernel; `grid` as in `composite_batch`."""
+    log_edges, starts, times = grid
     kernel_log = kernel_at(log_edges, exponents, breaks, reference, np.exp(log_rate))
-    return np.log(separation_masses(log_edges, kernel_log, starts, times, steps))
+    return np.log(separation_masses(log_edges, kernel_log, starts, times, STEPS))
 
 
 @njit(cache=True, nogil=True)
-def composite_batch(log_edges, counts, exponents, breaks, reference, log_rate, starts, times, steps):
-    """Composite log-likelihood of many kernels; `counts` is (n_time, n_cell, n_start)."""
+def composite_batch(grid, counts, exponents, breaks, reference, log_rate):
+    """Composite log-likelihood of many kernels.
+
+    `grid` holds the cell edges in ln r, the ln of the starts and the times; `counts` is (n_time, n_cell, n_start).
+    """
+    log_edges, starts, times = grid
     out = np.empty(log_rate.size)
     for i in range(log_rate.size):
         kernel_log = kernel_at(log_edges, exponents[i], breaks[i], reference, np.exp(log_rate[i]))
-        mass = separation_masses(log_edges, kernel_log, starts, times, steps)
+        mass = separation_masses(log_edges, kernel_log, starts, times, STEPS)
         total = 0.0
         for t in range(times.size):
             for c in range(log_edges.size - 1):
@@ -86,43 +91,37 @@ class SeparationLikelihood:
     def _arguments(self):
         used = np.flatnonzero(self.counts.start_count > 0)
         total = np.ascontiguousarray(np.moveaxis(self.counts.total()[:, used, :], 1, 2))
-        starts = np.ascontiguousarray(self.counts.start_log_mean[used])
+        starts = np.array(self.counts.start_log_mean[used])
         inner = np.log(self.counts.separation_edges[1:-1])
         log_edges = np.concatenate(([inner[0] - CELL], inner, [inner[-1] + CELL]))
-        return log_edges, total, starts, np.ascontiguousarray(self.counts.times)
+        return (log_edges, starts, np.array(self.counts.times)), total
 
     def evaluator(self, model, space):
         """Function from parameters (m, size) to tempered log L (m,), prior not included."""
-        log_edges, total, starts, times = self._arguments()
+        grid, total = self._arguments()
 
         def evaluate(theta):
             theta = np.atleast_2d(np.asarray(theta, float))
             return self.tempering * composite_batch(
-                log_edges,
+                grid,
                 total,
                 np.ascontiguousarray(model.exponents(theta)),
                 np.ascontiguousarray(model.breaks(theta)),
                 space.reference,
                 np.ascontiguousarray(theta[:, 0]),
-                starts,
-                times,
-                STEPS,
             )
 
         return evaluate
 
     def row_values(self, model, theta, space) -> np.ndarray:
         """(n_row,) untempered composite log-likelihood of each row (cluster, or couple of clusters)."""
-        log_edges, _, starts, times = self._arguments()
+        grid, _ = self._arguments()
         log_p = log_probability(
-            log_edges,
+            grid,
             np.ascontiguousarray(model.exponents(theta)),
             np.ascontiguousarray(model.breaks(theta)),
             space.reference,
             float(theta[0]),
-            starts,
-            times,
-            STEPS,
         )
         used = np.cumsum(self.counts.start_count > 0) - 1
         c = self.counts

@@ -116,8 +116,8 @@ def _dispersion_passage(analysis: Analysis) -> str:
 def _dispersion(analysis: Analysis) -> str:
     return (
         f"Relative dispersion since the start of each pair ({_who(analysis)}), total and east and north "
-        "parts (x and y on a plane), with 95 % cluster intervals of the logarithm. Short lines: late power laws of three "
-        "regimes, reached only long after the start; the exponential regime has none. " + FEW
+        "parts (x and y on a plane), with 95 % cluster intervals of the logarithm. Short lines: late power "
+        "laws of three regimes, reached only long after the start; the exponential regime has none. " + FEW
     )
 
 

@@ -96,10 +96,11 @@ def _headline(analysis: Analysis) -> tuple[str, list[str]]:
 
 def _facts(analysis: Analysis) -> list[tuple[str, str, str]]:
     verdict, origin = analysis.verdict, analysis.provenance
+    together = "released together" if origin.kind == "launched" else "near one another at the start"
     limits = "below: {}; above: {}".format(*verdict.limited_by)
     return [
         ("pairs", count(origin.n_pairs), origin.kind if origin.kind != "both" else "launched and chance"),
-        ("clusters", count(origin.n_clusters), "independent of one another"),
+        ("clusters", count(origin.n_clusters), together),
         ("resolved separations", f"{span(*verdict.resolved)} km", limits),
         ("predictive check", f"p = {probability(verdict.fit_p_value)}", "of the exit rates"),
         ("convergence", "good" if verdict.healthy else "not good", "of the sampling"),

@@ -104,7 +104,7 @@ def decide(evidence: Evidence) -> Decision:
 
 
 def contradictions(found, second: BySeparation | None) -> list[str]:
-    """Regimes that the exit rates support and the separation distribution rules out over half of their range or more."""
+    """Regimes that the exit rates support and the separation distribution rules out over half of their range."""
     if second is None:
         return []
     said = []
@@ -128,8 +128,7 @@ def _why_nothing(leading: BySeparation, mask) -> list[str]:
     p = leading.probability[best][at]
     low, high = leading.exponent_lo95[at], leading.exponent_hi95[at]
     if any(np.any(m) for m in mask.values()):
-        spans = [s for s in stretches(mask, leading.edges)]
-        widest = max(spans, key=lambda s: s.span)
+        widest = max(stretches(mask, leading.edges), key=lambda s: s.span)
         return [
             f"{widest.regime} meets the rule only from {km(widest.low)} to {km(widest.high)} km, less than a factor "
             f"{SPAN:g} of separation"

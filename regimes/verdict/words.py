@@ -1,5 +1,7 @@
 """The sentences of the verdict."""
 
+from itertools import pairwise
+
 from regimes.inference.record import Inference
 from regimes.units import DAY, HOUR
 from regimes.verdict.decide import Decision
@@ -48,7 +50,7 @@ def _moves(decision: Decision, transitions) -> str:
     """Transitions between neighbouring supported regimes."""
     said = []
     held = decision.supported
-    for one, two in zip(held, held[1:], strict=False):
+    for one, two in pairwise(held):
         match = next((t for t in transitions if (t.lower, t.upper) == (one.regime, two.regime)), None)
         if match is not None and match.probability >= 0.5:
             scale = match.scale

@@ -37,10 +37,11 @@ def plot_regimes(analysis: Analysis, ax: Axes) -> Axes:
     """
     by = analysis.verdict.by_separation
     _separation_axis(ax, by)
+    taken: list[tuple[float, float]] = []
     for name, p in by.probability.items():
         ax.stairs(p, by.edges / KM, baseline=None, color=COLOUR[name], ls=LINE[name], lw=2.0, zorder=3)
         ax.stairs(p, by.edges / KM, fill=True, color=COLOUR[name], alpha=0.10, lw=0)
-        _name_at_peak(ax, by, name, p)
+        _name_at_peak(ax, by, name, p, taken)
     ax.axhline(PROBABLE, color=GREY, lw=0.8, ls=(0, (2, 2)))
     for stretch in analysis.verdict.supported:
         ends = np.array([stretch.low, stretch.high]) / KM
@@ -71,14 +72,21 @@ def _separation_axis(ax: Axes, by: BySeparation) -> None:
     ax.set_xlabel("separation (km)")
 
 
-def _name_at_peak(ax: Axes, by: BySeparation, name: str, p: np.ndarray) -> None:
-    """Name a curve in the middle of its highest part."""
+def _name_at_peak(ax: Axes, by: BySeparation, name: str, p: np.ndarray, taken: list[tuple[float, float]]) -> None:
+    """Name a curve where it is highest and no other name (place along the axis, height) stands near."""
     if np.max(p) < SHOWN:
         return
-    high = np.flatnonzero(p >= 0.97 * np.max(p))
-    x = np.exp(np.mean(np.log(by.separation[high]))) / KM
+    low, high = np.log(ax.get_xlim())
+    place = (np.log(by.separation / KM) - low) / (high - low)
+    crowded = np.zeros(p.size, dtype=bool)
+    for along, height in taken:
+        crowded |= (np.abs(place - along) < 0.25) & (np.abs(p - height) < 0.1)
+    value = np.where(crowded, p - 1.0, p)
+    best = np.flatnonzero(value >= np.max(value) - 0.03 * np.max(p))
+    best = best[np.argsort(np.abs(place[best] - np.mean(place[best])))[0]]
+    taken.append((place[best], p[best]))
     box = {"boxstyle": "round,pad=0.15", "fc": "white", "ec": COLOUR[name], "lw": 0.8, "alpha": 0.9}
-    _name(ax, x, np.max(p) - 0.03, DISPLAY[name], va="top", bbox=box)
+    _name(ax, by.separation[best] / KM, p[best] - 0.03, DISPLAY[name], va="top", bbox=box)
 
 
 def _name(ax: Axes, x: float, y: float, words: str, **looks) -> None:

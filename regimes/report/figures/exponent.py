@@ -14,8 +14,9 @@ SLOPE_WORDS = {
     "ballistic": "ballistic $r^{-1}$",
     "diffusive": "diffusive $r^{-2}$",
 }
-NUDGE = {"richardson": 2, "ballistic": -2}  # points by which the names of neighbouring lines are moved apart
-BELOW_LEGEND, ABOVE_FAN = 0.66, 0.44  # heights kept free of data, on the right and on the left, as shares of the axes
+REACH = 5.0
+ABOVE_FAN = 0.45  # height kept free of data on the left, as a share of the axes
+LINE_POINTS = 12.0  # between the names of the guide lines
 FAN_REACH = 0.27  # length of the guide lines as a share of the width of the axes
 
 
@@ -49,7 +50,8 @@ def plot_exponent(analysis: Analysis, ax: Axes) -> Axes:
     log_axis(ax.yaxis)
     ax.set_xlabel("separation (km)")
     ax.set_ylabel("exponent (1/day)")
-    ax.legend(loc="upper right", handlelength=1.6, borderaxespad=0.2, labelspacing=0.3)
+    place = {"loc": "lower left", "bbox_to_anchor": (0.0, 1.0), "borderaxespad": 0.0}
+    ax.legend(ncol=2, handlelength=1.6, labelspacing=0.3, columnspacing=1.5, **place)
     return ax
 
 
@@ -83,24 +85,25 @@ def _points(ax: Axes, rates: RateTable) -> None:
 
 
 def _limits(ax: Axes, analysis: Analysis) -> None:
-    """Axes wide enough for points and bands, with room for the legend and, below, for the guide lines."""
+    """Axes wide enough for points and bands, with room for the guide lines below the left part.
+
+    Ends of bars and bands beyond a factor `REACH` of their middle do not widen the axes.
+    """
     rates, bands = analysis.rates, analysis.bands
-    rows = [rates.rate, rates.high95, rates.textbook]
-    rows += [np.where(rates.resolved, rates.low95, np.nan)]
-    separation = np.concatenate([np.tile(rates.thresholds[:-1], len(rows)), np.tile(bands.separation, 4)])
-    value = np.concatenate([*rows, bands.rate_named[0], bands.rate_named[4], bands.rate_free[0], bands.rate_free[4]])
-    show = np.isfinite(value) & (value > 0)
-    x, y = np.log10(separation[show] / KM), np.log10(value[show] * DAY)
+    rows = [(rates.thresholds[:-1], rates.rate, rates.low95, rates.high95)]
+    rows += [(bands.separation, band[2], band[0], band[4]) for band in (bands.rate_named, bands.rate_free)]
+    rows += [(rates.thresholds[:-1], rates.textbook, rates.textbook, rates.textbook)]
+    separation, middle, low, high = np.concatenate([np.stack(row) for row in rows], axis=1)
+    show = np.isfinite(middle) & (middle > 0)
+    x, y = np.log10(separation[show] / KM), np.log10(middle[show] * DAY)
+    down, up = (np.log10(np.clip(end[show] / middle[show], 1.0 / REACH, REACH)) for end in (low, high))
     x_low, x_high = x.min() - 0.1, x.max() + 0.1
-    left, right = y[x < 0.5 * (x_low + x_high)], y[x > x_low + 0.45 * (x_high - x_low)]
-    low, high = y.min() - 0.1, y.max() + 0.1
-    for _ in range(20):
-        if right.size:
-            high = max(high, low + (right.max() - low) / BELOW_LEGEND)
-        if left.size:
-            low = min(low, (left.min() - ABOVE_FAN * high) / (1.0 - ABOVE_FAN))
+    bottom, top = np.min(y + np.nan_to_num(down)) - 0.1, np.max(y + np.nan_to_num(up)) + 0.1
+    left = (y + np.nan_to_num(down))[x < 0.5 * (x_low + x_high)]
+    if left.size:
+        bottom = min(bottom, (left.min() - ABOVE_FAN * top) / (1.0 - ABOVE_FAN))
     ax.set_xlim(10.0**x_low, 10.0**x_high)
-    ax.set_ylim(10.0**low, 10.0**high)
+    ax.set_ylim(10.0**bottom, 10.0**top)
 
 
 def _fan(ax: Axes) -> None:
@@ -108,12 +111,15 @@ def _fan(ax: Axes) -> None:
     (x_low, x_high), (y_low, y_high) = np.log10(ax.get_xlim()), np.log10(ax.get_ylim())
     aspect = ax.bbox.height / ax.bbox.width
     start = np.array([x_low + 0.05 * (x_high - x_low), y_low + 0.38 * (y_high - y_low)])
+    point = (y_high - y_low) / (72.0 * ax.bbox.height / ax.get_figure().dpi)  # of a letter, in decades
+    free = np.inf
     for name, slope in SLOPES.items():
         run = np.array([1.0 / (x_high - x_low), slope * aspect / (y_high - y_low)])
-        length = FAN_REACH / np.hypot(*run)
-        end = start + length * np.array([1.0, slope])
+        end = start + FAN_REACH / np.hypot(*run) * np.array([1.0, slope])
         ax.plot(*10.0 ** np.stack([start, end], axis=1), color=COLOUR[name], ls=LINE[name], lw=1.6, zorder=1)
+        height = min(end[1], free)
+        free = height - LINE_POINTS * point
         ax.annotate(
-            SLOPE_WORDS[name], 10.0**end, xytext=(4, NUDGE.get(name, 0)), textcoords="offset points", va="center",
-            fontsize=9.5, color=INK,
+            SLOPE_WORDS[name], 10.0**end, xytext=(4, (height - end[1]) / point), textcoords="offset points",
+            va="center", fontsize=9.5, color=INK,
         )  # fmt: skip
