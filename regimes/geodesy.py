@@ -16,8 +16,9 @@ POLAR_RADIUS = EQUATORIAL_RADIUS * (1.0 - FLATTENING)  # m
 ECCENTRICITY_SQUARED = FLATTENING * (2.0 - FLATTENING)
 EARTH_RADIUS = 6371008.8  # m, mean radius (2 a + b) / 3
 
-_A2 = EQUATORIAL_RADIUS**2
-_B2 = POLAR_RADIUS**2
+_PER_A2 = 1.0 / EQUATORIAL_RADIUS**2
+_PER_B2 = 1.0 / POLAR_RADIUS**2
+_PER_SQUASH = EQUATORIAL_RADIUS**2 / POLAR_RADIUS**2  # 1 / (1 - e^2)
 _GEOCENTRIC = "+proj=cart +ellps=WGS84"
 
 
@@ -110,40 +111,37 @@ def separation_components(ax, ay, az, bx, by, bz, planar):
     dx, dy, dz = bx - ax, by - ay, bz - az
     if planar:
         return math.sqrt(dx * dx + dy * dy), dx, dy
-    mx, my, mz = 0.5 * (ax + bx), 0.5 * (ay + by), 0.5 * (az + bz)
-    nx, ny, nz = mx / _A2, my / _A2, mz / _B2
-    size = math.sqrt(nx * nx + ny * ny + nz * nz)
-    axial = math.sqrt(mx * mx + my * my)
-    if size > 0.0:
-        nx, ny, nz = nx / size, ny / size, nz / size
-    if axial > 0.0:
-        ex, ey = -my / axial, mx / axial
-    else:
-        ex, ey = 0.0, 1.0
+    mx, my, mz = ax + bx, ay + by, az + bz  # twice the midpoint; few divisions, since this is called for every sample
+    nx, ny, nz = mx * _PER_A2, my * _PER_A2, mz * _PER_B2
+    axial2 = mx * mx + my * my
+    size2 = nx * nx + ny * ny + nz * nz
+    per_size = 1.0 / math.sqrt(size2) if size2 > 0.0 else 0.0
+    per_axial = 1.0 / math.sqrt(axial2) if axial2 > 0.0 else 0.0
+    ex, ey = (-my * per_axial, mx * per_axial) if axial2 > 0.0 else (0.0, 1.0)
+    sine, cosine = nz * per_size, axial2 * per_axial * _PER_A2 * per_size  # of the latitude
     east = dx * ex + dy * ey
-    north = -dx * nz * ey + dy * nz * ex + dz * (nx * ey - ny * ex)
+    north = sine * (dy * ex - dx * ey) + cosine * dz
     level2 = east * east + north * north
-    chord = math.sqrt(dx * dx + dy * dy + dz * dz)
+    chord2 = dx * dx + dy * dy + dz * dz
     if level2 == 0.0:  # one and the same point, or the two ends of a diameter
-        return _arc(chord, EARTH_RADIUS), _arc(chord, EARTH_RADIUS), 0.0
-    w2 = 1.0 - ECCENTRICITY_SQUARED * nz * nz
-    transverse = EQUATORIAL_RADIUS / math.sqrt(w2)
-    meridional = transverse * (1.0 - ECCENTRICITY_SQUARED) / w2
-    radius = level2 / (north * north / meridional + east * east / transverse)
-    r = _arc(chord, radius)
-    scale = r / math.sqrt(level2)
-    return r, east * scale, north * scale
+        arc = math.sqrt(chord2) * _stretch(chord2 / (4.0 * EARTH_RADIUS**2))
+        return arc, arc, 0.0
+    per_level2 = 1.0 / level2
+    w2 = 1.0 - ECCENTRICITY_SQUARED * sine * sine
+    bent = (north * north * w2 * _PER_SQUASH + east * east) * per_level2
+    curvature2 = w2 * bent * bent * _PER_A2
+    stretch = _stretch(0.25 * chord2 * curvature2)
+    scale = math.sqrt(chord2 * per_level2) * stretch
+    return math.sqrt(chord2) * stretch, east * scale, north * scale
 
 
 @njit(cache=True, error_model="numpy")
-def _arc(chord, radius):
-    """Length of the arc over a chord: series below 0.3 of the diameter (error 2e-7), arcsine beyond."""
-    u = chord / (2.0 * radius)
-    if u < 0.3:
-        u2 = u * u
-        series = 1.0 + u2 * (1.0 / 6.0 + u2 * (3.0 / 40.0 + u2 * (5.0 / 112.0 + u2 * 35.0 / 1152.0)))
-        return chord * series
-    return 2.0 * radius * math.asin(min(u, 1.0))
+def _stretch(u2):
+    """Arc over chord for u = chord / (2 R): series below u = 0.3 (error 2e-7), arcsine beyond."""
+    if u2 < 0.09:
+        return 1.0 + u2 * (1.0 / 6.0 + u2 * (3.0 / 40.0 + u2 * (5.0 / 112.0 + u2 * 35.0 / 1152.0)))
+    u = math.sqrt(min(u2, 1.0))
+    return math.asin(u) / math.sqrt(u2)
 
 
 @njit(cache=True, error_model="numpy")

@@ -170,6 +170,7 @@ def sample_candidates(
     for g, group in enumerate(groups):
         top = max(c.log_evidence for c in group)
         chosen += [(g, i) for i, c in enumerate(group) if c.log_evidence > top + NEGLIGIBLE - _MARGIN]
+    chosen.sort(key=lambda place: -groups[place[0]][place[1]].posterior.model.size)  # the longest first
     fits: dict[tuple[int, int], Fit] = {}
     with ThreadPoolExecutor(max(jobs, 1)) as pool:
         work = {pool.submit(_sample_one, curve, groups[g][i], seed + 1000 * g + i): (g, i) for g, i in chosen}
