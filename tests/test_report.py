@@ -12,6 +12,7 @@ import numpy as np
 import pytest
 
 from regimes.errors import CaseError
+from regimes.inference.health import Health
 from regimes.report import check_folder, verdict_document, write_report
 from regimes.report import files as files_module
 from regimes.report.figures import FIGURES, draw, svg
@@ -157,6 +158,22 @@ def test_page_warns_of_a_fit_that_did_not_converge(analysis, drawings):
     changed = with_verdict(analysis, healthy=False, health_reason="split R-hat 1.2 is not below 1.01")
     text = Outline(page(changed, drawings)).text
     assert "did not converge: split R-hat 1.2 is not below 1.01. Do not quote these numbers." in text
+
+
+def test_models_that_did_not_converge_are_always_shown(analysis):
+    from regimes.report.convergence import convergence_rows, not_shown
+
+    inference = analysis.fits["exit_rate"]
+    sick = replace(inference.named[3], health=Health(1.2, 30.0, 4.0), log_evidence=-900.0)
+    named = (*inference.named[:3], sick, *inference.named[4:])
+    changed = replace(analysis, fits={"exit_rate": replace(inference, named=named)})
+    rows = convergence_rows(changed)
+    # seven models of the fixture were sampled; six lead and the seventh is the sick one
+    assert (len(rows), not_shown(changed)) == (7, 0)
+    assert (len(convergence_rows(analysis)), not_shown(analysis)) == (12, 2)
+    assert rows[-1][1] == "exponential \u2192 diffusive"
+    assert rows[-1][-1].startswith("split R-hat 1.200 is not below 1.01; effective sample size 30")
+    assert all(row[-1] == "good" for row in rows[:-1])
 
 
 def test_words_from_outside_are_harmless(analysis, light, tmp_path):

@@ -4,11 +4,12 @@ import numpy as np
 
 from regimes.analysis import Analysis
 from regimes.inference.record import Fit, Inference
-from regimes.report.digits import fixed, probability, rounded, spread
+from regimes.report.digits import between, fixed, probability, rounded, spread
 from regimes.report.words import CURVES, DISPLAY, sequence
 from regimes.units import KM
 from regimes.verdict.digits import km
 
+MODELS_SHOWN = 6  # of each curve in the table of convergence
 COMPARED = 7  # separations at which the curves are compared
 
 
@@ -25,7 +26,7 @@ def _opinion(inference: Inference) -> dict[str, object]:
     for transition in inference.transitions()[:3]:
         low, middle, high = np.percentile(transition.draws / KM, (16, 50, 84))
         sigma = spread(low, high)
-        scale = f"{rounded(middle, sigma)} \u00b1 {rounded(sigma, sigma)} km"
+        scale = f"{rounded(middle, sigma)} km [{between(low, high, sigma)}]"
         words = f"{sequence((transition.lower, transition.upper))}: {scale}"
         moves.append((words, probability(transition.probability)))
     return {
@@ -49,13 +50,27 @@ def compared_rows(analysis: Analysis) -> list[tuple[str, ...]]:
 
 
 def convergence_rows(analysis: Analysis) -> list[tuple[str, ...]]:
-    """One row per sampled model: curve, pieces, ln evidence, split R-hat, effective draws, length, state."""
+    """Rows of the leading models of each curve and of every model that did not converge.
+
+    Curve, pieces, ln evidence, split R-hat, effective draws, length in autocorrelation times, state.
+    """
     rows = []
     for inference in analysis.fits.values():
-        fits = [fit for fit in (*inference.named, *inference.free) if fit.health is not None]
-        for fit in sorted(fits, key=lambda fit: -fit.log_evidence):
-            rows.append((CURVES[inference.curve], *_row(fit)))
+        for place, fit in enumerate(_sampled(inference)):
+            if place < MODELS_SHOWN or not fit.health.ok:
+                rows.append((CURVES[inference.curve], *_row(fit)))
     return rows
+
+
+def not_shown(analysis: Analysis) -> int:
+    """Number of sampled models without a row; all of them converged."""
+    return sum(len(_sampled(inference)) for inference in analysis.fits.values()) - len(convergence_rows(analysis))
+
+
+def _sampled(inference: Inference) -> list[Fit]:
+    """Sampled models, the one with the largest evidence first."""
+    fits = [fit for fit in (*inference.named, *inference.free) if fit.health is not None]
+    return sorted(fits, key=lambda fit: -fit.log_evidence)
 
 
 def _row(fit: Fit) -> tuple[str, ...]:

@@ -1,5 +1,6 @@
 """The report page: one HTML file that needs nothing else."""
 
+import math
 import re
 from importlib import resources
 from typing import Any
@@ -9,7 +10,7 @@ from markupsafe import Markup, escape
 
 from regimes.analysis import Analysis
 from regimes.report.captions import TITLES, caption, description
-from regimes.report.convergence import compared_rows, convergence_rows, opinion_rows
+from regimes.report.convergence import compared_rows, convergence_rows, not_shown, opinion_rows
 from regimes.report.digits import between, count, fixed, probability, rounded, significant, span, spread
 from regimes.report.tables import slope_text
 from regimes.report.words import CURVES, DECISIONS, DISPLAY, sequence
@@ -18,7 +19,7 @@ from regimes.verdict.record import Slope, TransitionScale
 from regimes.verdict.rule import CHALLENGE
 
 SEQUENCES_SHOWN = 6
-TRANSITIONS_FROM = 0.05
+TRANSITIONS_FROM, TRANSITIONS_SHOWN = 0.05, 8
 SIGNS = {"supported": "\u25cf", "undecided": "\u25d0", "none_fits": "\u25cb"}
 
 
@@ -53,6 +54,7 @@ def typeset(text: object) -> Markup:
 def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
     verdict, origin = analysis.verdict, analysis.provenance
     sentence, reasons = _headline(analysis)
+    likely = [t for t in verdict.transitions if t.probability > TRANSITIONS_FROM]
     return {
         "case": origin.case,
         "decision": verdict.decision,
@@ -65,7 +67,8 @@ def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
         "supported": [(DISPLAY[s.regime], f"{span(s.low, s.high)} km") for s in verdict.supported],
         "sequences": [(sequence(s.regimes), probability(s.probability)) for s in verdict.sequences[:SEQUENCES_SHOWN]],
         "more_sequences": max(len(verdict.sequences) - SEQUENCES_SHOWN, 0),
-        "transitions": [_transition(t) for t in verdict.transitions if t.probability > TRANSITIONS_FROM],
+        "transitions": [_transition(t) for t in likely[:TRANSITIONS_SHOWN]],
+        "more_transitions": max(len(likely) - TRANSITIONS_SHOWN, 0),
         "slopes": [_slope(s) for s in verdict.slopes],
         "bayes_factor": fixed(verdict.log_bayes_factor, 1),
         "challenge": fixed(CHALLENGE, 1),
@@ -82,6 +85,7 @@ def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
         "curves": [CURVES[name] for name in analysis.fits],
         "compared": compared_rows(analysis),
         "convergence": convergence_rows(analysis),
+        "more_models": not_shown(analysis),
         "cleaning": [(reason, count(n), note) for reason, n, note in origin.cleaning],
         "provenance": _provenance(analysis),
     }
@@ -131,17 +135,18 @@ def _slope(slope: Slope) -> tuple[str, str, str, str]:
 def _provenance(analysis: Analysis) -> list[tuple[str, str]]:
     origin = analysis.provenance
     start = (significant(r / KM) for r in (origin.median_start, origin.start_p90))
-    farthest = significant(origin.max_separation / KM, 3)
+    gap = f"{origin.longest_gap / HOUR:g} h" if math.isfinite(origin.longest_gap) else "not recorded"
     return [
         ("case", origin.case),
         ("fixes", f"{count(origin.n_fixes)} of {count(origin.n_particles)} particles, from {origin.source}"),
-        ("SHA-256 of the input", origin.sha256),
-        ("pairs", f"{count(origin.n_pairs)}, {origin.kind}, at most {farthest} km apart at the start"),
+        ("SHA-256 of the input", origin.sha256 or "none: the data came from memory"),
+        ("pairs", f"{count(origin.n_pairs)}, {origin.kind}"),
+        ("largest separation at the start", f"{origin.max_separation / KM:.3g} km"),
         ("separation at the start", "median {} km, 90th percentile {} km".format(*start)),
         ("duration of the pairs", f"median {significant(origin.median_duration / DAY)} d"),
-        ("common time step", f"{significant(origin.step / HOUR, 3)} h"),
-        ("longest gap bridged", f"{significant(origin.longest_gap / HOUR, 3)} h"),
-        ("position error", f"{significant(origin.position_error, 3)} m"),
+        ("common time step", f"{origin.step / HOUR:g} h"),
+        ("longest gap bridged", gap),
+        ("position error", f"{origin.position_error:g} m"),
         ("random seed", str(origin.seed)),
         *((f"version of {name}", version) for name, version in origin.versions.items()),
     ]  # fmt: skip
