@@ -7,6 +7,7 @@ import sys
 import threading
 import traceback
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from tempfile import TemporaryDirectory
 
@@ -81,8 +82,12 @@ def _parser() -> argparse.ArgumentParser:
     run = commands.add_parser("run", help="analyse a case and write its report")
     run.add_argument("case", type=Path, metavar="CASE", help="case file (TOML)")
     run.add_argument("--out", type=Path, metavar="DIR", help="folder of the report (default: reports/NAME)")
-    run.add_argument("--seed", type=_natural, metavar="N", help="random seed (default: that of the case file)")
-    run.add_argument("--jobs", type=_positive, metavar="N", help="processes (default: one for each core)")
+    run.add_argument(
+        "--seed", type=partial(_whole, least=0), metavar="N", help="random seed (default: that of the case file)"
+    )
+    run.add_argument(
+        "--jobs", type=partial(_whole, least=1), metavar="N", help="processes (default: one for each core)"
+    )
     run.set_defaults(command=_run)
 
     check = commands.add_parser("check", help="read the data of a case, count what is there, fit nothing")
@@ -109,14 +114,6 @@ def _fixes_file(text: str) -> Path:
     if not text.lower().endswith(tuple(ENDINGS.split(", "))):
         raise argparse.ArgumentTypeError(f"got {text!r}; must end in one of {ENDINGS}")
     return Path(text)
-
-
-def _natural(text: str) -> int:
-    return _whole(text, 0)
-
-
-def _positive(text: str) -> int:
-    return _whole(text, 1)
 
 
 def _whole(text: str, least: int) -> int:
@@ -151,7 +148,10 @@ def _check(chosen: argparse.Namespace) -> int:
     from regimes.cases import load_case
     from regimes.pipeline import check
 
-    _tell(check(load_case(chosen.case)).summary())
+    case = load_case(chosen.case)
+    with _Watch("reading fixes"):
+        survey = check(case)
+    _tell(survey.summary())
     return DONE
 
 
@@ -160,9 +160,11 @@ def _simulate(chosen: argparse.Namespace) -> int:
     from regimes.synthetic import load_recipe, simulate
 
     recipe, out = load_recipe(chosen.recipe), chosen.out.resolve()
+    with _Watch("simulating"):
+        fixes = simulate(recipe)
     try:
         with TemporaryDirectory(prefix=".fixes-", dir=out.parent) as scratch:
-            write_fixes(simulate(recipe), Path(scratch) / out.name)
+            write_fixes(fixes, Path(scratch) / out.name)
             os.replace(Path(scratch) / out.name, out)
     except OSError as error:
         raise CaseError(
@@ -199,8 +201,12 @@ def _short(path: Path) -> Path:
 class _Watch:
     """While nothing is being written: bars with the time left where stderr is a terminal, and Ctrl-C ends at once.
 
-    Threads that sample would otherwise be waited for, which can take a minute.
+    Threads that sample would otherwise be waited for, which can take a minute. A `stage` that cannot tell how far it
+    is has a bar that only moves.
     """
+
+    def __init__(self, stage: str = "") -> None:
+        self.stage = stage
 
     def __enter__(self) -> Callable[[str, int, int], None] | None:
         self.bars = None
@@ -212,9 +218,11 @@ class _Watch:
         from rich.console import Console
         from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 
-        words, share = TextColumn("{task.description}"), TextColumn("{task.completed}/{task.total}")
+        words, share = TextColumn("{task.description}"), TextColumn("{task.fields[share]}")
         columns = (words, BarColumn(), share, TimeRemainingColumn())
         self.bars = Progress(*columns, console=Console(stderr=True), transient=True)
+        if self.stage:
+            self.bars.add_task(self.stage, total=None, share="")
         self.bars.start()
         return self._report
 
@@ -226,8 +234,8 @@ class _Watch:
 
     def _report(self, stage: str, done: int, total: int) -> None:
         if stage not in self.tasks:
-            self.tasks[stage] = self.bars.add_task(stage, total=total)
-        self.bars.update(self.tasks[stage], completed=done, total=total)
+            self.tasks[stage] = self.bars.add_task(stage, total=total, share="")
+        self.bars.update(self.tasks[stage], completed=done, total=total, share=f"{done}/{total}")
 
     def _leave(self, *_details: object) -> None:
         if self.bars is not None:

@@ -331,7 +331,20 @@ def test_progress_is_shown_on_a_terminal_only(case, monkeypatch, capsys):
     assert cli.main(["run", str(case)]) == 0
     said = capsys.readouterr()
     assert "sampling the exit rate fits" in said.err
+    assert "2/2" in said.err
     assert "sampling" not in said.out
+
+
+@pytest.mark.parametrize("command", ["check", "simulate"])
+def test_stages_of_unknown_length_are_named(command, case, here, monkeypatch, capsys):
+    monkeypatch.setattr(sys.stderr, "isatty", lambda: True, raising=False)
+    monkeypatch.setenv("TTY_COMPATIBLE", "1")
+    (here / "recipe.toml").write_text(RECIPE)
+    more = ["recipe.toml", "--out", "fixes.csv"] if command == "simulate" else [str(case)]
+    assert cli.main([command, *more]) == 0
+    said = capsys.readouterr()
+    assert {"check": "reading fixes", "simulate": "simulating"}[command] in said.err
+    assert "None" not in said.err
 
 
 def test_closed_pipe_is_no_error(case):

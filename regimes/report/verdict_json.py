@@ -6,9 +6,9 @@ from typing import Any
 
 import numpy as np
 
-from regimes.analysis import Analysis
+from regimes.analysis import Analysis, Provenance
 from regimes.units import KM
-from regimes.verdict.record import BySeparation, Interval, Slope, TransitionScale
+from regimes.verdict.record import BySeparation, Interval, Slope, TransitionScale, Verdict
 
 SCHEMA = 1
 _LEVELS = ("median", "lo68", "hi68", "lo95", "hi95")
@@ -27,20 +27,22 @@ def verdict_document(analysis: Analysis) -> dict[str, Any]:
         Only dicts, lists, strings, booleans, finite numbers and None (for what is not determined). Lengths in
         km; slopes and exponents as in the report.
     """
-    verdict, origin = analysis.verdict, analysis.provenance
-    document = {
+    return plain(_header(analysis.provenance) | _said(analysis.verdict))
+
+
+def _header(origin: Provenance) -> dict[str, Any]:
+    counts = ("n_fixes", "n_particles", "n_pairs", "n_clusters")
+    return {
         "schema": SCHEMA,
         "case": origin.case,
         "seed": origin.seed,
         "versions": dict(origin.versions),
-        "input": {
-            "source": origin.source,
-            "sha256": origin.sha256,
-            "n_fixes": origin.n_fixes,
-            "n_particles": origin.n_particles,
-            "n_pairs": origin.n_pairs,
-            "n_clusters": origin.n_clusters,
-        },
+        "input": {"source": origin.source, "sha256": origin.sha256} | {name: getattr(origin, name) for name in counts},
+    }
+
+
+def _said(verdict: Verdict) -> dict[str, Any]:
+    return {
         "decision": verdict.decision,
         "reasons": list(verdict.reasons),
         "sentence": verdict.sentence,
@@ -65,7 +67,6 @@ def verdict_document(analysis: Analysis) -> dict[str, Any]:
         },
         "cautions": [{"code": c.code, "text": c.text} for c in verdict.cautions],
     }
-    return plain(document)
 
 
 def verdict_text(analysis: Analysis) -> str:

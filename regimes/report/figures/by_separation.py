@@ -7,7 +7,7 @@ from regimes.analysis import Analysis
 from regimes.report.figures.style import BLUE, COLOUR, GREY, HATCH, INK, LINE, PALE, figure_function, log_axis
 from regimes.report.words import DISPLAY
 from regimes.units import KM
-from regimes.verdict.record import BySeparation
+from regimes.verdict.record import BySeparation, Supported
 
 PROBABLE = 0.95
 SHOWN = 0.1  # a regime that stays below this probability gets no name of its own
@@ -43,14 +43,23 @@ def plot_regimes(analysis: Analysis, ax: Axes) -> Axes:
         ax.stairs(p, by.edges / KM, fill=True, color=COLOUR[name], alpha=0.10, lw=0)
         _name_at_peak(ax, by, name, p, taken)
     ax.axhline(PROBABLE, color=GREY, lw=0.8, ls=(0, (2, 2)))
-    for stretch in analysis.verdict.supported:
+    _supported(ax, analysis.verdict.supported)
+    ax.set_ylim(0, 1.22)
+    ax.set_yticks([0, 0.2, 0.4, 0.6, 0.8, PROBABLE], ["0", "0.2", "0.4", "0.6", "0.8", "0.95"])
+    ax.set_ylabel("probability")
+    return ax
+
+
+def _supported(ax: Axes, stretches: tuple[Supported, ...]) -> None:
+    """Bars over the separations at which a regime is supported."""
+    for stretch in stretches:
         ends = np.array([stretch.low, stretch.high]) / KM
         ax.fill_between(
             ends, BAR - 0.025, BAR + 0.025, facecolor=COLOUR[stretch.regime], hatch=HATCH[stretch.regime],
             edgecolor="white", lw=0,
         )  # fmt: skip
         _name(ax, np.sqrt(ends.prod()), BAR + 0.04, DISPLAY[stretch.regime], va="bottom", fontsize=9.5)
-    if analysis.verdict.supported:
+    if stretches:
         ax.annotate(
             "supported",
             (-0.02, BAR),
@@ -59,10 +68,6 @@ def plot_regimes(analysis: Analysis, ax: Axes) -> Axes:
             va="center",
             fontsize=9.5,
         )
-    ax.set_ylim(0, 1.22)
-    ax.set_yticks([0, 0.2, 0.4, 0.6, 0.8, PROBABLE], ["0", "0.2", "0.4", "0.6", "0.8", "0.95"])
-    ax.set_ylabel("probability")
-    return ax
 
 
 def _separation_axis(ax: Axes, by: BySeparation) -> None:
