@@ -34,7 +34,7 @@ def bridge(log_posterior, draws, log_values, seed: int, size: int = 3000) -> tup
     Raises
     ------
     FitError
-        If the iteration does not settle.
+        If the proposal misses the posterior or the iteration does not settle.
 
     Notes
     -----
@@ -55,6 +55,11 @@ def bridge(log_posterior, draws, log_values, seed: int, size: int = 3000) -> tup
     n1, n2 = len(use), size
     s1, s2 = np.log(n1 / (n1 + n2)), np.log(n2 / (n1 + n2))
     log_z = float(logsumexp(log_p2 - log_q2) - np.log(n2))
+    if not np.isfinite(log_z):
+        raise FitError(
+            f"bridge sampling: got a first ln Z of {log_z} from {size} draws of the proposal; some must have a finite "
+            "posterior; sample longer"
+        )
     for _ in range(200):
         top = log_p2 - np.logaddexp(s1 + log_p2 - log_z, s2 + log_q2)
         bottom = log_q1 - np.logaddexp(s1 + log_p1 - log_z, s2 + log_q1)
@@ -64,11 +69,29 @@ def bridge(log_posterior, draws, log_values, seed: int, size: int = 3000) -> tup
             f2 = np.exp(top - logsumexp(top) + np.log(n2))
             f1 = np.exp(bottom - logsumexp(bottom) + np.log(n1))
             return log_z, float(np.sqrt(f2.var() / n2 + f1.var() / n1))
-    raise FitError(f"bridge sampling: got a last change of {moved:.1e} in ln Z after 200 rounds; must be below 1e-8")
+    raise FitError(
+        f"bridge sampling: got a last change of {moved:.1e} in ln Z after 200 rounds; must be below 1e-8; the draws do "
+        "not cover the posterior: sample longer"
+    )
 
 
 class Mixture:
-    """Gaussian kernels around draws, with one wide Gaussian for the tails."""
+    r"""Gaussian kernels around draws, with one wide Gaussian for the tails.
+
+    .. math:: q = \frac{0.9}{m} \sum_i N(c_i, h^2 \Sigma) + 0.1 \, N(\bar c, w^2 \Sigma), \quad
+              h = 1.1 \left( \frac{4}{(d + 2) m} \right)^{1 / (d + 4)}, \; w = 1.8
+
+    Parameters
+    ----------
+    draws : (n, d) float array
+        Their covariance is Sigma; up to 150 of them are the centres c.
+    rng : numpy Generator
+        Chooses the centres.
+
+    References
+    ----------
+    Bandwidth: Silverman (1986) Density Estimation, equation 4.14.
+    """
 
     def __init__(self, draws, rng: np.random.Generator):
         n, d = draws.shape

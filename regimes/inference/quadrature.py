@@ -1,10 +1,10 @@
 """The exit-rate posterior on a grid: exact up to the grid, fast enough to fit hundreds of replicates."""
 
 from dataclasses import dataclass
-from itertools import combinations
+from itertools import combinations_with_replacement
 
 import numpy as np
-from scipy.special import logsumexp
+from scipy.special import gammaln, logsumexp
 
 from regimes.inference.models import SLOPE_PRIOR, Model, Space
 from regimes.likelihood.exit_rate import ExitRateLikelihood, gamma_shape, grid_log_evidence
@@ -53,17 +53,18 @@ def integrate(likelihood: ExitRateLikelihood, model: Model, space: Space) -> Qua
     Notes
     -----
     ln rate is integrated exactly (a gamma function), alpha on midpoints between 1 and 3 with one
-    atom each for the saturated ends, transitions on midpoints of their ordered simplex.
+    atom each for the saturated ends, transitions on the centroids of the cells of their ordered simplex (cells that
+    the simplex cuts included, with their share of the volume).
     """
     if not np.isfinite(model.log_prior_volume(space)):
         return None
     slopes, slope_mass = _slope_nodes(model.n_free)
-    moves = _move_nodes(model, space)
+    moves, move_mass = _move_nodes(model, space)
     nodes = np.empty((slopes.shape[0] * moves.shape[0], model.size))
     nodes[:, 0] = 0.0
     nodes[:, 1 : 1 + model.n_free] = np.repeat(slopes, moves.shape[0], axis=0)
     nodes[:, 1 + model.n_free :] = np.tile(moves, (slopes.shape[0], 1))
-    log_prior = np.repeat(slope_mass, moves.shape[0]) - np.log(moves.shape[0])
+    log_prior = (slope_mass[:, None] + move_mass).ravel()
     value, scale = grid_log_evidence(
         likelihood.thresholds,
         likelihood.exits,
@@ -95,15 +96,16 @@ def _slope_nodes(n_free: int):
 
 
 def _move_nodes(model: Model, space: Space):
-    """Equally probable nodes of the ordered ln transitions, (m, n_transition)."""
+    """Nodes of the ordered ln transitions (m, n_transition) and their ln prior mass."""
     count = model.n_transition
     if count == 0:
-        return np.empty((1, 0))
+        return np.empty((1, 0)), np.zeros(1)
     low, high = space.transition_bounds
     room = high - low - (count - 1) * space.step
     cells = _MOVE_CELLS.get((model.n_free, count), 20)
-    axis = low + room * (np.arange(cells) + 0.5) / cells
-    if count == 1:
-        return axis[:, None]
-    ordered = np.array(list(combinations(range(cells), count)))
-    return axis[ordered] + space.step * np.arange(count)
+    cell = np.array(list(combinations_with_replacement(range(cells), count)))
+    same = cell[:, :, None] == cell[:, None, :]
+    sharing, rank = same.sum(axis=2), np.tril(same).sum(axis=2)  # k transitions in one cell: a k-th of k! orders each
+    mass = -np.sum(gammaln(sharing + 1.0) / sharing, axis=1)
+    nodes = low + room * (cell + rank / (sharing + 1.0)) / cells + space.step * np.arange(count)
+    return nodes, mass - logsumexp(mass)

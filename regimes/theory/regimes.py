@@ -4,6 +4,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+_PROPER = {"richardson": "Richardson"}
+
 
 @dataclass(frozen=True, slots=True)
 class Regime:
@@ -28,6 +30,11 @@ class Regime:
     exponent: float
     expected: str
     source: str
+
+    @property
+    def word(self) -> str:
+        """The name as it stands in a sentence."""
+        return _PROPER.get(self.name, self.name)
 
     @property
     def free(self) -> bool:

@@ -115,8 +115,8 @@ def contradictions(found, second: BySeparation | None) -> list[str]:
         excluded = (second.exponent_lo95 > own) | (second.exponent_hi95 < own)
         if np.mean((improbable & excluded)[here]) >= 0.5:
             said.append(
-                f"the exit rates support {stretch.regime} from {km(stretch.low)} to {km(stretch.high)} km and the "
-                "distribution of separations contradicts it there"
+                f"the exit rates support {REGIMES[stretch.regime].word} from {km(stretch.low)} to {km(stretch.high)} km "
+                "and the distribution of separations contradicts it there"
             )
     return said
 
@@ -130,13 +130,15 @@ def _why_nothing(leading: BySeparation, mask) -> list[str]:
     if any(np.any(m) for m in mask.values()):
         widest = max(stretches(mask, leading.edges), key=lambda s: s.span)
         return [
-            f"{widest.regime} meets the rule only from {km(widest.low)} to {km(widest.high)} km, less than a factor "
-            f"{SPAN:g} of separation"
+            f"{REGIMES[widest.regime].word} meets the rule only from {km(widest.low)} to {km(widest.high)} km, less than "
+            f"a factor {SPAN:g} of separation"
         ]
-    text = f"the most probable regime anywhere is {best} near {km(leading.separation[at])} km ({percent(p)})"
+    text = (
+        f"the most probable regime anywhere is {REGIMES[best].word} near {km(leading.separation[at])} km ({percent(p)})"
+    )
     if p < 0.95:
         return [text + ", below the 95 % that the rule asks for"]
-    inside = [name for name, r in REGIMES.items() if low <= r.exponent <= high]
+    inside = [r.word for r in REGIMES.values() if low <= r.exponent <= high]
     names = " and ".join(inside) if inside else "none of the named regimes"
     return [text + f", but the free kernel exponent there, {low:.1f} to {high:.1f} (95 %), is consistent with {names}"]
 

@@ -3,6 +3,7 @@
 from itertools import pairwise
 
 from regimes.inference.record import Inference
+from regimes.theory.regimes import REGIMES
 from regimes.units import DAY, HOUR
 from regimes.verdict.decide import Decision
 from regimes.verdict.digits import km, km_interval, percent, slope_text
@@ -38,7 +39,7 @@ def verdict_sentence(decision: Decision, transitions, slopes) -> str:
     quoted = next((s for s in slopes if s.kind != "none"), None)
     slope = ("; " + slope_words(quoted)) if quoted else ""
     if decision.decision == "supported":
-        parts = [f"only {s.regime} from {km(s.low)} to {km(s.high)} km" for s in decision.supported]
+        parts = [f"only {REGIMES[s.regime].word} from {km(s.low)} to {km(s.high)} km" for s in decision.supported]
         text = f"Supported: of the four regimes the data are consistent with {_and(parts)}"
         return text + _moves(decision, transitions) + slope + "."
     if decision.decision == "none_fits":
@@ -55,7 +56,8 @@ def _moves(decision: Decision, transitions) -> str:
         if match is not None and match.probability >= 0.5:
             scale = match.scale
             said.append(
-                f"{one.regime} gives way to {two.regime} at {km_interval(scale.median, scale.lo95, scale.hi95)}"
+                f"{REGIMES[one.regime].word} gives way to {REGIMES[two.regime].word} at "
+                + km_interval(scale.median, scale.lo95, scale.hi95)
             )
     return "; " + "; ".join(said) if said else ""
 
@@ -74,7 +76,7 @@ def methods_text(facts: dict, fit: Inference, decision: Decision, sentence: str,
     resolved : (float, float) [m]
     """
     top = max(zip(fit.sequence_probability(), fit.named, strict=True), key=lambda p: p[0])
-    names = ", ".join(top[1].model.pieces)
+    names = ", ".join(REGIMES[p].word for p in top[1].model.pieces)
     days = facts["median_duration"] / DAY
     shape = "1 cluster" if facts["n_clusters"] == 1 else f"{facts['n_clusters']} clusters"
     unit = "release" if facts["kind"] == "launched" else "cluster"
