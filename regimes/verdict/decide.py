@@ -115,8 +115,8 @@ def contradictions(found, second: BySeparation | None) -> list[str]:
         excluded = (second.exponent_lo95 > own) | (second.exponent_hi95 < own)
         if np.mean((improbable & excluded)[here]) >= 0.5:
             said.append(
-                f"the exit rates support {REGIMES[stretch.regime].word} from {km(stretch.low)} to {km(stretch.high)} km "
-                "and the distribution of separations contradicts it there"
+                f"the exit rates support {REGIMES[stretch.regime].word} from {km(stretch.low)} to "
+                f"{km(stretch.high)} km and the distribution of separations contradicts it there"
             )
     return said
 
@@ -130,8 +130,8 @@ def _why_nothing(leading: BySeparation, mask) -> list[str]:
     if any(np.any(m) for m in mask.values()):
         widest = max(stretches(mask, leading.edges), key=lambda s: s.span)
         return [
-            f"{REGIMES[widest.regime].word} meets the rule only from {km(widest.low)} to {km(widest.high)} km, less than "
-            f"a factor {SPAN:g} of separation"
+            f"{REGIMES[widest.regime].word} meets the rule only from {km(widest.low)} to {km(widest.high)} km, less "
+            f"than a factor {SPAN:g} of separation"
         ]
     text = (
         f"the most probable regime anywhere is {REGIMES[best].word} near {km(leading.separation[at])} km ({percent(p)})"
