@@ -1,6 +1,7 @@
 """What all models say together: regimes by separation, local exponent, slope over a range, transitions."""
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from scipy.special import logsumexp
@@ -146,18 +147,24 @@ def range_slopes(slopes):
 
 
 def transitions(posteriors) -> tuple[Transition, ...]:
-    """All transitions between named regimes, the most probable first."""
+    """All transitions between named regimes, the most probable first; draws in proportion to the sequences' weight."""
     found: dict[tuple[str, str], list] = {}
     for weight, post in zip(probabilities(posteriors), posteriors, strict=True):
-        if not len(post.draws):
+        if not len(post.draws) or not weight > 0:
             continue
         moves = np.exp(post.draws[:, 1 + post.model.n_free :])
-        for i in range(post.model.n_transition):
-            pair = post.model.pieces[i : i + 2]
-            found.setdefault(pair, []).append((weight, moves[:, i]))
+        steps = tuple(pairwise(post.model.pieces))
+        for pair in dict.fromkeys(steps):  # a sequence may hold the same transition twice
+            columns = [i for i, step in enumerate(steps) if step == pair]
+            found.setdefault(pair, []).append((float(weight), moves[:, columns].ravel()))
     out = []
     for (lower, upper), parts in found.items():
-        total = sum(w for w, _ in parts)
-        draws = [d[: max(1, round(len(d) * w / max(p for p, _ in parts)))] for w, d in parts]
-        out.append(Transition(lower, upper, float(total), np.concatenate(draws)))
+        each = min(len(draws) / weight for weight, draws in parts)
+        draws = np.concatenate([_thinned(draws, round(each * weight)) for weight, draws in parts])
+        out.append(Transition(lower, upper, sum(weight for weight, _ in parts), draws))
     return tuple(sorted(out, key=lambda t: -t.probability))
+
+
+def _thinned(draws, size: int):
+    """So many draws, evenly taken from all."""
+    return draws[np.arange(size) * len(draws) // max(size, 1)]

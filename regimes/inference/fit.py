@@ -172,12 +172,15 @@ def sample_candidates(
         chosen += [(g, i) for i, c in enumerate(group) if c.log_evidence > top + NEGLIGIBLE - _MARGIN]
     chosen.sort(key=lambda place: -groups[place[0]][place[1]].posterior.model.size)  # the longest first
     fits: dict[tuple[int, int], Fit] = {}
-    with ThreadPoolExecutor(max(jobs, 1)) as pool:
+    pool = ThreadPoolExecutor(max(jobs, 1))
+    try:
         work = {pool.submit(_sample_one, curve, groups[g][i], seed + 1000 * g + i): (g, i) for g, i in chosen}
         for done, future in enumerate(as_completed(work), 1):
             fits[work[future]] = future.result()
             if progress is not None:
                 progress(f"sampling the {curve.replace('_', ' ')} fits", done, len(work))
+    finally:
+        pool.shutdown(wait=False, cancel_futures=True)
     return tuple(
         tuple(fits.get((g, i)) or _unsampled(c) for i, c in enumerate(group)) for g, group in enumerate(groups)
     )

@@ -80,7 +80,7 @@ def slope_over(likelihood: ExitRateLikelihood, low: float, high: float, rng, siz
     others = [b.log_evidence for b in bent if b is not None]
     if others and logsumexp(others) - np.log(len(others)) - constant.log_evidence > CHANGING:
         return RangeSlope(low, high, empty, "none", "the exponent changes inside the range")
-    draws = constant.sample(size, rng)[:, 1]
+    draws = np.clip(constant.sample(size, rng)[:, 1], 1.0, 3.0)  # the prior goes on beyond, the kernel does not
     return RangeSlope(low, high, draws, *classify(draws))
 
 

@@ -7,9 +7,9 @@ import numpy as np
 from regimes.inference.record import Inference
 from regimes.theory.regimes import REGIMES
 from regimes.units import KM
-from regimes.verdict.digits import km, percent
+from regimes.verdict.digits import bayes_factor, km, listed, p_value, percent, rounded_down
 from regimes.verdict.record import BySeparation, Caution, Slope
-from regimes.verdict.rule import CHALLENGE, SPAN, Stretch, called, stretches
+from regimes.verdict.rule import CHALLENGE, PROBABLE, SPAN, Stretch, called, stretches
 
 LEAST_P = 0.01  # posterior predictive p-value below which no kernel fits
 FEW_CLUSTERS = 6.0  # below, spread between releases cannot be estimated
@@ -82,11 +82,11 @@ def decide(evidence: Evidence) -> Decision:
     if unhealthy:
         return Decision("undecided", tuple(unhealthy), (), cautions)
     if evidence.exit_rate.challenge > CHALLENGE:
-        ratio = np.exp(min(evidence.exit_rate.challenge, 20.0))
-        text = f"a free exponent is preferred to every named sequence by a Bayes factor of {ratio:.0f} (over 20)"
+        factor = bayes_factor(evidence.exit_rate.challenge)
+        text = f"a free exponent is preferred to every named sequence by a Bayes factor of {factor} (20 is enough)"
         return Decision("none_fits", (text,), (), cautions)
     if evidence.fit_p_value < LEAST_P:
-        text = f"the exit rates are improbable under every named sequence (predictive p = {evidence.fit_p_value:.1g})"
+        text = f"the exit rates are improbable under every named sequence ({p_value(evidence.fit_p_value)})"
         if evidence.free_p_value < LEAST_P:
             text += (
                 ", and under every kernel with a free exponent too: the curve is not a power law in two or three pieces"
@@ -95,7 +95,7 @@ def decide(evidence: Evidence) -> Decision:
     stops = [*against]
     if evidence.within_release:
         stops.append(
-            f"only {evidence.clusters:.1f} independent clusters: how much releases differ from one another "
+            f"only {rounded_down(evidence.clusters, 1)} independent clusters: how much releases differ from one another "
             "cannot be estimated from so few"
         )
     if not found:
@@ -133,24 +133,27 @@ def _why_nothing(leading: BySeparation, mask) -> list[str]:
             f"{REGIMES[widest.regime].word} meets the rule only from {km(widest.low)} to {km(widest.high)} km, less "
             f"than a factor {SPAN:g} of separation"
         ]
-    text = (
-        f"the most probable regime anywhere is {REGIMES[best].word} near {km(leading.separation[at])} km ({percent(p)})"
-    )
-    if p < 0.95:
+    share = percent(p) if p >= PROBABLE or p < 0.945 else "just under 95 %"
+    text = f"the most probable regime anywhere is {REGIMES[best].word} near {km(leading.separation[at])} km ({share})"
+    if p < PROBABLE:
         return [text + ", below the 95 % that the rule asks for"]
     inside = [r.word for r in REGIMES.values() if low <= r.exponent <= high]
-    names = " and ".join(inside) if inside else "none of the named regimes"
+    names = listed(inside) if inside else "none of the named regimes"
     return [text + f", but the free kernel exponent there, {low:.1f} to {high:.1f} (95 %), is consistent with {names}"]
 
 
 def _cautions(evidence: Evidence, against: list[str]) -> tuple[Caution, ...]:
+    return (*_of_the_data(evidence), *_of_the_fits(evidence, against))
+
+
+def _of_the_data(evidence: Evidence) -> list[Caution]:
     out = []
     lowest = evidence.leading.edges[0]
     if evidence.within_release:
         out.append(
             Caution(
                 "within_release",
-                f"All errors are within release: {evidence.clusters:.1f} effective clusters are too few "
+                f"All errors are within release: {rounded_down(evidence.clusters, 1)} effective clusters are too few "
                 "(under 6) to see how releases differ; particles took the place of releases as the independent unit.",
             )
         )
@@ -158,8 +161,8 @@ def _cautions(evidence: Evidence, against: list[str]) -> tuple[Caution, ...]:
         out.append(
             Caution(
                 "few_clusters",
-                f"Intervals rest on {evidence.clusters:.0f} effective clusters, with a small-sample correction; "
-                "30 or more would make them firm.",
+                f"Intervals rest on {rounded_down(evidence.clusters, 0)} effective clusters, with a small-sample "
+                "correction; 30 or more would make them firm.",
             )
         )
     if 0 < lowest < 30.0 * evidence.position_error:
@@ -178,6 +181,11 @@ def _cautions(evidence: Evidence, against: list[str]) -> tuple[Caution, ...]:
                 "sampling interval: the exponent there rests on the interpolation between fixes.",
             )
         )
+    return out
+
+
+def _of_the_fits(evidence: Evidence, against: list[str]) -> list[Caution]:
+    out = []
     if evidence.second_missing:
         out.append(Caution("no_second_opinion", f"No second opinion: {evidence.second_missing}."))
     out += [Caution("second_opinion_differs", text[0].upper() + text[1:] + ".") for text in against]
@@ -187,10 +195,10 @@ def _cautions(evidence: Evidence, against: list[str]) -> tuple[Caution, ...]:
             Caution(
                 "free_exponent",
                 f"A free exponent does better than every named sequence (Bayes factor "
-                f"{np.exp(min(evidence.exit_rate.challenge, 20.0)):.0f}; over 20 would overrule them).",
+                f"{bayes_factor(evidence.exit_rate.challenge)}; more than 20 overrules them).",
             )
         )
-    return tuple(out)
+    return out
 
 
 def _short_range(slope: Slope) -> Caution:

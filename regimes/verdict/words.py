@@ -6,7 +6,7 @@ from regimes.inference.record import Inference
 from regimes.theory.regimes import REGIMES
 from regimes.units import DAY, HOUR
 from regimes.verdict.decide import Decision
-from regimes.verdict.digits import km, km_interval, percent, slope_text
+from regimes.verdict.digits import km, km_interval, listed, percent, slope_text
 from regimes.verdict.record import Slope
 
 
@@ -40,11 +40,11 @@ def verdict_sentence(decision: Decision, transitions, slopes) -> str:
     slope = ("; " + slope_words(quoted)) if quoted else ""
     if decision.decision == "supported":
         parts = [f"only {REGIMES[s.regime].word} from {km(s.low)} to {km(s.high)} km" for s in decision.supported]
-        text = f"Supported: of the four regimes the data are consistent with {_and(parts)}"
+        text = f"Supported: of the four regimes the data are consistent with {listed(parts)}"
         return text + _moves(decision, transitions) + slope + "."
     if decision.decision == "none_fits":
-        return f"None of the named regimes fits: {_and(decision.reasons)}{slope}."
-    return f"Undecided: {_and(decision.reasons)}{slope}."
+        return f"None of the named regimes fits: {listed(decision.reasons)}{slope}."
+    return f"Undecided: {listed(decision.reasons)}{slope}."
 
 
 def _moves(decision: Decision, transitions) -> str:
@@ -94,10 +94,3 @@ def methods_text(facts: dict, fit: Inference, decision: Decision, sentence: str,
 
 def _kind(kind: str) -> str:
     return {"launched": "launched ", "chance": "chance ", "both": "launched and chance "}[kind]
-
-
-def _and(parts) -> str:
-    parts = list(parts)
-    if len(parts) <= 1:
-        return "".join(parts)
-    return ", ".join(parts[:-1]) + ("; and " if any("," in p for p in parts) else " and ") + parts[-1]
