@@ -136,8 +136,7 @@ def make_tracks(fixes: Fixes, step: float | None = None, longest_gap: float | No
             f"would be invented by interpolation; choose a step of at least {FINEST_STEP * interval:g} s "
             f"(observations.step_h = {FINEST_STEP * interval / HOUR:.4g})"
         )
-    default = GAP_STEPS * max(step, interval)
-    longest_gap = default if longest_gap is None else _positive("longest_gap", longest_gap)
+    longest_gap = default_gap(fixes, step) if longest_gap is None else _positive("longest_gap", longest_gap)
     axis_start = float(np.floor(fixes.time.min() / step))
     clock = _Clock(step, axis_start, longest_gap)
     return _assemble(fixes, clock, *_sample(fixes, clock))
@@ -215,6 +214,11 @@ def _cartesian(fixes: Fixes) -> np.ndarray:
     if fixes.planar:
         return np.column_stack([fixes.position, np.zeros(len(fixes.position))])
     return to_cartesian(fixes.position[:, 0], fixes.position[:, 1])
+
+
+def default_gap(fixes: Fixes, step: float) -> float:
+    """Longest gap that is bridged unless another is asked for: three steps or three median fix intervals [s]."""
+    return GAP_STEPS * max(step, _median_interval(fixes))
 
 
 def _median_interval(fixes: Fixes) -> float:

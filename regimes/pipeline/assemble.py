@@ -14,9 +14,10 @@ from regimes.pairs import CHANCE, LAUNCHED, Pairs
 from regimes.pipeline.options import Options
 from regimes.pipeline.rates import Rates, rate_table
 from regimes.tracks import Tracks
+from regimes.units import DAY
 from regimes.verdict.decide import Evidence, decide
 from regimes.verdict.numbers import by_separation, sequences, slope_record, transition_scales
-from regimes.verdict.record import Slope, Supported, Verdict
+from regimes.verdict.record import Caution, Slope, Supported, Verdict
 from regimes.verdict.words import methods_text, verdict_sentence
 
 _LIBRARIES = ("numpy", "scipy", "numba", "emcee")
@@ -51,6 +52,8 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysi
     sentence = verdict_sentence(decision, moves, [s for s in slopes if s.curve == "exit_rate"])
     record = provenance(pairs, tracks, options.seed)
     facts = _facts(record, rates, options)
+    passage = dispersion_of(tracks, moved)
+    spread = bands(leading, rates, moved, passage, rng)
     healths = [f.health for f in (leading, second) if f is not None]
     verdict = Verdict(
         decision=decision.decision,
@@ -71,10 +74,9 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysi
         health_reason="; ".join(h.reason for h in healths if h.reason),
         rhat_max=max(h.rhat_max for h in healths),
         ess_min=min(h.ess_min for h in healths),
-        cautions=decision.cautions,
+        cautions=decision.cautions + dissent(passage, spread),
     )
     fitted = {"exit_rate": leading} | ({"separation": second} if second is not None else {})
-    passage = dispersion_of(tracks, moved)
     return Analysis(
         provenance=record,
         rates=rate_table(rates),
@@ -83,13 +85,38 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysi
         passage_dispersion=passage,
         passage_separation=rates.resolved.low,
         fits=fitted,
-        bands=bands(leading, rates, moved, passage, rng),
+        bands=spread,
         verdict=verdict,
     )
 
 
 def dispersion_of(tracks: Tracks, pairs: Pairs) -> DispersionStatistics:
     return dispersion_statistics(tracks, pairs, default_times(pairs, tracks.step))
+
+
+def dissent(passage: DispersionStatistics, spread: Bands) -> tuple[Caution, ...]:
+    """A caution where the mean log separation leaves what the fitted kernel predicts at more than half of the times.
+
+    Leaves: by over two standard errors of the difference, with five pairs in three clusters or more.
+    """
+    curve = passage.mean_log_separation()
+    some = passage.times > 0
+    seen = (passage.weight @ passage.log_count)[some]
+    width = np.hypot(curve.standard_error[some], 0.5 * (spread.mean_log[3] - spread.mean_log[1]))
+    with np.errstate(invalid="ignore"):
+        away = np.abs(curve.value[some] - spread.mean_log[2]) > 2.0 * width
+    usable = (seen >= 5) & (curve.n_cluster[some] >= 3) & np.isfinite(width)
+    if usable.sum() < 4 or np.mean(away[usable]) <= 0.5:
+        return ()
+    days = spread.times[usable & away] / DAY
+    return (
+        Caution(
+            "mean_log_dissents",
+            f"The mean log separation leaves what the fitted kernel predicts, mostly {days[0]:.2g} to {days[-1]:.2g} d "
+            "after the first passage: one kernel without memory does not answer for both curves. Strain that persists "
+            "along a pair or differs between releases, oscillations and shear are the usual causes.",
+        ),
+    )
 
 
 def quoted_slopes(rates: Rates, leading: Inference, second, options: Options, rng) -> tuple[Slope, ...]:

@@ -14,7 +14,7 @@ from regimes.pipeline.opinion import second_opinion
 from regimes.pipeline.options import Options
 from regimes.pipeline.rates import exit_rates
 from regimes.pipeline.survey import Survey, check
-from regimes.tracks import Tracks
+from regimes.tracks import Tracks, default_gap
 
 Progress = Callable[[str, int, int], None]
 
@@ -106,7 +106,7 @@ def _provenance(survey: Survey, case: Case, seed: int, found: Provenance) -> Pro
         source=Path(fixes.source.path).name,
         sha256=fixes.source.sha256 or "",
         n_fixes=len(fixes.time),
-        longest_gap=float("nan") if gap is None else gap,
+        longest_gap=default_gap(fixes, survey.tracks.step) if gap is None else gap,
         max_separation=case.pairs.max_separation,
         cleaning=tuple((c.reason, c.count, c.note) for c in fixes.cleaning),
     )
