@@ -61,7 +61,7 @@ def slope_over(likelihood: ExitRateLikelihood, low: float, high: float, rng, siz
     95 % are stated), since most of them bend; the single power law is calibrated where the
     exponent is constant, and that is checked here.
     """
-    part, low, high = _inside(likelihood, low, high)
+    part, low, high = inside_range(likelihood, low, high)
     empty = np.empty(0)
     if part is None:
         return RangeSlope(low, high, empty, "none", f"fewer than {LEAST_STEPS} resolved intervals lie inside")
@@ -81,7 +81,7 @@ def slope_over(likelihood: ExitRateLikelihood, low: float, high: float, rng, siz
     if others and logsumexp(others) - np.log(len(others)) - constant.log_evidence > CHANGING:
         return RangeSlope(low, high, empty, "none", "the exponent changes inside the range")
     draws = np.clip(constant.sample(size, rng)[:, 1], 1.0, 3.0)  # the prior goes on beyond, the kernel does not
-    return RangeSlope(low, high, draws, *classify(draws))
+    return _judged(low, high, draws)
 
 
 def mixed_slope_over(posteriors, low: float, high: float, rng, size: int = 4000) -> RangeSlope:
@@ -93,7 +93,12 @@ def mixed_slope_over(posteriors, low: float, high: float, rng, size: int = 4000)
     if diffusive > 0.5:
         return RangeSlope(low, high, np.empty(0), "none", "the range is diffusive, which implies no spectrum")
     draws = 2.0 * local_exponents(slopes).mean(axis=1) - 1.0
-    return RangeSlope(low, high, draws, *classify(draws))
+    return _judged(low, high, draws)
+
+
+def _judged(low: float, high: float, draws) -> RangeSlope:
+    kind, reason = classify(draws)
+    return RangeSlope(low, high, np.empty(0) if kind == "none" else draws, kind, reason)
 
 
 def classify(draws) -> tuple[str, str]:
@@ -109,7 +114,7 @@ def classify(draws) -> tuple[str, str]:
     return "estimate", ""
 
 
-def _inside(likelihood: ExitRateLikelihood, low: float, high: float):
+def inside_range(likelihood: ExitRateLikelihood, low: float, high: float):
     """The likelihood of the intervals inside a range, and the range on thresholds."""
     t = likelihood.thresholds
     slack = 1e-6

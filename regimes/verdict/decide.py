@@ -95,8 +95,8 @@ def decide(evidence: Evidence) -> Decision:
     stops = [*against]
     if evidence.within_release:
         stops.append(
-            f"only {rounded_down(evidence.clusters, 1)} independent clusters: how much releases differ from one another "
-            "cannot be estimated from so few"
+            f"only {rounded_down(evidence.clusters, 1)} independent clusters: how much releases differ from one "
+            "another cannot be estimated from so few"
         )
     if not found:
         stops += _why_nothing(leading, mask)
