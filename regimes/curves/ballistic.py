@@ -13,6 +13,9 @@ from regimes.geodesy import separation
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
 
+# Share of D2 that differences of squares of positions may differ by without meaning.
+_ROUNDING = 1e-9
+
 
 @dataclass(frozen=True, slots=True)
 class BallisticCheck:
@@ -53,7 +56,7 @@ class BallisticCheck:
         The last time of all where it never does, zero where it has at the first; NaN where there is no band at the
         first time (one cluster).
         """
-        return _last_inside(self.dispersion, self.dispersion.value - self.prediction.value)
+        return self._last_inside(self.dispersion)
 
     @property
     def departs_after(self) -> float:
@@ -61,7 +64,19 @@ class BallisticCheck:
 
         Sharper than `holds_until`: what both sides share, as the spread of initial separations, does not blur it.
         """
-        return _last_inside(self.departure, self.departure.value)
+        return self._last_inside(self.departure)
+
+    def _last_inside(self, banded: Curve) -> float:
+        """Last time before the departure first exceeds the half width of a curve's 95 % band."""
+        some = banded.n_cluster > 1
+        if not some[0]:
+            return float("nan")
+        half = np.zeros(some.size)
+        half[some] = student.ppf(0.975, banded.n_cluster[some] - 1) * banded.standard_error[some]
+        half += _ROUNDING * self.dispersion.value
+        outside = np.flatnonzero(some & (np.abs(self.departure.value) > half))
+        end = outside[0] if outside.size else np.flatnonzero(some)[-1] + 1
+        return float(banded.axis[end - 1]) if end > 0 else 0.0
 
     def summary(self) -> str:
         """One line: initial velocity difference, how long the law holds, and within what."""
@@ -182,15 +197,3 @@ def _initial_curves(initial, chosen: np.ndarray, rows: np.ndarray, weight: np.nd
         ("initial square velocity difference", square, count, "m2/s2"),
     )
     return [Curve(name, "time", np.zeros(1), above, below, weight, unit) for name, above, below, unit in parts]
-
-
-def _last_inside(curve: Curve, gap: np.ndarray) -> float:
-    """Last time before the gap first exceeds the half width of the curve's 95 % band."""
-    some = curve.n_cluster > 1
-    if not some[0]:
-        return float("nan")
-    half = np.zeros(gap.size)
-    half[some] = student.ppf(0.975, curve.n_cluster[some] - 1) * curve.standard_error[some]
-    outside = np.flatnonzero(some & (np.abs(gap) > half))
-    end = outside[0] if outside.size else np.flatnonzero(some)[-1] + 1
-    return float(curve.axis[end - 1]) if end > 0 else 0.0
