@@ -29,6 +29,7 @@ class Quadrature:
     gamma_rate : (m,) float array [s]
         Conditional posterior of the rate: Gamma(`gamma_shape`) / gamma_rate.
     gamma_shape : float
+    space : Space
     """
 
     model: Model
@@ -37,13 +38,20 @@ class Quadrature:
     log_weight: np.ndarray
     gamma_rate: np.ndarray
     gamma_shape: float
+    space: Space
 
     def sample(self, size: int, rng: np.random.Generator):
-        """Draws (size, model.size) from the posterior."""
+        """Draws (size, model.size) from the posterior; transitions lie anywhere in the cell of their node."""
         mass = np.exp(self.log_weight - logsumexp(self.log_weight))
         chosen = rng.choice(mass.size, size=size, p=mass)
         theta = self.nodes[chosen].copy()
         theta[:, 0] = np.log(rng.gamma(self.gamma_shape, size=size) / self.gamma_rate[chosen])
+        moves = theta[:, 1 + self.model.n_free :]
+        if moves.size:
+            low, width, _ = _move_cells(self.model, self.space)
+            apart = self.space.step * np.arange(self.model.n_transition)
+            cell = np.floor((moves - apart - low) / width)
+            theta[:, 1 + self.model.n_free :] = low + width * np.sort(cell + rng.random(cell.shape), axis=1) + apart
         return theta
 
 
@@ -78,7 +86,7 @@ def integrate(likelihood: ExitRateLikelihood, model: Model, space: Space) -> Qua
     joint = value + log_prior
     total = float(logsumexp(joint))
     width = np.log(space.log_rate[1] - space.log_rate[0])
-    return Quadrature(model, total + log_gamma - width, nodes, joint - total, scale, shape)
+    return Quadrature(model, total + log_gamma - width, nodes, joint - total, scale, shape, space)
 
 
 def _slope_nodes(n_free: int):
@@ -100,12 +108,17 @@ def _move_nodes(model: Model, space: Space):
     count = model.n_transition
     if count == 0:
         return np.empty((1, 0)), np.zeros(1)
-    low, high = space.transition_bounds
-    room = high - low - (count - 1) * space.step
-    cells = _MOVE_CELLS.get((model.n_free, count), 20)
+    low, width, cells = _move_cells(model, space)
     cell = np.array(list(combinations_with_replacement(range(cells), count)))
     same = cell[:, :, None] == cell[:, None, :]
     sharing, rank = same.sum(axis=2), np.tril(same).sum(axis=2)  # k transitions in one cell: a k-th of k! orders each
     mass = -np.sum(gammaln(sharing + 1.0) / sharing, axis=1)
-    nodes = low + room * (cell + rank / (sharing + 1.0)) / cells + space.step * np.arange(count)
+    nodes = low + width * (cell + rank / (sharing + 1.0)) + space.step * np.arange(count)
     return nodes, mass - logsumexp(mass)
+
+
+def _move_cells(model: Model, space: Space) -> tuple[float, float, int]:
+    """Where the cells of the transitions begin, their width in ln r, and their number."""
+    low, high = space.transition_bounds
+    cells = _MOVE_CELLS.get((model.n_free, model.n_transition), 20)
+    return low, (high - low - (model.n_transition - 1) * space.step) / cells, cells
