@@ -133,6 +133,17 @@ def test_nodes_of_transitions_fill_their_simplex(n, wanted):
     assert np.all(model.inside(inside, space))
 
 
+@pytest.mark.parametrize("pieces", [m for m in MODELS if len(m) > 1])
+def test_quadrature_draws_fill_the_prior_and_no_separation_holds_a_heap(pieces):
+    """Inside the prior, and transitions all different: on a grid, round-off would choose the side of a separation."""
+    likelihood = target()
+    space, model = exit_rate_space(likelihood), Model(pieces)
+    draws = integrate(likelihood, model, space).sample(3000, np.random.default_rng(2))
+    assert np.all(model.inside(draws, space))
+    moves = draws[:, 1 + model.n_free :]
+    assert all(np.unique(column).size == 3000 for column in moves.T)
+
+
 def test_quadrature_draws_have_the_moments_of_the_chain():
     """The grid's draws against the sampler's: means to 4.5 standard errors of the chain, spreads to 10 %."""
     likelihood = target()
