@@ -269,9 +269,9 @@ def test_growth_error_against_the_bootstrap():
 
 def test_who_makes_a_triangle():
     """Four of one release make four; unknown releases and couples none; the last to start sets the clock."""
-    paths = still([(0, 0), (1, 0), (0, 1), (1, 1), (5, 5), (6, 6), (7, 8)], n=6)
+    paths = still([(0, 0), (1, 0), (0, 1), (1, 1), (5, 5), (6, 6), (7, 8), (7, 9), (8, 8)], n=6)
     paths[2][4] = np.nan
-    tracks = tracks_of(paths, release=[2, 2, 2, 2, 7, 7, -1], start=[0, 0, 2, 0, 0, 0, 0])
+    tracks = tracks_of(paths, release=[2, 2, 2, 2, 7, 7, -1, -1, -1], start=[0, 0, 2, 0, 0, 0, 0, 0, 0])
     found = triplets(tracks, HOUR * np.arange(6.0))
     assert found.n_triplet == 4
     assert found.area.weight.size == 1

@@ -55,6 +55,11 @@ def test_integral_times_of_an_exponential():
     assert integral_times(rho, 0.01, "decaying_cosine")[0] == pytest.approx(1.0, abs=1e-6)
 
 
+def test_first_zero_by_hand():
+    """Straight lines through 1, 0.5, -0.5 at steps of 2: zero at 3; a trapezium of 1.5 and a triangle of 0.25."""
+    assert integral_times(np.array([[1.0, 0.5, -0.5, 9.0]]), 2.0, "first_zero")[0] == pytest.approx(1.75, rel=1e-12)
+
+
 @pytest.mark.parametrize(("gamma", "omega"), [(0.7, 2.0), (0.2, 0.1), (0.05, 3.0)])
 def test_integral_times_of_a_decaying_cosine(gamma, omega):
     """Closed integral to infinity, gamma / (gamma^2 + omega^2); quadrature to the first zero."""
@@ -72,7 +77,9 @@ def test_decaying_cosine_against_scipy():
     lag = 0.1 * np.arange(120)
     rho = np.stack([np.exp(-g * lag) * np.cos(w * lag) for g, w in ((0.5, 1.0), (0.4, 0.0), (1.0, 2.0))])
     rho = rho + 0.05 * rng.standard_normal((3, 12)).repeat(10, axis=1)
+    rho[1] = 0.5 * np.exp(-2.0 * lag) + 0.5 * np.exp(-lag / 3.0)  # slower than any cosine: omega is zero
     gamma, omega = decaying_cosine(rho, 0.1)
+    assert omega[1] == 0.0
     for row, g, w in zip(rho, gamma, omega, strict=True):
 
         def rest(p, row=row):
