@@ -86,7 +86,7 @@ def _parser() -> argparse.ArgumentParser:
         "--seed", type=partial(_whole, least=0), metavar="N", help="random seed (default: that of the case file)"
     )
     run.add_argument(
-        "--jobs", type=partial(_whole, least=1), metavar="N", help="processes (default: one for each core)"
+        "--jobs", type=partial(_whole, least=1), metavar="N", help="threads (default: one for each core)"
     )
     run.set_defaults(command=_run)
 

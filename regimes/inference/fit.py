@@ -209,13 +209,18 @@ def _starts(candidate: Candidate, walkers: int, seed: int):
     rng = np.random.default_rng(seed)
     spread = candidate.draws.std(axis=0) + 1e-3
     found = np.empty((0, candidate.draws.shape[1]))
-    for _ in range(200):
+    for round_ in range(200):
         chosen = candidate.draws[rng.integers(len(candidate.draws), size=4 * walkers)]
-        moved = chosen + 0.1 * spread * rng.standard_normal(chosen.shape)
+        size = 0.1 * 0.95**round_  # ever smaller, for a prior with little room
+        moved = chosen + size * spread * rng.standard_normal(chosen.shape)
         found = np.concatenate([found, moved[np.isfinite(candidate.posterior(moved))]])
         if len(found) >= walkers:
             return found[:walkers]
-    raise FitError(f"{candidate.posterior.model.label}: no starting place inside the prior; the range is too narrow")
+    names = ", ".join(candidate.posterior.model.pieces)
+    raise FitError(
+        f"sequence {names}: no starting place inside the prior; the resolved range has no room for its transitions; "
+        "use data that resolve more separations, or fewer transitions (models.most_transitions)"
+    )
 
 
 def infer(curve: str, named: list[Candidate], free: list[Candidate], dispersion: float, **how) -> Inference:

@@ -13,6 +13,7 @@ from regimes.likelihood.exit_rate import ExitRateLikelihood
 LEAST_STEPS = 3  # intervals that a slope is fitted to
 CHANGING = np.log(3.0)  # ln Bayes factor of a changing exponent over a constant one
 _TAIL = 0.025
+_LEAST_DRAWS = 20  # between the ends; with fewer, all of the posterior lies at the end
 
 
 @dataclass(frozen=True, slots=True)
@@ -24,7 +25,7 @@ class RangeSlope:
     low, high : float [m]
         The range used, on thresholds.
     draws : (n,) float array
-        Posterior of alpha, saturated beyond 1 and 3; empty for kind "none".
+        Posterior of alpha from 1 to 3; without the saturated ends for a bound; empty for kind "none".
     kind : str
         "estimate", "lower_bound", "upper_bound" or "none".
     reason : str
@@ -80,7 +81,7 @@ def slope_over(likelihood: ExitRateLikelihood, low: float, high: float, rng, siz
     others = [b.log_evidence for b in bent if b is not None]
     if others and logsumexp(others) - np.log(len(others)) - constant.log_evidence > CHANGING:
         return RangeSlope(low, high, empty, "none", "the exponent changes inside the range")
-    draws = np.clip(constant.sample(size, rng)[:, 1], 1.0, 3.0)  # the prior goes on beyond, the kernel does not
+    draws = np.clip(constant.sample(2 * size, rng)[:, 1], 1.0, 3.0)  # the prior goes on beyond, the kernel does not
     return _judged(low, high, draws)
 
 
@@ -97,8 +98,19 @@ def mixed_slope_over(posteriors, low: float, high: float, rng, size: int = 4000)
 
 
 def _judged(low: float, high: float, draws) -> RangeSlope:
+    """The slope with its kind; a bound keeps only draws between the saturated ends.
+
+    The prior beyond 3 (or below 1) decides how much of the posterior sits at the end, and would pull the bound there:
+    with it, bounds printed at 95 % held in 83 % of simulated cases of alpha 2.6 in a short range.
+    """
     kind, reason = classify(draws)
-    return RangeSlope(low, high, np.empty(0) if kind == "none" else draws, kind, reason)
+    if kind == "none":
+        return RangeSlope(low, high, np.empty(0), kind, reason)
+    if kind != "estimate":
+        between = draws[(draws > 1.0 + 1e-9) & (draws < 3.0 - 1e-9)]
+        end = 3.0 if kind == "lower_bound" else 1.0
+        draws = between if between.size >= _LEAST_DRAWS else np.full(1, end)
+    return RangeSlope(low, high, draws, kind, reason)
 
 
 def classify(draws) -> tuple[str, str]:

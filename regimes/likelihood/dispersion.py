@@ -10,6 +10,8 @@ from regimes.errors import DataError
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 
 _LAGS = 4  # thresholds over which correlation is looked for
+_SHUFFLES = 499
+UNLIKELY = 0.01  # p-value below which releases are taken to differ as a whole
 
 
 @dataclass(frozen=True, slots=True)
@@ -24,16 +26,55 @@ class Dispersion:
         Pooled correlation between thresholds 1 .. k steps apart that is larger than chance gives.
     clusters : float
         Effective number of clusters.
+    together : float
+        Variance of the summed scores of a cluster over that of independent scores: 1 where thresholds are
+        independent, larger where a release is fast or slow as a whole.
+    together_p : float
+        Probability of so large a value if clusters did not differ; NaN where pairs connect clusters.
     """
 
     pooled: float
     correlation: np.ndarray
     clusters: float
+    together: float = 1.0
+    together_p: float = float("nan")
+
+    @property
+    def releases_differ(self) -> bool:
+        """Whether clusters are fast or slow as a whole, beyond chance."""
+        return bool(self.together_p < UNLIKELY)
 
     @property
     def total(self) -> float:
         """phi with the cross-threshold terms: what the likelihood is divided by."""
-        return float(self.pooled * (1.0 + 2.0 * self.correlation.sum()))
+        near = 1.0 + 2.0 * float(self.correlation.sum())
+        return float(self.pooled * (max(near, self.together) if self.releases_differ else near))
+
+
+def exit_scatter(growth, log_ratio):
+    r"""Squared coefficient of variation of the exit times of a pair under K ~ r^(2 - q), two dimensions.
+
+    .. math:: CV^2 = \frac{q}{(2 + q) \tanh(q \ln\rho / 2)}, \quad q \to 0: \; 1 / \ln\rho
+
+    Parameters
+    ----------
+    growth : (n,) float array
+        q = d ln mu / d ln r, 0 (exponential) to 2 (diffusive).
+    log_ratio : (n,) float array
+        ln rho.
+
+    Returns
+    -------
+    (n,) float array
+
+    Notes
+    -----
+    r^(q/2) is a Bessel process of dimension 4 / q; its exit times have variance 2 (R^4 - x^4) / (D^2 (D + 2)) about a
+    mean (R^2 - x^2) / D, e.g. Borodin & Salminen (2002) Handbook of Brownian Motion. For rho = sqrt 2: 2.9
+    exponential, 1.5 diffusive.
+    """
+    q = np.maximum(np.asarray(growth, float), 1e-6)
+    return q / ((2.0 + q) * np.tanh(0.5 * q * log_ratio))
 
 
 def scores(exits, risk, weight):
@@ -96,10 +137,27 @@ def measure_dispersion(exits, risk, weight) -> Dispersion:
         if value < 2.0 / np.sqrt(clusters * (u.shape[1] - k)):
             break
         rho.append(value)
-    return Dispersion(square / total, np.array(rho), clusters)
+    return Dispersion(square / total, np.array(rho), clusters, *_together(u, risk, weight))
 
 
-def exit_rate_likelihood(statistics: ExitStatistics, credited) -> tuple[ExitRateLikelihood, Dispersion]:
+def _together(u, risk, weight) -> tuple[float, float]:
+    """Excess variance of the summed scores of clusters; its p-value by shuffling clusters at each threshold."""
+    square = float(np.sum(u**2))
+    if np.any(weight < 0) or u.shape[0] < 4 or u.shape[1] < 3:
+        return 1.0, float("nan")
+    seen = float(np.sum(u.sum(axis=1) ** 2)) / square
+    rng = np.random.default_rng(0)
+    active = [np.flatnonzero(risk[:, n] > 0) for n in range(u.shape[1])]
+    larger = 0
+    for _ in range(_SHUFFLES):
+        total = np.zeros(u.shape[0])
+        for n, rows in enumerate(active):
+            total[rows] += u[rng.permutation(rows), n]
+        larger += float(np.sum(total**2)) / square >= seen
+    return seen, (1.0 + larger) / (1.0 + _SHUFFLES)
+
+
+def exit_rate_likelihood(statistics: ExitStatistics, credited, scatter=None) -> tuple[ExitRateLikelihood, Dispersion]:
     """Likelihood of the resolved exit statistics.
 
     Parameters
@@ -108,21 +166,29 @@ def exit_rate_likelihood(statistics: ExitStatistics, credited) -> tuple[ExitRate
         Resolved intervals only.
     credited : (n_row, n) float array
         Exits with credit for unfinished passages, same intervals.
+    scatter : (n,) float array, optional
+        Relative dispersion of each interval, about 1 on average, from `exit_scatter`; default: the same for all.
+
+    Notes
+    -----
+    Exits and time at risk enter divided by the scatter, so that interval n has dispersion phi scatter_n.
     """
     weight = statistics.weight
-    spread = measure_dispersion(credited, statistics.time_at_risk, weight)
+    share = 1.0 if scatter is None else 1.0 / np.asarray(scatter, float)
+    exits, risk = credited * share, statistics.time_at_risk * share
+    spread = measure_dispersion(exits, risk, weight)
     return (
         ExitRateLikelihood(
             thresholds=np.ascontiguousarray(statistics.thresholds),
-            exits=weight @ credited,
-            risk=weight @ statistics.time_at_risk,
+            exits=weight @ exits,
+            risk=weight @ risk,
             dispersion=spread.total,
         ),
         spread,
     )
 
 
-def rate_intervals(exits, risk, log_ratio, dispersion: float, level: float):
+def rate_intervals(exits, risk, log_ratio, dispersion, level: float):
     """Central interval of each exit rate [1/s] from the gamma-shaped likelihood.
 
     Parameters

@@ -46,6 +46,7 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysi
         tracks.position_error,
         float(np.nan_to_num(rates.everything.zero_fraction[rates.resolved.intervals][0])),
         missing,
+        rates.spread.releases_differ,
     )
     decision = decide(evidence)
     moves = transition_scales(leading)

@@ -6,9 +6,9 @@ import numpy as np
 
 from regimes.analysis import RateTable
 from regimes.curves import ExitStatistics, default_times, dispersion_statistics, exit_statistics
-from regimes.curves.credit import credited_exits
+from regimes.curves.credit import credited_exits, local_growth
 from regimes.curves.resolution import ERROR_MULTIPLE, Resolved, ladder, resolved_range
-from regimes.likelihood.dispersion import Dispersion, exit_rate_likelihood, rate_intervals
+from regimes.likelihood.dispersion import Dispersion, exit_rate_likelihood, exit_scatter, rate_intervals
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 from regimes.pairs import Pairs
 from regimes.pipeline.options import Options
@@ -31,6 +31,8 @@ class Rates:
         Of the resolved intervals.
     spread : Dispersion
         Its `clusters` counts the clusters of the pairs as found.
+    scatter : (n,) float array
+        Relative dispersion of all intervals, from the theory of exit times.
     pairs : Pairs
         With the clusters that were used as independent.
     within_release : bool
@@ -42,6 +44,7 @@ class Rates:
     resolved: Resolved
     likelihood: ExitRateLikelihood
     spread: Dispersion
+    scatter: np.ndarray
     pairs: Pairs
     within_release: bool
 
@@ -67,9 +70,11 @@ def exit_rates(tracks: Tracks, pairs: Pairs, options: Options) -> Rates:
     credited = credited_exits(everything)
     resolved = resolved_range(everything, credited, starts, tracks.position_error)
     cut = resolved.intervals
-    likelihood, spread = exit_rate_likelihood(everything.select(cut), credited[:, cut])
+    scatter = exit_scatter(local_growth(everything, credited), everything.log_ratio)
+    scatter = scatter / np.average(scatter[cut], weights=everything.weight @ everything.exits[:, cut])
+    likelihood, spread = exit_rate_likelihood(everything.select(cut), credited[:, cut], scatter[cut])
     spread = replace(spread, clusters=clusters)
-    return Rates(everything, credited, resolved, likelihood, spread, pairs, within_release)
+    return Rates(everything, credited, resolved, likelihood, spread, scatter, pairs, within_release)
 
 
 def largest_separation(tracks: Tracks, pairs: Pairs) -> float:
@@ -83,8 +88,8 @@ def rate_table(rates: Rates) -> RateTable:
     s = rates.everything
     exits, risk = s.weight @ rates.credited, s.weight @ s.time_at_risk
     usable = np.where((exits > 0) & (risk > 0), exits, np.nan)
-    low68, high68 = rate_intervals(usable, risk, s.log_ratio, rates.spread.total, 0.68)
-    low95, high95 = rate_intervals(usable, risk, s.log_ratio, rates.spread.total, 0.95)
+    low68, high68 = rate_intervals(usable, risk, s.log_ratio, rates.spread.total * rates.scatter, 0.68)
+    low95, high95 = rate_intervals(usable, risk, s.log_ratio, rates.spread.total * rates.scatter, 0.95)
     resolved = np.zeros(exits.size, bool)
     resolved[rates.resolved.intervals] = True
     return RateTable(

@@ -4,9 +4,8 @@ import numpy as np
 
 from regimes.analysis import Analysis
 from regimes.inference.record import Fit, Inference
-from regimes.report.digits import between, fixed, probability, rounded, spread
+from regimes.report.digits import fixed, probability
 from regimes.report.words import CURVES, DISPLAY, sequence
-from regimes.units import KM
 from regimes.verdict.digits import km
 
 MODELS_SHOWN = 6  # of each curve in the table of convergence
@@ -24,9 +23,8 @@ def _opinion(inference: Inference) -> dict[str, object]:
     leading = [(sequence(inference.named[i].model.pieces), probability(float(p[i]))) for i in order]
     moves = []
     for transition in inference.transitions()[:3]:
-        low, middle, high = np.percentile(transition.draws / KM, (16, 50, 84))
-        sigma = spread(low, high)
-        scale = f"{rounded(middle, sigma)} km [{between(low, high, sigma)}]"
+        low, middle, high = np.percentile(transition.draws, (16, 50, 84))
+        scale = f"{km(middle)} km [{km(low)} to {km(high)}]"
         words = f"{sequence((transition.lower, transition.upper))}: {scale}"
         moves.append((words, probability(transition.probability)))
     return {

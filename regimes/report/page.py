@@ -11,10 +11,11 @@ from markupsafe import Markup, escape
 from regimes.analysis import Analysis
 from regimes.report.captions import TITLES, caption, description
 from regimes.report.convergence import compared_rows, convergence_rows, not_shown, opinion_rows
-from regimes.report.digits import between, count, fixed, probability, rounded, significant, span, spread
+from regimes.report.digits import count, fixed, probability, significant, span
 from regimes.report.tables import slope_text
 from regimes.report.words import CURVES, DECISIONS, DISPLAY, sequence
 from regimes.units import DAY, HOUR, KM
+from regimes.verdict.digits import km
 from regimes.verdict.record import Slope, TransitionScale
 from regimes.verdict.rule import CHALLENGE
 
@@ -113,12 +114,11 @@ def _facts(analysis: Analysis) -> list[tuple[str, str, str]]:
 
 def _transition(transition: TransitionScale) -> tuple[str, str, str, str, str]:
     scale = transition.scale
-    sigma = spread(scale.lo68, scale.hi68) / KM
     return (
         sequence((transition.lower, transition.upper)),
-        rounded(scale.median / KM, sigma),
-        between(scale.lo68 / KM, scale.hi68 / KM, sigma),
-        between(scale.lo95 / KM, scale.hi95 / KM, sigma),
+        km(scale.median),
+        f"{km(scale.lo68)} to {km(scale.hi68)}",
+        f"{km(scale.lo95)} to {km(scale.hi95)}",
         probability(transition.probability),
     )
 
@@ -141,7 +141,7 @@ def _provenance(analysis: Analysis) -> list[tuple[str, str]]:
         ("fixes", f"{count(origin.n_fixes)} of {count(origin.n_particles)} particles, from {origin.source}"),
         ("SHA-256 of the input", origin.sha256 or "none: the data came from memory"),
         ("pairs", f"{count(origin.n_pairs)}, {origin.kind}"),
-        ("largest separation at the start", f"{origin.max_separation / KM:.3g} km"),
+        ("limit of the separation at the start", f"{origin.max_separation / KM:.3g} km"),
         ("separation at the start", "median {} km, 90th percentile {} km".format(*start)),
         ("duration of the pairs", f"median {significant(origin.median_duration / DAY)} d"),
         ("common time step", f"{origin.step / HOUR:g} h"),

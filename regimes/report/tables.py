@@ -9,9 +9,9 @@ import xarray as xr
 
 from regimes.analysis import Analysis
 from regimes.curves import Curve
-from regimes.report.digits import between, probability, rounded, span, spread
+from regimes.report.digits import probability, span
 from regimes.report.words import CURVES, DISPLAY
-from regimes.units import KM
+from regimes.verdict.digits import km
 from regimes.verdict.digits import slope_text as alpha
 from regimes.verdict.record import Slope, TransitionScale
 
@@ -186,8 +186,7 @@ def tex_table(analysis: Analysis) -> str:
 
 def _transition_row(transition: TransitionScale) -> str:
     scale = transition.scale
-    sigma = spread(scale.lo68, scale.hi68) / KM
-    where = f"{rounded(scale.median / KM, sigma)} ({between(scale.lo95 / KM, scale.hi95 / KM, sigma)})"
+    where = f"{km(scale.median)} ({km(scale.lo95)} to {km(scale.hi95)})"
     name = f"{DISPLAY[transition.lower]} to {DISPLAY[transition.upper]}"
     return _row(name, where, f"probability {probability(transition.probability)}")
 

@@ -89,7 +89,7 @@ def plain(value: Any) -> Any:
     if isinstance(value, int | np.integer):
         return int(value)
     if isinstance(value, float | np.floating):
-        return float(value) if math.isfinite(value) else None
+        return float(f"{value:.6g}") if math.isfinite(value) else None
     if isinstance(value, dict):
         return {key: plain(item) for key, item in value.items()}
     if isinstance(value, list | tuple | np.ndarray):

@@ -41,6 +41,8 @@ class Evidence:
         Share of exits inside one sample at the lowest resolved separation.
     second_missing : str
         Why there is no second opinion; empty otherwise.
+    releases_differ : bool
+        Whether the scores of a cluster go together across separations, beyond chance.
     """
 
     exit_rate: Inference
@@ -55,6 +57,7 @@ class Evidence:
     position_error: float
     zero_fraction: float
     second_missing: str
+    releases_differ: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -86,10 +89,13 @@ def decide(evidence: Evidence) -> Decision:
         text = f"a free exponent is preferred to every named sequence by a Bayes factor of {factor} (20 is enough)"
         return Decision("none_fits", (text,), (), cautions)
     if evidence.fit_p_value < LEAST_P:
-        text = f"the exit rates are improbable under every named sequence ({p_value(evidence.fit_p_value)})"
+        text = (
+            "the exit rates are improbable under the named sequences, weighed by probability "
+            f"({p_value(evidence.fit_p_value)})"
+        )
         if evidence.free_p_value < LEAST_P:
             text += (
-                ", and under every kernel with a free exponent too: the curve is not a power law in two or three pieces"
+                ", and under the kernels with free exponents too: the curve is not a power law in two or three pieces"
             )
         return Decision("none_fits", (text,), (), cautions)
     stops = [*against]
@@ -100,7 +106,7 @@ def decide(evidence: Evidence) -> Decision:
         )
     if not found:
         stops += _why_nothing(leading, mask)
-    return Decision("undecided" if stops else "supported", tuple(stops), found, cautions)
+    return Decision("undecided", tuple(stops), (), cautions) if stops else Decision("supported", (), found, cautions)
 
 
 def contradictions(found, second: BySeparation | None) -> list[str]:
@@ -186,6 +192,15 @@ def _of_the_data(evidence: Evidence) -> list[Caution]:
 
 def _of_the_fits(evidence: Evidence, against: list[str]) -> list[Caution]:
     out = []
+    if evidence.releases_differ:
+        out.append(
+            Caution(
+                "releases_differ",
+                "What a release shows at one separation goes with what it shows at others, beyond chance: its pairs "
+                "move together, or releases are fast or slow as a whole. Errors were widened for it. If rates differ, "
+                "the fast releases alone reach large separations, and slopes come out too steep.",
+            )
+        )
     if evidence.second_missing:
         out.append(Caution("no_second_opinion", f"No second opinion: {evidence.second_missing}."))
     out += [Caution("second_opinion_differs", text[0].upper() + text[1:] + ".") for text in against]

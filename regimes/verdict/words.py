@@ -6,7 +6,7 @@ from regimes.inference.record import Inference
 from regimes.theory.regimes import REGIMES
 from regimes.units import DAY, HOUR
 from regimes.verdict.decide import Decision
-from regimes.verdict.digits import km, km_interval, listed, percent, slope_text
+from regimes.verdict.digits import km, km_interval, listed, percent, rounded_down, slope_text
 from regimes.verdict.record import Slope
 
 
@@ -82,9 +82,9 @@ def methods_text(facts: dict, fit: Inference, decision: Decision, sentence: str,
     unit = "release" if facts["kind"] == "launched" else "cluster"
     return (
         f"Separations of {facts['n_pairs']} {_kind(facts['kind'])}pairs of {facts['n_particles']} particles in {shape} "
-        f"({facts['clusters']:.0f} effective; pairs start within {km(facts['max_separation'])} km, median record "
-        f"{days:.0f} d, {facts['step'] / HOUR:.3g} h sampling) were reduced to exit rates between thresholds of "
-        f"ratio {facts['ratio']:.3g} from {km(resolved[0])} to {km(resolved[1])} km, counting time at risk and "
+        f"({rounded_down(facts['clusters'], 0)} effective; pairs start within {km(facts['max_separation'])} km, "
+        f"median record {days:.0f} d, {facts['step'] / HOUR:.3g} h sampling) were reduced to exit rates between "
+        f"thresholds of ratio {facts['ratio']:.3g} from {km(resolved[0])} to {km(resolved[1])} km, counting time at risk and "
         f"crediting unfinished passages. Sequences of named regimes and kernels with free exponents were compared by "
         f"their evidence under a quasi-likelihood whose dispersion ({fit.dispersion:.2g}) comes from "
         f"the scatter between {'particles' if facts['within_release'] else unit + 's'} (regimes {facts['version']}). "
