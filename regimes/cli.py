@@ -85,9 +85,7 @@ def _parser() -> argparse.ArgumentParser:
     run.add_argument(
         "--seed", type=partial(_whole, least=0), metavar="N", help="random seed (default: that of the case file)"
     )
-    run.add_argument(
-        "--jobs", type=partial(_whole, least=1), metavar="N", help="threads (default: one for each core)"
-    )
+    run.add_argument("--jobs", type=partial(_whole, least=1), metavar="N", help="threads (default: one for each core)")
     run.set_defaults(command=_run)
 
     check = commands.add_parser("check", help="read the data of a case, count what is there, fit nothing")
