@@ -15,6 +15,7 @@ from regimes.errors import DataError
 from regimes.geodesy import to_cartesian
 from regimes.inference.spectrum_fit import fit_spectrum
 from regimes.inference.spectrum_models import SpectrumModel, SpectrumPosterior, make_space
+from regimes.inference.spectrum_range import constrained_wavenumbers, divergent_share, slope_information
 from regimes.likelihood.structure import StructureLikelihood, structure_likelihood, usable_bins
 from regimes.pairs import LAUNCHED, Pairs
 from regimes.synthetic.fourier_flow import fourier_tracks
@@ -408,6 +409,45 @@ def test_models_are_broken_power_laws():
     noise = SpectrumPosterior(model, space, replace(likelihood, floor=1e-3)).mean(theta)
     clean = SpectrumPosterior(SpectrumModel(2, False), space, likelihood).mean(theta[:, :-1])
     assert noise[0, 6] == pytest.approx(clean[0, 6], rel=1e-9)  # the middle is the datum in both
+
+
+def a_spectrum(statistics, alpha=2.0):
+    """Model, repeated draws of one spectrum, space and likelihood for the bins of some statistics."""
+    likelihood = structure_likelihood(statistics)
+    space = make_space(likelihood)
+    theta = SpectrumModel(1, False).parameters(np.zeros((50, 5)), space)
+    theta[:, 0] = alpha
+    return SpectrumModel(1, False), theta, space, likelihood
+
+
+def test_information_grows_with_clusters_and_lies_at_the_separations():
+    few, many = (a_spectrum(made_up(n_cluster=n)) for n in (15, 150))
+    k, gain = slope_information(*many)
+    assert np.all(gain >= 0)
+    assert gain.max() > slope_information(*few)[1].max() + 0.3
+    low, high = constrained_wavenumbers(*many)
+    r = many[3].separation
+    # A separation feels wavelengths around 2 pi r: inside the range, and not decades beyond it.
+    assert low < np.log(1 / r[-3]) < np.log(1 / r[2]) < high
+    assert low > np.log(0.05 / r[-1])
+    assert high < np.log(20 / r[0])
+    wide = constrained_wavenumbers(*few[:3], replace(few[3], shape=np.full(r.size, 1e-3)))
+    assert wide[0] == wide[1]
+
+
+@pytest.mark.parametrize("share", [0.0, 0.4, 1.0])
+def test_divergent_share_of_exact_components(share):
+    whole = made_up(n_cluster=200, scatter=0.05)
+    model, theta, space, _ = a_spectrum(whole)
+    energy = np.exp(model.log_energy(theta[:1], space.transform.log_wavenumber))
+    parts = [f(energy, [share])[0] for f in (space.transform.longitudinal, space.transform.transverse)]
+    ratio = whole.along_short / whole.along_short.mean(axis=0)
+    sums = {}
+    for name, value in zip(("along", "across"), parts, strict=True):
+        sums |= {f"{name}_short": 50.0 * value * ratio, f"{name}_long": 50.0 * value * ratio}
+    low, middle, high = divergent_share(replace(whole, **sums), model, theta, space, np.random.default_rng(0))
+    assert middle == pytest.approx(share, abs=0.01)  # scatter is common to both components
+    assert low <= middle <= high
 
 
 @pytest.fixture(scope="module")

@@ -64,7 +64,8 @@ class SpectrumFit:
         the spectrum ends or bends within two decades.
     apparent_divergent : (3,) float array
         2.5, 50 and 97.5 % points of the divergent share of the energy that the components imply. Pairs that
-        are still separating make it too large (simulated: 0.3 to 0.5 in flows without divergence).
+        are still separating make it too large (simulated: 0.33 on average in flows without divergence, where
+        it should be 0).
     """
 
     kind: str
