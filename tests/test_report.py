@@ -316,16 +316,16 @@ def test_schema_refuses_what_it_should(analysis, schema, path, value):
 def test_document_numbers_are_those_of_the_verdict(analysis):
     document, verdict = verdict_document(analysis), analysis.verdict
     assert document["resolved_km"] == [1.2, 150.0]
-    assert document["supported"][0]["low_km"] == pytest.approx(1.2, rel=1e-12)  # round-off
+    assert document["supported"][0]["low_km"] == pytest.approx(1.2, rel=1e-5)  # six printed digits
     transition = document["transitions"][0]
     assert (transition["from"], transition["to"]) == ("richardson", "diffusive")
     assert transition["median_km"] == pytest.approx(
-        verdict.transitions[0].scale.median / 1000.0, rel=1e-12
-    )  # round-off
-    assert sum(s["probability"] for s in document["sequences"]) == pytest.approx(1.0, rel=1e-12)  # round-off
+        verdict.transitions[0].scale.median / 1000.0, rel=1e-5
+    )  # six printed digits
+    assert sum(s["probability"] for s in document["sequences"]) == pytest.approx(1.0, rel=1e-5)  # six printed digits
     by = document["by_separation"]
     assert len(by["edges_km"]) == len(by["separation_km"]) + 1
-    assert np.allclose(sum(np.array(p) for p in by["probability"].values()), 1.0, rtol=1e-12)  # round-off
+    assert np.allclose(sum(np.array(p) for p in by["probability"].values()), 1.0, rtol=1e-5)  # six printed digits
     none = [s for s in document["slopes"] if s["kind"] == "none"]
     assert none
     assert all(s["median"] is None for s in none)

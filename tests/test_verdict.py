@@ -152,12 +152,16 @@ BRANCHES = [
         r"a free exponent is preferred to every named sequence by a Bayes factor of 31 \(20 is enough\)",
     ),
     ({"exit_rate": inference(challenge=60.0)}, "none_fits", "by a Bayes factor of over 1000 "),
-    ({"fit_p_value": 0.002}, "none_fits", r"improbable under every named sequence \(predictive p = 0.002\)$"),
+    (
+        {"fit_p_value": 0.002},
+        "none_fits",
+        r"improbable under the named sequences, weighed by probability \(predictive p = 0.002\)$",
+    ),
     ({"fit_p_value": 0.0}, "none_fits", r"\(predictive p < 1e-6\)$"),
     (
         {"fit_p_value": 0.002, "free_p_value": 0.004},
         "none_fits",
-        r"\), and under every kernel with a free exponent too: the curve is not a power law in two or three pieces$",
+        r"\), and under the kernels with free exponents too: the curve is not a power law in two or three pieces$",
     ),
 ]
 
