@@ -422,7 +422,7 @@ def a_spectrum(statistics, alpha=2.0):
 
 def test_information_grows_with_clusters_and_lies_at_the_separations():
     few, many = (a_spectrum(made_up(n_cluster=n)) for n in (15, 150))
-    k, gain = slope_information(*many)
+    _, gain = slope_information(*many)
     assert np.all(gain >= 0)
     assert gain.max() > slope_information(*few)[1].max() + 0.3
     low, high = constrained_wavenumbers(*many)
