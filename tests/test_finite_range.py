@@ -101,5 +101,5 @@ def test_finite_range_slopes_hold_in_flows_with_memory(alpha, speed):
         quoted = found[~np.isnan(found[:, i, 1]), i]
         held = np.mean((quoted[:, 0] <= alpha) & (alpha <= quoted[:, 2]))
         text.append(f"{name}: held {held:.2f} of {len(quoted)}, mean error {np.mean(quoted[:, 1] - alpha):+.2f}")
-    print(f"alpha {alpha:.2f}: " + "; ".join(text))  # noqa: T201 - the figure is the product of this test
+    print(f"alpha {alpha:.2f}: " + "; ".join(text))
     assert held >= 0.88, text

@@ -1,14 +1,18 @@
 """How often a regime is called, rightly and wrongly: known truth, hundreds of campaigns."""
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
+from regimes.inference.average import transitions
 from regimes.pipeline import Options
 from regimes.pipeline.quick import quick_fit
 from regimes.theory.regimes import REGIMES
 from regimes.verdict.rule import PROBABLE, SPAN
 from tests.worlds import in_parallel, kernel, lossy_pairs
 
+NAMED = {r.exponent for r in REGIMES.values()}
 pytestmark = [pytest.mark.slow, pytest.mark.calibration]
 
 
@@ -31,7 +35,11 @@ def campaign(arguments):
         first[i] = fit.probability[name] >= PROBABLE
     not_diffusive = [i for i, name in enumerate(REGIMES) if name != "diffusive"]
     wrong = [i for i, r in enumerate(REGIMES.values()) if np.any(held[i] & far & (np.abs(truth - r.exponent) > 1e-6))]
+    moves = {(t.lower, t.upper): np.quantile(t.draws / 1e3, (0.025, 0.975)) for t in transitions(fit.named)}
+    names = [next(n for n, r in REGIMES.items() if r.exponent == e) if e in NAMED else "" for e in exponents]
+    ends = [moves.get(pair, (np.inf, np.inf)) for pair in pairwise(names)]
     return {
+        "moves": float(np.mean([low <= b <= high for b, (low, high) in zip(breaks, ends, strict=True)])),
         "best": "".join(REGIMES[p].letter for p in fit.best),
         "outside": bool(np.any(held & missed)),
         "any": bool(np.any(held[not_diffusive])),
@@ -59,7 +67,7 @@ def test_intermediate_slopes_are_not_called_named_regimes(slope, rate, n_pair):
         f"{share(found, 'challenged'):.2f}; "
         f"free interval covers {share(found, 'covered'):.3f}"
     )
-    print(text)  # noqa: T201 - the figure is the product of this test
+    print(text)
     assert share(found, "outside") <= 0.08, text
     assert share(found, "covered") >= 0.93, text
     assert share(found, "any") < share(found, "first"), text
@@ -73,10 +81,12 @@ def test_three_regimes_are_told_apart():
     text = (
         f"exponential, Richardson, diffusive, 50 pairs: true sequence first {right:.2f}, wrong regime supported "
         f"{share(found, 'wrong'):.2f}, any but diffusive {share(found, 'any'):.2f}, free interval covers "
-        f"{share(found, 'covered'):.3f}, free exponent preferred {share(found, 'challenged'):.2f}"
+        f"{share(found, 'covered'):.3f}, free exponent preferred {share(found, 'challenged'):.2f}, 95 % intervals of "
+        f"the transitions hold {share(found, 'moves'):.2f}"
     )
-    print(text)  # noqa: T201 - the figure is the product of this test
+    print(text)
     assert right >= 0.80, text
     assert share(found, "wrong") <= 0.02, text
     assert share(found, "challenged") <= 0.05, text
+    assert share(found, "moves") >= 0.88, text
     assert share(found, "covered") >= 0.93, text
