@@ -10,7 +10,7 @@ from regimes.synthetic.spectrum import Spectrum
 from regimes.units import DAY, HOUR
 from tests.worlds import in_parallel
 
-pytestmark = [pytest.mark.slow, pytest.mark.calibration]
+pytestmark = pytest.mark.slow  # hours on two cores; run by hand
 
 REPLICATES = 100
 # Slopes from short to long waves, wavelengths of breaks [m], days, position error [m], slope that is true.
