@@ -9,6 +9,7 @@ from scipy.optimize import least_squares
 
 from regimes.curves import dispersion_statistics
 from regimes.errors import CaseError, DataError
+from regimes.geodesy import to_cartesian
 from regimes.particles import (
     MeanFlow,
     absolute_dispersion,
@@ -311,6 +312,17 @@ def test_rotation_mirror_and_shift(base):
     assert mirrored.scale().east_time == found.scale().east_time
 
 
+def test_plane_and_ellipsoid_agree(base):
+    """On the equator a metre is 1/a radian of longitude and 1/(a (1 - e2)) of latitude (geodesy, from memory)."""
+    tracks, found = base
+    x, y = 0.01 * tracks.position[:, :2].T  # within 10 km, where the plane is good to (10 / 6378)^2
+    a, e2 = 6378137.0, 0.00669437999014
+    lon, lat = np.degrees(x / a) + 179.99, np.degrees(y / (a * (1 - e2)))
+    place = replace(tracks, position=to_cartesian(lon, lat), planar=False, position_error=2.0)
+    powers = np.array([0.01, 1e-4, 1e-4, 1e-4] + [1.0, 0.01] * 3)
+    np.testing.assert_allclose(all_numbers(single_particle(place)), powers[:, None] * all_numbers(found), rtol=1e-4)
+
+
 def test_order_of_tracks_does_not_change_values(base):
     tracks, found = base
     order = np.random.default_rng(1).permutation(tracks.n_track)
@@ -367,6 +379,18 @@ def test_interval_of_a_mean_is_students():
     assert 0.5 * (found.high - found.low) == pytest.approx(half, rel=0.06)
 
 
+def test_positive_numbers_have_intervals_symmetric_in_the_logarithm():
+    draws = np.append(2.0, 2.0 * np.exp(0.3 * np.random.default_rng(1).standard_normal(200_000)))
+    found = estimate(draws, 1000, positive=True)
+    assert found.high / 2.0 == pytest.approx(2.0 / found.low, rel=1e-12)
+    # 1.96 standard deviations of the logarithm; t with 999 degrees of freedom is 0.1 % more.
+    assert np.log(found.high / 2.0) == pytest.approx(1.96 * 0.3 * 1.0017, rel=0.01)
+    # No logarithm of what comes close to zero.
+    near_zero = estimate(draws - 1.9, 1000, positive=True)
+    assert near_zero == estimate(draws - 1.9, 1000)
+    assert near_zero.low < 0.0 < near_zero.high
+
+
 def test_a_slow_decline_does_not_level_off():
     lag = np.linspace(0.0, 10.0, 101)
     flat, rising = np.exp(-lag)[None], (1.0 / (1.0 + lag))[None]
@@ -396,6 +420,9 @@ def test_one_drifter_has_numbers_without_intervals():
 def test_cautions_of_step_noise_and_mean():
     coarse = single_particle(drifters(n=12, step=12 * HOUR))
     assert any(c.startswith("velocities are differences over two steps of 12 h") for c in coarse.cautions)
+    restless = single_particle(drifters(n=12, days=10, step=HOUR, motion=Motion(0.04, 2.0 / HOUR)))
+    assert any(c.startswith("velocities are forgotten within two steps of 1 h") for c in restless.cautions)
+    assert near(restless.diffusivity.mean, 0.04 * HOUR / 2)  # the diffusivity is right all the same
     noisy = single_particle(drifters(n=12, step=HOUR, position_error=1100.0))
     assert any(c.startswith("position errors make more velocity variance") for c in noisy.cautions)
     assert near(noisy.velocity, 0.2)  # and yet the noise is taken out

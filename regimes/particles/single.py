@@ -84,7 +84,7 @@ def single_particle(
     return SingleParticle(
         dispersion=absolute_dispersion(velocities),
         correlation=correlation_curves(curves.lag, curves.covariance),
-        velocity=estimate(np.sqrt(np.maximum(variance, 0.0)), n_unit),
+        velocity=estimate(np.sqrt(np.maximum(variance, 0.0)), n_unit, positive=True),
         scales=scales,
         diffusivity=tensor,
         levelling=level,
@@ -133,8 +133,8 @@ def _window(velocities: Velocities, chosen: np.ndarray, longest: int, window: fl
 def _scale(method: str, covariance: np.ndarray, variance: np.ndarray, step: float, n_unit: int) -> Scale:
     parts = (covariance[..., 0] + covariance[..., 1], covariance[..., 0], covariance[..., 1])
     both, east, north = (integral_times(_normalised(part), step, method) for part in parts)
-    times: list[Estimate] = [estimate(values, n_unit) for values in (both, east, north)]
-    return Scale(method, *times, length=estimate(np.sqrt(np.maximum(variance, 0.0)) * both, n_unit))
+    times: list[Estimate] = [estimate(values, n_unit, positive=True) for values in (both, east, north)]
+    return Scale(method, *times, length=estimate(np.sqrt(np.maximum(variance, 0.0)) * both, n_unit, positive=True))
 
 
 def _normalised(covariance: np.ndarray) -> np.ndarray:
@@ -163,11 +163,16 @@ def _step_cautions(velocities: Velocities, scales: tuple[Scale, ...], variance: 
     found = []
     if velocities.noise > variance:
         found.append("position errors make more velocity variance than the motion: take a coarser step")
-    time = scales[METHODS.index("decaying_cosine")].time.value
-    removed = 2.0 * velocities.step / (3.0 * time) if time > 0.0 else 0.0
-    if removed > SMOOTHING:
+    time, step = scales[METHODS.index("decaying_cosine")].time.value, velocities.step
+    removed = 2.0 * step / (3.0 * time) if time > 0.0 else 0.0
+    if 0.0 < time < 2.0 * step:
         found.append(
-            f"velocities are differences over two steps of {velocities.step / HOUR:.3g} h: their variance may come "
-            f"out {removed:.0%} too low and the integral time as much too long; the diffusivity is not affected"
+            f"velocities are forgotten within two steps of {step / HOUR:.3g} h: rms velocity, integral time and length "
+            "are those of the sampling, only the diffusivity is the particles' own"
+        )
+    elif removed > SMOOTHING:
+        found.append(
+            f"velocities are differences over two steps of {step / HOUR:.3g} h: their variance may come out "
+            f"{removed:.0%} too low and the integral time as much too long; the diffusivity is not affected"
         )
     return tuple(found)

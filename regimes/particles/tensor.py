@@ -73,9 +73,9 @@ def diffusivity_tensor(curves: LagCurves, n_unit: int) -> DiffusivityTensor:
         low, high = np.quantile(half_trace[1:], (0.025, 0.975), axis=0)
     east, north, cross = curves.diffusivity[0].T
     return DiffusivityTensor(
-        major=estimate(major, n_unit),
-        minor=estimate(minor, n_unit),
-        mean=estimate(0.5 * (major + minor), n_unit),
+        major=estimate(major, n_unit, positive=True),
+        minor=estimate(minor, n_unit, positive=True),
+        mean=estimate(0.5 * (major + minor), n_unit, positive=True),
         angle=_direction(angle, n_unit),
         tensor=level[0][[[0, 2], [2, 1]]],
         lag=curves.lag,
