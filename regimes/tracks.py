@@ -90,10 +90,10 @@ class Tracks:
         gap = float(np.mean(np.isnan(self.position[:, 0])))
         days = (self.n_step - 1) * self.step / DAY
         tracks = "1 track" if self.n_track == 1 else f"{self.n_track} tracks"
-        return (
-            f"{tracks} every {self.step / HOUR:.4g} h, {days.min():.3g} to {days.max():.3g} days long "
-            f"(median {np.median(days):.3g}), {gap:.1%} of the steps in gaps"
-        )
+        long = f"{days.min():.3g} to {days.max():.3g} days long (median {np.median(days):.3g})"
+        if days.min() == days.max():
+            long = f"{days.min():.3g} days long"
+        return f"{tracks} every {self.step / HOUR:.4g} h, {long}, {gap:.1%} of the steps in gaps"
 
 
 def make_tracks(fixes: Fixes, step: float | None = None, longest_gap: float | None = None) -> Tracks:

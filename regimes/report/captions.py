@@ -52,8 +52,8 @@ def _passage(analysis: Analysis) -> str:
 def _exponent(analysis: Analysis) -> str:
     return (
         f"Finite-scale Lyapunov exponent against separation ({_who(analysis)}). Points: exits over time "
-        "at risk, with unfinished passages counted; bars are 95 % intervals that treat clusters as "
-        f"independent. Filled points entered the fit ({_resolved(analysis)}); hollow points did not. "
+        "at risk, with unfinished passages counted; bars are 95 % intervals of one pooled dispersion, "
+        f"clusters being independent. Filled points entered the fit ({_resolved(analysis)}); hollow points did not. "
         "Shading and line: 95 % interval and median of the sequences of named regimes; dashed: 95 % "
         "interval of kernels with free exponents. Grey crosses: the textbook estimate from completed "
         "exits alone (common practice), biased where records end. Short lines: slopes of the four "
@@ -76,7 +76,8 @@ def _slope(analysis: Analysis) -> str:
         "separation: median (line) and 95 % interval (shading). Exponents cannot tell slopes of 3 and "
         "steeper apart, nor of 1 and flatter; where the kernel is diffusive (grey strip) no spectrum is "
         "implied. A separation feels a broad band of wavelengths, so the slope is that of a range, not "
-        "of one wavenumber."
+        "of one wavenumber. Dotted: slopes expected of nonlocal stirring (3), fronts (2), Richardson "
+        "(5/3) and ballistic motion (1)."
     )
 
 

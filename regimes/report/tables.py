@@ -51,8 +51,8 @@ def curve_table(analysis: Analysis) -> pd.DataFrame:
     Returns
     -------
     pandas.DataFrame
-        Columns as in `COLUMNS`. The interval of the exponent is that of the pooled dispersion; that of every
-        other curve is the value plus and minus 1.96 standard errors over clusters.
+        Columns as in `COLUMNS`. Error and interval of the exponent are those of the pooled dispersion (half the 68 % interval); those of every
+        other curve come from the scatter of clusters, the interval plus and minus 1.96 standard errors.
     """
     frames = []
     for key, (curve, pairs) in curves_of(analysis).items():
@@ -61,6 +61,7 @@ def curve_table(analysis: Analysis) -> pd.DataFrame:
         value = curve.value
         if key == "exponent":
             value, low, high = analysis.rates.rate, analysis.rates.low95, analysis.rates.high95
+            error = 0.5 * (analysis.rates.high68 - analysis.rates.low68)  # of the same pooled dispersion
         columns = (
             key, curve.axis_name, curve.axis, AXIS_UNIT[curve.axis_name], value, curve.unit, error, low, high,
             curve.n_cluster, pairs,
