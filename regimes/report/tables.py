@@ -51,8 +51,9 @@ def curve_table(analysis: Analysis) -> pd.DataFrame:
     Returns
     -------
     pandas.DataFrame
-        Columns as in `COLUMNS`. Error and interval of the exponent are those of the pooled dispersion (half the 68 % interval); those of every
-        other curve come from the scatter of clusters, the interval plus and minus 1.96 standard errors.
+        Columns as in `COLUMNS`. Error (half the 68 % interval) and interval of the exponent are those of the pooled
+        dispersion; those of every other curve come from the scatter of clusters, the interval plus and minus 1.96
+        standard errors.
     """
     frames = []
     for key, (curve, pairs) in curves_of(analysis).items():
