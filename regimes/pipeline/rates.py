@@ -8,6 +8,7 @@ from regimes.analysis import RateTable
 from regimes.curves import ExitStatistics, default_times, dispersion_statistics, exit_statistics
 from regimes.curves.credit import credited_exits, local_growth
 from regimes.curves.resolution import ERROR_MULTIPLE, Resolved, ladder, resolved_range
+from regimes.errors import DataError
 from regimes.likelihood.dispersion import Dispersion, exit_rate_likelihood, exit_scatter, rate_intervals
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 from regimes.pairs import Pairs
@@ -55,8 +56,10 @@ def exit_rates(tracks: Tracks, pairs: Pairs, options: Options) -> Rates:
     Raises
     ------
     DataError
-        If too few separations are resolved.
+        If there is no pair, or too few separations are resolved.
     """
+    if pairs.n_pair == 0:
+        raise DataError("exit rates: got no pairs; need at least one; widen the rules by which pairs are found")
     starts = pairs.start_separation
     smallest = max(ERROR_MULTIPLE * tracks.position_error, float(np.quantile(starts, 0.05)), 1.0)
     largest = max(largest_separation(tracks, pairs), 4.0 * smallest)
