@@ -71,7 +71,7 @@ def bridge(log_posterior, draws, log_values, seed: int, size: int = 3000) -> tup
             return log_z, float(np.sqrt(f2.var() / n2 + f1.var() / n1))
     raise FitError(
         f"bridge sampling: got a last change of {moved:.1e} in ln Z after 200 rounds; must be below 1e-8; the draws do "
-        "not cover the posterior: sample longer"
+        "not cover the posterior; look at the convergence of the fit, and whether some pairs are copies of others"
     )
 
 

@@ -18,65 +18,22 @@ from regimes.units import DAY
 from regimes.verdict.decide import Evidence, decide
 from regimes.verdict.numbers import by_separation, sequences, slope_record, transition_scales
 from regimes.verdict.record import Caution, Slope, Supported, Verdict
+from regimes.verdict.rule import CHALLENGE
 from regimes.verdict.words import methods_text, verdict_sentence
 
 _LIBRARIES = ("numpy", "scipy", "numba", "emcee")
 
 
 def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysis:
+    """The analysis from its parts; `fits` is (leading, second or None, why there is no second, pairs from passage)."""
     leading, second, missing, moved = fits
     rng = np.random.default_rng(options.seed)
-    edges = rates.likelihood.thresholds
-    numbers = by_separation(leading, edges, options.seed)
-    other = by_separation(second, edges, options.seed) if second is not None else None
     slopes = quoted_slopes(rates, leading, second, options, rng)
-    space = leading.space
-    p_named = fit_p_value(rates.likelihood, leading.named_posteriors(), space, options.seed)
-    p_free = fit_p_value(rates.likelihood, leading.free_posteriors(), space, options.seed)
-    evidence = Evidence(
-        leading,
-        second,
-        numbers,
-        other,
-        p_named,
-        p_free,
-        rates.spread.clusters,
-        rates.within_release,
-        slopes,
-        tracks.position_error,
-        float(np.nan_to_num(rates.everything.zero_fraction[rates.resolved.intervals][0])),
-        missing,
-        rates.spread.releases_differ,
-    )
-    decision = decide(evidence)
-    moves = transition_scales(leading)
-    sentence = verdict_sentence(decision, moves, [s for s in slopes if s.curve == "exit_rate"])
+    evidence = _evidence(tracks, rates, (leading, second, missing), slopes, options.seed)
     record = provenance(pairs, tracks, options.seed)
-    facts = _facts(record, rates, options)
     passage = dispersion_of(tracks, moved)
     spread = bands(leading, rates, moved, passage, rng)
-    healths = [f.health for f in (leading, second) if f is not None]
-    verdict = Verdict(
-        decision=decision.decision,
-        reasons=decision.reasons,
-        sentence=sentence,
-        methods=methods_text(facts, leading, decision, sentence, (rates.resolved.low, rates.resolved.high)),
-        supported=tuple(Supported(s.regime, s.low, s.high) for s in decision.supported),
-        sequences=sequences(leading),
-        by_separation=numbers,
-        log_bayes_factor=float(leading.challenge),
-        challenger_preferred=bool(leading.challenge > np.log(20.0)),
-        transitions=moves,
-        slopes=slopes,
-        resolved=(rates.resolved.low, rates.resolved.high),
-        limited_by=rates.resolved.limited_by,
-        fit_p_value=p_named,
-        healthy=all(h.ok for h in healths),
-        health_reason="; ".join(h.reason for h in healths if h.reason),
-        rhat_max=max(h.rhat_max for h in healths),
-        ess_min=min(h.ess_min for h in healths),
-        cautions=decision.cautions + dissent(passage, spread),
-    )
+    verdict = _verdict(evidence, rates, _facts(record, rates, options), dissent(passage, spread))
     fitted = {"exit_rate": leading} | ({"separation": second} if second is not None else {})
     return Analysis(
         provenance=record,
@@ -88,6 +45,56 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysi
         fits=fitted,
         bands=spread,
         verdict=verdict,
+    )
+
+
+def _evidence(tracks: Tracks, rates: Rates, fits, slopes: tuple[Slope, ...], seed: int) -> Evidence:
+    leading, second, missing = fits
+    edges = rates.likelihood.thresholds
+    zero = rates.everything.zero_fraction[rates.resolved.intervals][0]
+    return Evidence(
+        exit_rate=leading,
+        separation=second,
+        leading=by_separation(leading, edges, seed),
+        second=by_separation(second, edges, seed) if second is not None else None,
+        fit_p_value=fit_p_value(rates.likelihood, leading.named_posteriors(), leading.space, seed),
+        free_p_value=fit_p_value(rates.likelihood, leading.free_posteriors(), leading.space, seed),
+        clusters=rates.spread.clusters,
+        within_release=rates.within_release,
+        slopes=slopes,
+        position_error=tracks.position_error,
+        zero_fraction=float(np.nan_to_num(zero)),
+        second_missing=missing,
+        releases_differ=rates.spread.releases_differ,
+    )
+
+
+def _verdict(evidence: Evidence, rates: Rates, facts: dict, dissents: tuple[Caution, ...]) -> Verdict:
+    decision, leading, slopes = decide(evidence), evidence.exit_rate, evidence.slopes
+    moves = transition_scales(leading)
+    sentence = verdict_sentence(decision, moves, [s for s in slopes if s.curve == "exit_rate"])
+    resolved = (rates.resolved.low, rates.resolved.high)
+    healths = [f.health for f in (leading, evidence.separation) if f is not None]
+    return Verdict(
+        decision=decision.decision,
+        reasons=decision.reasons,
+        sentence=sentence,
+        methods=methods_text(facts, leading, decision, sentence, resolved),
+        supported=tuple(Supported(s.regime, s.low, s.high) for s in decision.supported),
+        sequences=sequences(leading),
+        by_separation=evidence.leading,
+        log_bayes_factor=float(leading.challenge),
+        challenger_preferred=bool(leading.challenge > CHALLENGE),
+        transitions=moves,
+        slopes=slopes,
+        resolved=resolved,
+        limited_by=rates.resolved.limited_by,
+        fit_p_value=evidence.fit_p_value,
+        healthy=all(h.ok for h in healths),
+        health_reason="; ".join(h.reason for h in healths if h.reason),
+        rhat_max=max(h.rhat_max for h in healths),
+        ess_min=min(h.ess_min for h in healths),
+        cautions=decision.cautions + dissents,
     )
 
 
