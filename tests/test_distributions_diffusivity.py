@@ -216,7 +216,7 @@ def test_size_of_the_tests(n_cluster, record_property):
         rejected[2] += kstest(one.separation, lambda r: norm.cdf(np.log(r))).pvalue <= 0.05
         rejected[3] += ks_2samp(one.separation, two.separation).pvalue <= 0.05
     record_property("rejected at 5 %", (rejected / trials).tolist())
-    print(n_cluster, "clusters, rejected at 5 %:", rejected / trials)  # noqa: T201 - the figure is the product
+    print(n_cluster, "clusters, rejected at 5 %:", rejected / trials)
     assert np.all(rejected[:2] <= binom.ppf(0.999, trials, 0.05))
     assert np.all(rejected[:2] >= binom.ppf(0.001, trials, 0.05))
     assert np.all(rejected[2:] > 0.1 * trials)
