@@ -53,11 +53,6 @@ def spread(low: float, high: float, level: int = 68) -> float:
     return (high - low) / {68: 2.0, 95: 3.92}[level]
 
 
-def between(low: float, high: float, uncertainty: float) -> str:
-    """An interval in words: ``"10.1 to 15.2"``."""
-    return f"{rounded(low, uncertainty)} to {rounded(high, uncertainty)}"
-
-
 def span(low: float, high: float) -> str:
     """A range of separations [m] in km, in the digits of the verdict's sentences: ``"1.2 to 150"``."""
     return f"{km(low)} to {km(high)}"
