@@ -5,7 +5,8 @@ from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.synthetic.kernel_groups import release_tracks
 from regimes.synthetic.recipe import Recipe, load_recipe, recipe_from
 from regimes.synthetic.spectrum import Spectrum
-from regimes.synthetic.survey import simulate, truth
+from regimes.synthetic.survey import simulate
+from regimes.synthetic.truth import truth
 
 __all__ = [
     "Recipe",

@@ -7,8 +7,8 @@ from regimes.fixes import Fixes
 from regimes.geodesy import wrap_longitude
 from regimes.synthetic.fourier_flow import fourier_tracks
 from regimes.synthetic.kernel_groups import release_tracks
-from regimes.synthetic.recipe import FourierWorld, Place, Recipe
-from regimes.theory.regimes import REGIMES, kernel_exponent, spectral_slope
+from regimes.synthetic.recipe import Place, Recipe
+from regimes.synthetic.worlds import FourierWorld
 from regimes.units import DAY, HOUR, KM
 
 _GLOBE = Geod(ellps="WGS84")
@@ -46,39 +46,6 @@ def simulate(recipe: Recipe) -> Fixes:
     position = centre[:, None] + local if recipe.place.planar else _on_globe(recipe.place, centre, local)
     seen = _seen(recipe, watch, local.shape[:3])
     return _as_fixes(recipe, position, seen)
-
-
-def truth(recipe: Recipe) -> dict[str, object]:
-    """What an analysis of the survey should find.
-
-    Returns
-    -------
-    dict
-        ``world``; ``exponents`` of the kernel and ``spectral_slopes`` from small to large separations (slope
-        None where the kernel implies none); for a kernel world also ``regimes`` (None where unnamed),
-        ``transitions_km``, ``rate_per_d`` and ``reference_km``; for a Fourier world the range of its waves,
-        outside which (and near whose ends) the exponents do not hold.
-    """
-    world = recipe.world
-    if isinstance(world, FourierWorld):
-        return {
-            "world": "fourier",
-            "exponents": kernel_exponent(world.spectral_slopes).tolist(),
-            "spectral_slopes": list(world.spectral_slopes),
-            "break_wavelengths_km": list(world.break_wavelengths_km),
-            "wavelengths_km": [world.shortest_km, world.longest_km],
-        }
-    kernel = world.kernel
-    names = {regime.exponent: regime.name for regime in REGIMES.values()}
-    return {
-        "world": "kernel",
-        "exponents": kernel.exponents.tolist(),
-        "spectral_slopes": [float(spectral_slope(a)) if 1 < a < 2 else None for a in kernel.exponents],
-        "regimes": [names.get(a) for a in kernel.exponents.tolist()],
-        "transitions_km": (kernel.breaks / KM).tolist(),
-        "rate_per_d": world.rate_per_d,
-        "reference_km": world.reference_km,
-    }
 
 
 def _paths(recipe: Recipe, seed: int) -> np.ndarray:
