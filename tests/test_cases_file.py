@@ -56,6 +56,8 @@ def test_defaults(folder):
     assert case.models.regimes == ("ballistic", "exponential", "richardson", "diffusive")
     assert case.models.most_transitions == 2
     assert case.report.slope_range is None
+    assert (case.single.mean, case.single.period, case.single.mean_flow) == ("record", None, None)
+    assert case.single.deformation_radius is None
 
 
 def test_everything_given_in_si_units(folder):
@@ -64,12 +66,14 @@ def test_everything_given_in_si_units(folder):
     text += "[curves]\nseparation_ratio = 1.2\nseparations_km = [0.5, 500.0]\n"
     text += '[models]\nregimes = ["richardson", "diffusive"]\nmost_transitions = 0\n'
     text += "[report]\nslope_range_km = [2, 100.0]\n"
+    text += '[single]\nmean = "lowpass"\nlowpass_d = 5\ndeformation_radius_km = 30\n'
     case = load(folder, text)
     assert (case.observations.step, case.observations.longest_gap) == (1800.0, 7200.0)
     assert (case.pairs.kind, case.pairs.launched_within) == ("both", 10_800.0)
     assert (case.curves.separation_ratio, case.curves.separations) == (1.2, (500.0, 500_000.0))
     assert (case.models.regimes, case.models.most_transitions) == (("richardson", "diffusive"), 0)
     assert case.report.slope_range == (2000.0, 100_000.0)
+    assert (case.single.mean, case.single.period, case.single.deformation_radius) == ("lowpass", 432_000.0, 30_000.0)
 
 
 def test_data_path_starts_at_the_case_file(folder, monkeypatch):
@@ -220,6 +224,17 @@ def test_one_problem(folder, old, new, problem):
             '[models]\nregimes = ["diffusive", "diffusive"]',
             'models.regimes: got ["diffusive", "diffusive"]; must name each regime once',
         ),
+        (
+            '[single]\nmean = "lowpas"',
+            'single.mean: got "lowpas"; known: record, none, lowpass, grid; did you mean lowpass?',
+        ),
+        ('[single]\nmean = "lowpass"', 'single: got mean = "lowpass" without lowpass_d; must give lowpass_d too'),
+        ('[single]\nmean = "grid"', 'single: got mean = "grid" without mean_flow; must give mean_flow too'),
+        (
+            "[single]\nlowpass_d = 3",
+            'single: got lowpass_d with mean = "record"; must go without, or set mean = "lowpass"',
+        ),
+        ("[single]\ndeformation_radius_km = 0", "single.deformation_radius_km: got 0; must be > 0"),
         ("[models]\nmost_transitions = 4", "models.most_transitions: got 4; must be <= 3"),
         ("[report]\nslope_range_km = [100, 2]", "report.slope_range_km: got [100.0, 2.0]; must rise"),
         ("[report]\nslope_range_km = [2, inf]", "report.slope_range_km: got inf; must be a finite number"),
@@ -229,7 +244,8 @@ def test_one_problem(folder, old, new, problem):
         ),
         (
             "[reprot]",
-            "reprot: unknown key; known: name, seed, observations, pairs, curves, models, report; did you mean report?",
+            "reprot: unknown key; known: name, seed, observations, pairs, curves, models, single, report; "
+            "did you mean report?",
         ),
     ],
 )
@@ -249,6 +265,16 @@ def test_missing_data_is_one_problem_among_others(folder):
         "  seed: got -1; must be >= 0",
         f'  observations.path: got "data/fixes.csv"; no such file in {folder}',
     ]
+
+
+def test_mean_flow_starts_at_the_case_file_and_must_be_there(folder):
+    text = SMALLEST + '[single]\nmean = "grid"\nmean_flow = "flow.nc"\n'
+    assert problems(folder, text) == [
+        "case.toml has 1 problem",
+        f'  single.mean_flow: got "flow.nc"; no such file in {folder}',
+    ]
+    (folder / "flow.nc").write_bytes(b"")
+    assert load(folder, text).single.mean_flow == str(folder / "flow.nc")
 
 
 def test_no_such_case_file(tmp_path):

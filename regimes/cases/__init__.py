@@ -11,6 +11,7 @@ from regimes.cases.record import (
     PairRules,
     ReportRules,
 )
+from regimes.cases.single import SingleRules
 
 __all__ = [
     "REGIMES",
@@ -21,6 +22,7 @@ __all__ = [
     "Observations",
     "PairRules",
     "ReportRules",
+    "SingleRules",
     "case_from",
     "load_case",
 ]

@@ -11,6 +11,8 @@ from regimes.cases.problems import describe, headed
 from regimes.cases.record import Case
 from regimes.errors import CaseError
 
+_PATHS = (("observations", "path"), ("single", "mean_flow"))
+
 
 def load_case(path: str | Path) -> Case:
     """Read a case file (TOML).
@@ -18,12 +20,12 @@ def load_case(path: str | Path) -> Case:
     Parameters
     ----------
     path : str or Path
-        A relative `observations.path` inside is taken from the folder of the case file.
+        Relative paths inside are taken from the folder of the case file.
 
     Returns
     -------
     Case
-        With `observations.path` ready to open.
+        With its paths ready to open.
 
     Raises
     ------
@@ -54,8 +56,8 @@ def case_from(content: Mapping[str, Any], source: str = "case", folder: str | Pa
     source : str
         Name to head the problems with.
     folder : str or Path, optional
-        Where a relative `observations.path` starts; the data must exist there. Without it, the path is kept
-        as it is and looked for only when the data are read.
+        Where relative paths start; the files must exist there. Without it, paths are kept as they are and
+        looked for only when the files are read.
 
     Returns
     -------
@@ -80,12 +82,14 @@ def case_from(content: Mapping[str, Any], source: str = "case", folder: str | Pa
 
 
 def _resolve(content: dict[str, Any], folder: Path) -> tuple[dict[str, Any], list[str]]:
-    """The content with the data path made ready to open, and the problem if nothing is there."""
-    section = content.get("observations")
-    if not isinstance(section, dict) or not isinstance(section.get("path"), str) or not section["path"]:
-        return content, []
-    path = folder / section["path"]
+    """The content with its paths made ready to open, and a problem for each where nothing is there."""
     problems = []
-    if not path.exists():
-        problems.append(f'observations.path: got "{section["path"]}"; no such file in {folder}')
-    return content | {"observations": section | {"path": str(path)}}, problems
+    for name, key in _PATHS:
+        section = content.get(name)
+        if not isinstance(section, dict) or not isinstance(section.get(key), str) or not section[key]:
+            continue
+        path = folder / section[key]
+        if not path.exists():
+            problems.append(f'{name}.{key}: got "{section[key]}"; no such file in {folder}')
+        content = content | {name: section | {key: str(path)}}
+    return content, problems

@@ -2,28 +2,20 @@
 
 from typing import Annotated, Literal, get_args
 
-from pydantic import BaseModel, ConfigDict, Field, ValidationInfo, field_validator, model_validator
-from pydantic_core import PydanticCustomError
+from pydantic import Field, ValidationInfo, field_validator, model_validator
 
 from regimes.cases.problems import show
+from regimes.cases.section import Positive, Range, Section, Text, rule
+from regimes.cases.single import SingleRules
 from regimes.units import HOUR, KM
 
 Regime = Literal["ballistic", "exponential", "richardson", "diffusive"]
 REGIMES: tuple[Regime, ...] = get_args(Regime)
 
-Positive = Annotated[float, Field(gt=0)]
-Text = Annotated[str, Field(min_length=1)]
-Range = Annotated[tuple[Positive, Positive], Field(strict=False)]
-
-
-def _rule(got: str, must: str) -> PydanticCustomError:
-    """A problem with a value that has the right type."""
-    return PydanticCustomError("rule", "got {got}; must {must}", {"got": got, "must": must})
-
 
 def _rising(limits: tuple[float, float] | None) -> tuple[float, float] | None:
     if limits is not None and limits[0] >= limits[1]:
-        raise _rule(show(limits), "rise")
+        raise rule(show(limits), "rise")
     return limits
 
 
@@ -31,11 +23,7 @@ def _metres(limits: tuple[float, float] | None) -> tuple[float, float] | None:
     return None if limits is None else (limits[0] * KM, limits[1] * KM)
 
 
-class _Section(BaseModel):
-    model_config = ConfigDict(frozen=True, extra="forbid", strict=True, allow_inf_nan=False)
-
-
-class Columns(_Section):
+class Columns(Section):
     """Names of the columns (or variables) that hold the fixes.
 
     Either `longitude` and `latitude` [degrees], or `x` and `y` [m]; `release` is optional.
@@ -53,11 +41,11 @@ class Columns(_Section):
     def _one_kind_of_position(self) -> "Columns":
         given = [key for key in ("longitude", "latitude", "x", "y") if getattr(self, key) is not None]
         if given not in (["longitude", "latitude"], ["x", "y"]):
-            raise _rule(", ".join(given) or "no position", "name longitude and latitude, or x and y")
+            raise rule(", ".join(given) or "no position", "name longitude and latitude, or x and y")
         names = [name for name in self.model_dump().values() if name is not None]
         twice = sorted({name for name in names if names.count(name) > 1})
         if twice:
-            raise _rule(", ".join(twice) + " more than once", "name a different column for each")
+            raise rule(", ".join(twice) + " more than once", "name a different column for each")
         return self
 
     @property
@@ -72,7 +60,7 @@ class Columns(_Section):
         return tuple(name for name in pair if name is not None)
 
 
-class Observations(_Section):
+class Observations(Section):
     """Where the fixes are and how good they are."""
 
     path: Text
@@ -87,7 +75,7 @@ class Observations(_Section):
     def _no_shorter_than_step(cls, gap: float | None, info: ValidationInfo) -> float | None:
         step = info.data.get("step_h")
         if gap is not None and step is not None and gap < step:
-            raise _rule(show(gap), f"be at least step_h ({step:g})")
+            raise rule(show(gap), f"be at least step_h ({step:g})")
         return gap
 
     @property
@@ -101,7 +89,7 @@ class Observations(_Section):
         return None if self.longest_gap_h is None else self.longest_gap_h * HOUR
 
 
-class PairRules(_Section):
+class PairRules(Section):
     """Which pairs to compare."""
 
     max_separation_km: Positive
@@ -119,7 +107,7 @@ class PairRules(_Section):
         return self.launched_within_h * HOUR
 
 
-class CurveRules(_Section):
+class CurveRules(Section):
     """Separations at which the curves are taken."""
 
     separation_ratio: Annotated[float, Field(gt=1.05, le=3.0)] = 2.0**0.5
@@ -130,7 +118,7 @@ class CurveRules(_Section):
     def _one_step_at_least(cls, limits: tuple[float, float] | None, info: ValidationInfo):
         ratio = info.data.get("separation_ratio")
         if _rising(limits) is not None and ratio is not None and limits[1] < limits[0] * ratio:
-            raise _rule(show(limits), f"span at least one separation_ratio ({ratio:g})")
+            raise rule(show(limits), f"span at least one separation_ratio ({ratio:g})")
         return limits
 
     @property
@@ -139,7 +127,7 @@ class CurveRules(_Section):
         return _metres(self.separations_km)
 
 
-class ModelRules(_Section):
+class ModelRules(Section):
     """Regimes that compete, and how many transitions between them."""
 
     regimes: Annotated[tuple[Regime, ...], Field(strict=False)] = REGIMES
@@ -149,13 +137,13 @@ class ModelRules(_Section):
     @classmethod
     def _each_once(cls, regimes: tuple[Regime, ...]) -> tuple[Regime, ...]:
         if not regimes:
-            raise _rule("[]", "name one regime at least")
+            raise rule("[]", "name one regime at least")
         if len(set(regimes)) < len(regimes):
-            raise _rule(show(regimes), "name each regime once")
+            raise rule(show(regimes), "name each regime once")
         return regimes
 
 
-class ReportRules(_Section):
+class ReportRules(Section):
     """What else the report shows."""
 
     slope_range_km: Range | None = None
@@ -171,7 +159,7 @@ class ReportRules(_Section):
         return _metres(self.slope_range_km)
 
 
-class Case(_Section):
+class Case(Section):
     """One case: observations in, verdict out."""
 
     name: Text
@@ -180,4 +168,5 @@ class Case(_Section):
     pairs: PairRules
     curves: CurveRules = CurveRules()
     models: ModelRules = ModelRules()
+    single: SingleRules = SingleRules()
     report: ReportRules = ReportRules()
