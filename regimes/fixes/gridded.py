@@ -13,21 +13,32 @@ from regimes.fixes.rows import Rows, rows_from
 from regimes.fixes.tables import check_names, wanted
 from regimes.fixes.times import seconds_since
 
-_METRES = {"": 1.0, "m": 1.0, "metre": 1.0, "metres": 1.0, "meter": 1.0, "meters": 1.0}
-_METRES |= {"km": 1e3, "kilometre": 1e3, "kilometres": 1e3, "kilometer": 1e3, "kilometers": 1e3}
+METRES = {"": 1.0, "m": 1.0, "metre": 1.0, "metres": 1.0, "meter": 1.0, "meters": 1.0}
+METRES |= {"km": 1e3, "kilometre": 1e3, "kilometres": 1e3, "kilometer": 1e3, "kilometers": 1e3}
 _SIGNATURES = {b"CDF": "scipy", b"\x89HDF": "h5netcdf"}
 _LARGEST_COORDINATE = 1e12  # beyond it stands an undeclared fill value
 
 
 def read_netcdf(path: Path, columns: Columns) -> Rows:
     """Rows of a NetCDF file, classic or NetCDF-4."""
+    with xr.open_dataset(path, engine=engine_of(path), decode_times=False) as dataset:
+        return _rows(dataset, columns)
+
+
+def engine_of(path: Path) -> str:
+    """Name of the reader for a NetCDF file, by its first bytes.
+
+    Raises
+    ------
+    DataError
+        If it is no NetCDF file.
+    """
     with path.open("rb") as file:
         start = file.read(4)
     engine = next((name for key, name in _SIGNATURES.items() if start.startswith(key)), None)
     if engine is None:
         raise DataError(f"{path}: is no NetCDF file (it begins with {start!r}); check the path or its ending")
-    with xr.open_dataset(path, engine=engine, decode_times=False) as dataset:
-        return _rows(dataset, columns)
+    return engine
 
 
 def read_zarr(path: Path, columns: Columns) -> Rows:
@@ -77,9 +88,9 @@ def _coordinate(variable: xr.DataArray, name: str, planar: bool) -> xr.Variable:
         values = values.astype(float)
     values = np.where(np.abs(values) < _LARGEST_COORDINATE, values, values.dtype.type(np.nan))
     if planar:
-        if units.lower() not in _METRES:
+        if units.lower() not in METRES:
             raise DataError(f'variable {name}: units {units!r}; x and y must be in "m" or "km"')
-        factor = _METRES[units.lower()]
+        factor = METRES[units.lower()]
         return xr.Variable(variable.dims, values if factor == 1.0 else values * factor)
     if units.lower() and not units.lower().startswith("degree"):
         raise DataError(
