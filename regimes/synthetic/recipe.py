@@ -10,6 +10,7 @@ from pydantic import Field, ValidationError, model_validator
 
 from regimes.cases.problems import describe, headed
 from regimes.errors import CaseError
+from regimes.synthetic.contaminations import EQUATORIAL, Convergence, Oscillation, Shear
 from regimes.synthetic.sections import NotNegative, Positive, Section, Share, Text, Vector, rule
 from regimes.synthetic.worlds import FourierWorld, KernelWorld
 
@@ -73,7 +74,7 @@ class Place(Section):
 
 
 class Recipe(Section):
-    """A synthetic survey: either a `kernel` or a `fourier` world."""
+    """A synthetic survey: either a `kernel` or a `fourier` world, and what is added to its motion."""
 
     name: Text
     seed: Annotated[int, Field(ge=0)]
@@ -82,11 +83,28 @@ class Recipe(Section):
     releases: Releases
     records: Records
     place: Place = Place()
+    oscillation: Oscillation | None = None
+    shear: Shear | None = None
+    convergence: Convergence | None = None
 
     @model_validator(mode="after")
     def _one_world(self) -> "Recipe":
         if (self.kernel is None) == (self.fourier is None):
             raise rule("both or neither of [kernel] and [fourier]", "give one world")
+        return self
+
+    @model_validator(mode="after")
+    def _a_period(self) -> "Recipe":
+        latitude = self.place.latitude
+        if self.oscillation is None or self.oscillation.period_h is not None:
+            return self
+        if latitude is None:
+            raise rule("[oscillation] on a plane without period_h", "give period_h, or longitude and latitude")
+        if abs(latitude) < EQUATORIAL:
+            raise rule(
+                f"[oscillation] without period_h at latitude {latitude:g}",
+                f"give period_h within {EQUATORIAL:g} degrees of the equator",
+            )
         return self
 
     @property

@@ -14,6 +14,11 @@ def polygon(n: int, side: float) -> np.ndarray:
     return radius * np.stack([np.cos(angle), np.sin(angle)], axis=1)
 
 
+def about_centroid(local: np.ndarray) -> np.ndarray:
+    """Positions (n_release, n_member, n_fix, 2) less the moving centroid of each release."""
+    return local - local.mean(axis=1, keepdims=True)
+
+
 def check_sizes(n_group: int, start_separation: float, step: float, n_step: int) -> None:
     if n_group < 1 or n_step < 2 or not (start_separation > 0 and step > 0):
         raise DataError(

@@ -7,10 +7,14 @@ from regimes.fixes import Fixes
 from regimes.geodesy import wrap_longitude
 from regimes.synthetic.fourier_flow import fourier_tracks
 from regimes.synthetic.kernel_groups import release_tracks
+from regimes.synthetic.linear_flow import convergence_displacement, shear_displacement
+from regimes.synthetic.oscillation import oscillation
 from regimes.synthetic.recipe import Place, Recipe
 from regimes.synthetic.worlds import FourierWorld
 from regimes.units import DAY, HOUR, KM
 
+# Each has a stream of random numbers of its own; new ones go to the end, so that old recipes keep their fixes.
+_STREAMS = ("flow", "place", "watch", "oscillation")
 _GLOBE = Geod(ellps="WGS84")
 
 
@@ -34,12 +38,16 @@ def simulate(recipe: Recipe) -> Fixes:
 
     Notes
     -----
-    Flow, place and observation draw from streams of their own: with other gaps or losses the particles still
-    take the same paths. Displacements from the centroid of a release are laid out along geodesics from the
-    centroid (azimuthal equidistant); separations are true to (r / 6371 km)^2 / 6.
+    Flow, place, observation and each contamination draw from streams of their own: with other gaps, losses or
+    contaminations the particles still take the same paths, up to what was added. Convergence, shear and
+    oscillation are added in this order, each to the paths that the ones before it gave; they are kinematic: the
+    flow of the world does not know of them. Displacements from the centroid of a release are laid out along
+    geodesics from the centroid (azimuthal equidistant); separations are true to (r / 6371 km)^2 / 6.
     """
-    flow, place, watch = (np.random.default_rng(s) for s in np.random.SeedSequence(recipe.seed).spawn(3))
-    local = _paths(recipe, int(flow.integers(2**63)))
+    streams = np.random.SeedSequence(recipe.seed).spawn(len(_STREAMS))
+    rng = {name: np.random.default_rng(stream) for name, stream in zip(_STREAMS, streams, strict=True)}
+    place, watch = rng["place"], rng["watch"]
+    local = _with_contaminations(recipe, _paths(recipe, int(rng["flow"].integers(2**63))), rng)
     centre = _centres(recipe, place, local.shape[2])
     error = recipe.records.position_error_m
     local = local + error * watch.standard_normal(local.shape)
@@ -63,6 +71,23 @@ def _paths(recipe: Recipe, seed: int) -> np.ndarray:
     else:
         tracks, _ = release_tracks(recipe.world.kernel, *options)
     return tracks.position.reshape(*size, -1, 3)[..., :2]
+
+
+def _with_contaminations(recipe: Recipe, local: np.ndarray, rng: dict[str, np.random.Generator]) -> np.ndarray:
+    """Paths of the world and what the recipe adds to them, start positions unchanged."""
+    step = recipe.records.fix_interval_h * HOUR
+    if recipe.convergence is not None:
+        made = recipe.convergence
+        flow = (made.rate_per_d / DAY, made.direction_deg, made.lasts_d * DAY)
+        local = local + convergence_displacement(local, step, *flow)
+    if recipe.shear is not None:
+        local = local + shear_displacement(local, step, recipe.shear.rate_per_d / DAY, recipe.shear.direction_deg)
+    if recipe.oscillation is not None:
+        made, times = recipe.oscillation, step * np.arange(local.shape[2])
+        wavelength = None if made.wavelength_km is None else made.wavelength_km * KM
+        turn = made.angular_velocity(recipe.place.latitude)
+        local = local + oscillation(local, times, made.speed_m_s, turn, wavelength, rng["oscillation"])
+    return local
 
 
 def _centres(recipe: Recipe, rng: np.random.Generator, n_fix: int) -> np.ndarray:
