@@ -13,7 +13,16 @@ if TYPE_CHECKING:
     from regimes.errors import CaseError, DataError, FitError, RegimesError
     from regimes.fixes import fixes_from_frame, read_fixes, write_fixes
     from regimes.pairs import find_pairs
-    from regimes.pipeline import Options, QuickFit, analyse, analyse_pairs, check, quick_fit
+    from regimes.pipeline import (
+        Options,
+        QuickFit,
+        SingleOptions,
+        analyse,
+        analyse_pairs,
+        analyse_singles,
+        check,
+        quick_fit,
+    )
     from regimes.report import write_report
     from regimes.theory.kernel import Kernel
     from regimes.tracks import make_tracks
@@ -23,7 +32,16 @@ _HOME = {
     "regimes.errors": ("CaseError", "DataError", "FitError", "RegimesError"),
     "regimes.fixes": ("fixes_from_frame", "read_fixes", "write_fixes"),
     "regimes.pairs": ("find_pairs",),
-    "regimes.pipeline": ("Options", "QuickFit", "analyse", "analyse_pairs", "check", "quick_fit"),
+    "regimes.pipeline": (
+        "Options",
+        "QuickFit",
+        "SingleOptions",
+        "analyse",
+        "analyse_pairs",
+        "analyse_singles",
+        "check",
+        "quick_fit",
+    ),
     "regimes.report": ("write_report",),
     "regimes.theory.kernel": ("Kernel",),
     "regimes.tracks": ("make_tracks",),
@@ -40,8 +58,10 @@ __all__ = [
     "Options",
     "QuickFit",
     "RegimesError",
+    "SingleOptions",
     "analyse",
     "analyse_pairs",
+    "analyse_singles",
     "check",
     "find_pairs",
     "fixes_from_frame",

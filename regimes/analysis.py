@@ -7,6 +7,7 @@ import numpy as np
 
 from regimes.curves import Curve, DispersionStatistics
 from regimes.inference.record import Inference
+from regimes.particles import Ratio, SingleParticle
 from regimes.verdict.record import Verdict
 
 
@@ -145,6 +146,12 @@ class Analysis:
         "exit_rate" and "separation" (absent where the data do not allow it).
     bands : Bands
     verdict : Verdict
+    single : SingleParticle or None
+        What particles say one by one.
+    single_missing : str
+        Why there is no `single`; empty where there is.
+    ratios : tuple of Ratio
+        `single` held against the pairs and against a deformation radius, as far as that can be done.
     """
 
     provenance: Provenance
@@ -156,6 +163,14 @@ class Analysis:
     fits: dict[str, Inference]
     bands: Bands
     verdict: Verdict
+    single: SingleParticle | None
+    single_missing: str
+    ratios: tuple[Ratio, ...]
+
+    @property
+    def sentence(self) -> str:
+        """The verdict in a few sentences."""
+        return self.verdict.sentence
 
     def summary(self) -> str:
         """What was analysed and what came out, as a few lines of text."""
@@ -168,3 +183,39 @@ class Analysis:
     def _repr_html_(self) -> str:
         head = escape(self.summary().splitlines()[0])
         return f"<p>{head}</p>{self.verdict._repr_html_()}"
+
+
+@dataclass(frozen=True, slots=True)
+class SinglesOnly:
+    """One run on data without a pair: what particles say one by one, and why there is no more.
+
+    Parameters
+    ----------
+    provenance : Provenance
+        Numbers of pairs are zero, separations and durations of pairs NaN.
+    single : SingleParticle or None
+    single_missing : str
+        Why there is no `single`; empty where there is.
+    ratios : tuple of Ratio
+        `single` held against a deformation radius where one was given.
+    sentence : str
+        That nothing is decided, and why.
+    reasons : tuple of str
+        Why there is no pair, and why no `single`.
+    """
+
+    provenance: Provenance
+    single: SingleParticle | None
+    single_missing: str
+    ratios: tuple[Ratio, ...]
+    sentence: str
+    reasons: tuple[str, ...]
+
+    def summary(self) -> str:
+        """What was analysed and what came out, as a few lines of text."""
+        lines = [f"{self.provenance.case}: {self.provenance.n_particles} particles, no pair", self.sentence]
+        return "\n".join(lines if self.single is None else [*lines, self.single.summary()])
+
+    def _repr_html_(self) -> str:
+        table = "" if self.single is None else self.single._repr_html_()
+        return f"<p>{escape(self.sentence)}</p>{table}"

@@ -10,16 +10,18 @@ from functools import cache
 import numpy as np
 from scipy.stats import gamma
 
-from regimes.analysis import Analysis, Bands, Provenance, RateTable
+from regimes.analysis import Analysis, Bands, Provenance, RateTable, SinglesOnly
 from regimes.curves import default_times, dispersion_statistics, exit_statistics
 from regimes.inference.average import local_exponents, mixed_slopes, range_slopes
 from regimes.inference.health import Health
 from regimes.inference.models import Model, Space
 from regimes.inference.record import Fit, Inference
 from regimes.pairs import Pairs
+from regimes.particles import SingleParticle, length_ratio, plateau_ratio, single_particle
 from regimes.report import files
 from regimes.report.figures import FIGURES, draw, svg
 from regimes.synthetic.kernel_flow import kernel_pairs
+from regimes.synthetic.particles import Motion, drifting_particles
 from regimes.theory.fokker_planck import kernel_at, log_grid, moments, separation_masses
 from regimes.theory.kernel import Kernel
 from regimes.verdict import record as vr
@@ -30,6 +32,10 @@ QUANTILES = (2.5, 16, 50, 84, 97.5)
 TRUTH = Kernel([2.0, 4 / 3, 0.0], [8 * KM, 80 * KM], 0.12 / DAY, 20 * KM)
 SPACE = Space(1.2 * KM, 150 * KM, np.log(np.sqrt(2)), (np.log(1e-8), np.log(1e-3)))
 RHO = np.sqrt(2)
+_RATIOS = (
+    plateau_ratio(13_000.0, 1_300.0, 6_900.0, 700.0),
+    length_ratio("Lagrangian length", 34.0 * KM, 3.0 * KM, 30.0 * KM),
+)
 
 
 def _fit(pieces, log_evidence, slopes=(), breaks=(), seed=0, health=None):
@@ -231,7 +237,34 @@ def demo_analysis(n_pair: int = 60) -> Analysis:
         fits=fits,
         bands=_bands(fits["exit_rate"], SPACE.lowest, times),
         verdict=_verdict(fits),
+        single=_single(),
+        single_missing="",
+        ratios=_RATIOS,
     )
+
+
+def _single() -> SingleParticle:
+    """Invented particles of known memory, in releases of three as in a real survey."""
+    motion = Motion(0.04, 1.0 / (2.0 * DAY), shared=0.5)
+    return single_particle(drifting_particles(motion, (12, 3), 21600.0, 241, 4)[0])
+
+
+def singles_only(single: bool = True) -> SinglesOnly:
+    """What a survey without a pair gives, with and without enough velocities."""
+    nothing = float("nan")
+    why = "no launched pair among 36 particles: the smallest start separation within 6 h is 250 km; must be at most 1"
+    missing = "single particles: typical tracks have 4 velocities in a row; at least 15 are needed"
+    return SinglesOnly(
+        provenance=replace(
+            demo_analysis().provenance, n_particles=36, n_pairs=0, n_clusters=0, kind="none", median_start=nothing,
+            start_p90=nothing, median_duration=nothing,
+        ),
+        single=_single() if single else None,
+        single_missing="" if single else missing,
+        ratios=_RATIOS[1:2] if single else (),
+        sentence=f"Undecided: there are no pair statistics, because there is no pair: {why}.",
+        reasons=(why,) if single else (why, missing),
+    )  # fmt: skip
 
 
 @cache

@@ -1,8 +1,5 @@
 """From fits to the analysis: numbers, decision, words, bands."""
 
-import platform
-from importlib.metadata import version
-
 import numpy as np
 
 from regimes.analysis import Analysis, Bands, Provenance
@@ -10,9 +7,11 @@ from regimes.curves import DispersionStatistics, default_times, dispersion_stati
 from regimes.inference.predict import dispersion_bands, fit_p_value, mixed_kernels, rate_band
 from regimes.inference.record import Inference
 from regimes.inference.slope import mixed_slope_over, slope_over
-from regimes.pairs import CHANCE, LAUNCHED, Pairs
+from regimes.pairs import Pairs
 from regimes.pipeline.options import Options
+from regimes.pipeline.origin import provenance
 from regimes.pipeline.rates import Rates, rate_table
+from regimes.pipeline.singles import cross_checks
 from regimes.tracks import Tracks
 from regimes.units import DAY
 from regimes.verdict.decide import Evidence, decide
@@ -21,19 +20,22 @@ from regimes.verdict.record import Caution, Slope, Supported, Verdict
 from regimes.verdict.rule import CHALLENGE
 from regimes.verdict.words import methods_text, verdict_sentence
 
-_LIBRARIES = ("numpy", "scipy", "numba", "emcee")
 
+def put_together(tracks, pairs, options: Options, rates: Rates, fits, alone) -> Analysis:
+    """The analysis from its parts.
 
-def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysis:
-    """The analysis from its parts; `fits` is (leading, second or None, why there is no second, pairs from passage)."""
+    `fits` is (leading, second or None, why there is no second, pairs from passage), `alone` what `single_side` gives.
+    """
     leading, second, missing, moved = fits
     rng = np.random.default_rng(options.seed)
     slopes = quoted_slopes(rates, leading, second, options, rng)
     evidence = _evidence(tracks, rates, (leading, second, missing), slopes, options.seed)
-    record = provenance(pairs, tracks, options.seed)
+    record = provenance(tracks, pairs, options.seed)
     passage = dispersion_of(tracks, moved)
     spread = bands(leading, rates, moved, passage, rng)
     verdict = _verdict(evidence, rates, _facts(record, rates, options), dissent(passage, spread))
+    single, missing_single = alone
+    radius = options.single.deformation_radius
     fitted = {"exit_rate": leading} | ({"separation": second} if second is not None else {})
     return Analysis(
         provenance=record,
@@ -45,6 +47,9 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits) -> Analysi
         fits=fitted,
         bands=spread,
         verdict=verdict,
+        single=single,
+        single_missing=missing_single,
+        ratios=cross_checks(single, tracks, pairs, verdict.transitions, radius),
     )
 
 
@@ -164,38 +169,6 @@ def bands(leading: Inference, rates: Rates, moved: Pairs, passage, rng) -> Bands
     largest = float(np.nanmax(np.sqrt(passage.relative_dispersion().value)))
     square, log = dispersion_bands(named[:: max(1, len(named) // 60)], moved.start_separation, times, largest)
     return Bands(grid, rate_band(named, grid, ratio), rate_band(free, grid, ratio), times, square, log)
-
-
-def provenance(pairs: Pairs, tracks: Tracks, seed: int) -> Provenance:
-    """What can be said of the input without its file."""
-    versions = {"regimes": version("regimes"), "python": platform.python_version()}
-    versions |= {name: version(name) for name in _LIBRARIES}
-    used = np.unique(np.concatenate([pairs.first, pairs.second]))
-    return Provenance(
-        case="in memory",
-        seed=seed,
-        versions=versions,
-        source="memory",
-        sha256="",
-        n_fixes=int(np.sum(~np.isnan(tracks.position[:, 0]))),
-        n_particles=int(used.size),
-        n_pairs=int(pairs.first.size),
-        n_clusters=int(pairs.n_cluster),
-        kind=_kind_of(pairs),
-        step=float(tracks.step),
-        longest_gap=float("nan"),
-        position_error=float(tracks.position_error),
-        max_separation=float(pairs.start_separation.max()),
-        median_start=float(np.median(pairs.start_separation)),
-        start_p90=float(np.quantile(pairs.start_separation, 0.9)),
-        median_duration=float(np.median(pairs.length - 1) * tracks.step),
-        cleaning=(),
-    )
-
-
-def _kind_of(pairs: Pairs) -> str:
-    launched, chance = np.any(pairs.kind == LAUNCHED), np.any(pairs.kind == CHANCE)
-    return "both" if launched and chance else "launched" if launched else "chance"
 
 
 def _facts(record: Provenance, rates: Rates, options: Options) -> dict:

@@ -2,24 +2,27 @@
 
 from collections.abc import Callable
 from dataclasses import replace
-from pathlib import Path
 
-from regimes.analysis import Analysis, Provenance
+from regimes.analysis import Analysis, SinglesOnly
 from regimes.cases import Case
 from regimes.inference.fit import exit_rate_space, infer, screen_exit_rates
 from regimes.inference.models import free_models, named_models
 from regimes.pairs import Pairs
 from regimes.pipeline.assemble import put_together
 from regimes.pipeline.opinion import second_opinion
-from regimes.pipeline.options import Options
+from regimes.pipeline.options import Options, SingleOptions
+from regimes.pipeline.origin import of_case
 from regimes.pipeline.rates import exit_rates
-from regimes.pipeline.survey import Survey, check
-from regimes.tracks import Tracks, default_gap
+from regimes.pipeline.singles import analyse_singles, single_side
+from regimes.pipeline.survey import pairs_of, read_tracks
+from regimes.tracks import Tracks
 
 Progress = Callable[[str, int, int], None]
 
 
-def analyse(case: Case, progress: Progress | None = None, jobs: int = 1, seed: int | None = None) -> Analysis:
+def analyse(
+    case: Case, progress: Progress | None = None, jobs: int = 1, seed: int | None = None
+) -> Analysis | SinglesOnly:
     """Run a case from its file of fixes to the verdict.
 
     Parameters
@@ -34,28 +37,25 @@ def analyse(case: Case, progress: Progress | None = None, jobs: int = 1, seed: i
 
     Returns
     -------
-    Analysis
+    Analysis or SinglesOnly
+        The latter where there is no pair to compare.
 
     Raises
     ------
     CaseError, DataError, FitError
     """
-    options = Options(
-        ratio=case.curves.separation_ratio,
-        limits=case.curves.separations,
-        regimes=case.models.regimes,
-        most_transitions=case.models.most_transitions,
-        slope_range=case.report.slope_range,
-        seed=case.seed if seed is None else seed,
-        jobs=jobs,
-    )
+    options = _options(case, case.seed if seed is None else seed, jobs)
     if progress is not None:
         progress("reading fixes", 0, 1)
-    survey = check(case)
+    fixes, tracks = read_tracks(case)
+    pairs, no_pair = pairs_of(case, tracks)
     if progress is not None:
         progress("reading fixes", 1, 1)
-    found = analyse_pairs(survey.tracks, survey.pairs, options, progress)
-    return replace(found, provenance=_provenance(survey, case, options.seed, found.provenance))
+    if pairs is None:
+        found = analyse_singles(tracks, options, no_pair)
+    else:
+        found = analyse_pairs(tracks, pairs, options, progress)
+    return replace(found, provenance=of_case(found.provenance, case, fixes, tracks))
 
 
 def analyse_pairs(
@@ -84,6 +84,7 @@ def analyse_pairs(
     """
     options = options or Options()
     rates = exit_rates(tracks, pairs, options)
+    alone = single_side(tracks, options.single, options.seed)
     seed, jobs = options.seed, options.jobs
     models = named_models(options.regimes, options.most_transitions)
     space = exit_rate_space(rates.likelihood)
@@ -92,21 +93,18 @@ def analyse_pairs(
     how = {"seed": seed, "jobs": jobs, "progress": progress}
     leading = infer("exit_rate", named, free, rates.spread.total, **how)
     second, missing, moved = second_opinion(tracks, rates, (named, free), how)
-    return put_together(tracks, pairs, options, rates, (leading, second, missing, moved))
+    return put_together(tracks, pairs, options, rates, (leading, second, missing, moved), alone)
 
 
-def _provenance(survey: Survey, case: Case, seed: int, found: Provenance) -> Provenance:
-    """Provenance with what only the case and the file know."""
-    fixes = survey.fixes
-    gap = case.observations.longest_gap
-    return replace(
-        found,
-        case=case.name,
+def _options(case: Case, seed: int, jobs: int) -> Options:
+    alone = case.single
+    return Options(
+        ratio=case.curves.separation_ratio,
+        limits=case.curves.separations,
+        regimes=case.models.regimes,
+        most_transitions=case.models.most_transitions,
+        slope_range=case.report.slope_range,
         seed=seed,
-        source=Path(fixes.source.path).name,
-        sha256=fixes.source.sha256 or "",
-        n_fixes=len(fixes.time),
-        longest_gap=default_gap(fixes, survey.tracks.step) if gap is None else gap,
-        max_separation=case.pairs.max_separation,
-        cleaning=tuple((c.reason, c.count, c.note) for c in fixes.cleaning),
+        jobs=jobs,
+        single=SingleOptions(alone.mean, alone.period, alone.mean_flow, alone.deformation_radius),
     )

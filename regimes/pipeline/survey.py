@@ -2,7 +2,8 @@
 
 from dataclasses import dataclass
 
-from regimes.cases import Case
+from regimes.cases import Case, PairRules
+from regimes.errors import DataError
 from regimes.fixes import Fixes, read_fixes
 from regimes.pairs import Pairs, find_pairs
 from regimes.tracks import Tracks, make_tracks
@@ -33,9 +34,25 @@ def check(case: Case) -> Survey:
     CaseError, DataError
         As `read_fixes`, `make_tracks` and `find_pairs` do.
     """
+    fixes, tracks = read_tracks(case)
+    pairs = _find(case.pairs, tracks)
+    return Survey(fixes, tracks, pairs, case.pairs.kind, case.pairs.max_separation)
+
+
+def read_tracks(case: Case) -> tuple[Fixes, Tracks]:
+    """Fixes of a case and the tracks they make; raises as `check` does."""
     seen = case.observations
     fixes = read_fixes(seen.path, seen.columns, seen.position_error_m, seen.highest_speed_m_s)
-    tracks = make_tracks(fixes, seen.step, seen.longest_gap)
-    rules = case.pairs
-    pairs = find_pairs(tracks, rules.kind, rules.max_separation, rules.launched_within)
-    return Survey(fixes, tracks, pairs, rules.kind, rules.max_separation)
+    return fixes, make_tracks(fixes, seen.step, seen.longest_gap)
+
+
+def pairs_of(case: Case, tracks: Tracks) -> tuple[Pairs | None, str]:
+    """Pairs by the rules of a case, or nothing and why there is none."""
+    try:
+        return _find(case.pairs, tracks), ""
+    except DataError as error:
+        return None, str(error)
+
+
+def _find(rules: PairRules, tracks: Tracks) -> Pairs:
+    return find_pairs(tracks, rules.kind, rules.max_separation, rules.launched_within)
