@@ -18,7 +18,7 @@ from regimes.report import files as files_module
 from regimes.report.figures import FIGURES, draw, svg
 from regimes.report.page import page
 from regimes.report.verdict_json import plain, verdict_text
-from tests.report_fixture import demo_analysis, use_drawings_made_before, with_verdict
+from tests.report_fixture import demo_analysis, singles_only, use_drawings_made_before, with_verdict
 
 VOID = {"meta", "link", "br", "img", "input", "hr"}  # elements without an end, HTML standard, section 13.1.2
 
@@ -302,7 +302,17 @@ def test_document_follows_its_schema(analysis, report, schema):
 
 @pytest.mark.parametrize(
     ("path", "value"),
-    [(("decision",), "maybe"), (("sequences", 0, "probability"), 1.5), (("resolved_km",), [1.0]), (("extra",), 1)],
+    [
+        (("decision",), "maybe"),
+        (("sequences", 0, "probability"), 1.5),
+        (("resolved_km",), [1.0]),
+        (("resolved_km",), []),  # there are pairs
+        (("extra",), 1),
+        (("single_particle",), None),  # without a reason
+        (("single_particle_reason",), "none"),
+        (("single_particle", "mean_removed"), "all"),
+        (("single_particle", "diffusivity_m2_s", "mean", "lo95"), "small"),
+    ],
 )
 def test_schema_refuses_what_it_should(analysis, schema, path, value):
     document = json.loads(verdict_text(analysis))
@@ -329,6 +339,34 @@ def test_document_numbers_are_those_of_the_verdict(analysis):
     none = [s for s in document["slopes"] if s["kind"] == "none"]
     assert none
     assert all(s["median"] is None for s in none)
+
+
+def test_document_of_single_particles_is_that_of_the_record(analysis):
+    said = verdict_document(analysis)["single_particle"]
+    single = analysis.single
+    scale = single.scale("first_zero")
+    # six printed digits
+    assert said["integral_time_d"]["first_zero"]["value"] == pytest.approx(scale.time.value / 86400.0, rel=1e-5)
+    assert said["integral_length_km"]["first_zero"]["lo95"] == pytest.approx(scale.length.low / 1000.0, rel=1e-5)
+    assert said["diffusivity_m2_s"]["minor"]["hi95"] == pytest.approx(single.diffusivity.minor.high, rel=1e-5)
+    assert said["converges"] is single.converges
+    assert (said["n_particles"], said["n_units"], said["mean_removed"]) == (36, 12, "record")
+    assert [r["expected"] for r in said["ratios"]] == [1.0, None]
+    assert said["ratios"][1]["name"] == "Lagrangian length over the deformation radius"
+
+
+@pytest.mark.parametrize("single", [True, False])
+def test_document_without_pairs_follows_the_same_schema(schema, single):
+    found = singles_only(single)
+    document = json.loads(verdict_text(found))
+    schema.validate(document)
+    assert document["decision"] == "undecided"
+    assert document["sentence"] == found.sentence
+    assert document["reasons"] == list(found.reasons)
+    assert document["by_separation"]["slope"] == {"median": [], "lo95": [], "hi95": []}
+    assert document["health"] == {"ok": True, "reason": "nothing was sampled", "rhat_max": None, "ess_min": None}
+    assert (document["single_particle"] is not None) == single
+    assert document["single_particle_reason"] == found.single_missing
 
 
 def test_infinite_numbers_become_null(analysis):

@@ -468,6 +468,7 @@ def test_summary_table_and_numbers(base):
     assert set(numbers["integral_time_d"]) == set(METHODS) == set(numbers["integral_length_km"])
     time = found.scale("first_zero").time
     assert numbers["integral_time_d"]["first_zero"]["median"] == pytest.approx(time.median / DAY)
+    assert numbers["integral_time_d"]["first_zero"]["value"] == pytest.approx(time.value / DAY)
     assert numbers["integral_length_km"]["long_window"]["hi95"] == pytest.approx(found.scales[0].length.high / KM)
     assert set(numbers["diffusivity_m2_s"]) == {"major", "minor", "mean"}
     assert numbers["converges"] is found.converges

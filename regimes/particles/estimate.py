@@ -30,8 +30,8 @@ class Estimate:
         return Estimate(*(factor * v for v in (self.value, self.median, self.low, self.high)))
 
     def as_numbers(self) -> dict[str, float]:
-        """median, lo95 and hi95."""
-        return {"median": self.median, "lo95": self.low, "hi95": self.high}
+        """value, median, lo95 and hi95; the median is the value where there are no resamples."""
+        return {"value": self.value, "median": self.median, "lo95": self.low, "hi95": self.high}
 
     def text(self, unit: str) -> str:
         """Value and interval to three digits."""

@@ -6,7 +6,8 @@ from typing import Any
 
 import numpy as np
 
-from regimes.analysis import Analysis, Provenance
+from regimes.analysis import Analysis, Provenance, SinglesOnly
+from regimes.report.single_json import single_part, without_pairs
 from regimes.units import KM
 from regimes.verdict.record import BySeparation, Interval, Slope, TransitionScale, Verdict
 
@@ -14,12 +15,12 @@ SCHEMA = 1
 _LEVELS = ("median", "lo68", "hi68", "lo95", "hi95")
 
 
-def verdict_document(analysis: Analysis) -> dict[str, Any]:
+def verdict_document(analysis: Analysis | SinglesOnly) -> dict[str, Any]:
     """Everything the verdict says, in plain types.
 
     Parameters
     ----------
-    analysis : Analysis
+    analysis : Analysis or SinglesOnly
 
     Returns
     -------
@@ -27,7 +28,8 @@ def verdict_document(analysis: Analysis) -> dict[str, Any]:
         Only dicts, lists, strings, booleans, finite numbers and None (for what is not determined). Lengths in
         km; slopes and exponents as in the report.
     """
-    return plain(_header(analysis.provenance) | _said(analysis.verdict))
+    said = without_pairs(analysis) if isinstance(analysis, SinglesOnly) else _said(analysis.verdict)
+    return plain(_header(analysis.provenance) | said | single_part(analysis))
 
 
 def _header(origin: Provenance) -> dict[str, Any]:
@@ -69,7 +71,7 @@ def _said(verdict: Verdict) -> dict[str, Any]:
     }
 
 
-def verdict_text(analysis: Analysis) -> str:
+def verdict_text(analysis: Analysis | SinglesOnly) -> str:
     """`verdict_document` as JSON text."""
     return json.dumps(verdict_document(analysis), indent=1, allow_nan=False, ensure_ascii=False) + "\n"
 
