@@ -6,8 +6,9 @@ import numpy as np
 import pytest
 from scipy.special import j0
 
-from regimes.errors import CaseError
-from regimes.synthetic import recipe_from, simulate
+from regimes.errors import CaseError, DataError
+from regimes.synthetic import recipe_from, simulate, truth
+from regimes.synthetic.shear_diffusion import ShearDiffusion, shear_diffusion_tracks
 
 SIGMAS = 4.5  # Monte Carlo tolerance in standard errors, fixed seeds
 DAY = 86400.0
@@ -81,12 +82,14 @@ OBSERVED = {"position_error_m": 20.0, "loss_per_d": 0.1, "gap_probability": 0.05
         {"oscillation": {"speed_m_s": 0.0, "period_h": 15.0, "wavelength_km": 30.0}},
         {"shear": {"rate_per_d": 0.0, "direction_deg": 20.0}},
         {"convergence": {"rate_per_d": 0.0, "direction_deg": 20.0, "lasts_d": 1.0}},
+        {"place": {"eddy_speed_m_s": 0.0, "eddy_time_d": 2.0}},
     ],
     ids=str,
 )
 def test_zero_strength_is_the_clean_twin(nothing, place):
-    clean = simulate(recipe(place=place, records=OBSERVED))
-    assert_same_bytes(simulate(recipe(place=place, records=OBSERVED | nothing.pop("records", {}), **nothing)), clean)
+    both = {"place": place, "records": OBSERVED}
+    changed = {section: both.get(section, {}) | keys for section, keys in nothing.items()}
+    assert_same_bytes(simulate(recipe(**both | changed)), simulate(recipe(**both)))
 
 
 @pytest.mark.parametrize(
@@ -251,6 +254,98 @@ class TestLinearFlows:
         assert apart[-1] > 2 * apart[0]
 
 
+class TestEddies:
+    @pytest.mark.parametrize("hours", [6.0, 24.0])
+    def test_centres_spread_as_taylor_says(self, hours):
+        """2 u'^2 T (t - T (1 - exp(-t / T))) in each component, u' = speed / sqrt 2, at any fix interval."""
+        made = {"place": {"eddy_speed_m_s": 0.3, "eddy_time_d": 2.0}}
+        size = {"releases": {"number": 2000, "particles": 2}, "kernel": STILL}
+        moved = added(made, records={"duration_d": 6.0, "fix_interval_h": hours}, **size)
+        assert moved[:, 0] == pytest.approx(moved[:, 1], abs=1e-6)
+        for day in (1, 6):
+            expected = 0.09 * 2 * (day - 2 * (1 - np.exp(-day / 2))) * DAY**2
+            for component in range(2):
+                assert_mean(moved[:, 0, round(day * 24 / hours), component] ** 2, expected)
+
+    def test_separations_do_not_know(self):
+        made, clean = recipe(place={"eddy_speed_m_s": 0.3, "eddy_time_d": 2.0}), recipe()
+        apart = (np.diff(paths(m), axis=1) for m in (made, clean))
+        assert next(apart) == pytest.approx(next(apart), abs=1e-6)
+
+    def test_velocity_remembers(self):
+        """Correlation of mean velocities of successive intervals h << T: 1 - 2 h / (3 T), to first order."""
+        made = {"place": {"eddy_speed_m_s": 0.3, "eddy_time_d": 5.0}}
+        moved = added(made, records={"fix_interval_h": 3.0}, releases={"number": 1000, "particles": 2}, kernel=STILL)
+        velocity = np.diff(moved[:, 0], axis=1) / 10800.0
+        assert_mean(np.mean(velocity**2, axis=(1, 2)), 0.045 * (1 - 0.025 / 3))
+        lost = np.mean((velocity[:, 1:] - velocity[:, :-1]) ** 2, axis=(1, 2))
+        assert_mean(lost, 2 * 0.045 * (2 / 3) * 0.025)
+
+
+def moments(where, direction):
+    """Separations of the first two members in the frame of the flow: (X, Y), each (n_release, n_fix)."""
+    turned = np.exp(-1j * np.radians(direction)) * ((where[:, 1] - where[:, 0]) @ np.array([1, 1j]))
+    return turned.real, turned.imag
+
+
+class TestShearDiffusion:
+    @pytest.mark.parametrize(("hours", "direction"), [(48.0, 0.0), (4.0, 130.0)])
+    def test_moments(self, hours, direction):
+        """Okubo (1966), Young, Rhines & Garrett (1982), from memory: the t^3 law along the flow, at any step."""
+        world = {"diffusivity_m2_s": 2.0, "rate_per_d": 0.9, "direction_deg": direction}
+        size = {"number": 6000, "particles": 2, "start_separation_km": 1.0}
+        records = {"duration_d": 4.0, "fix_interval_h": hours}
+        x, y = moments(paths(recipe(kernel=None, shear_diffusion=world, releases=size, records=records)), direction)
+        x0, y0 = x[:, 0], y[:, 0]
+        for day in (2, 4):
+            k, kt, s = round(day * 24 / hours), 2.0 * day * DAY, 0.9 * day
+            assert_mean(y[:, k] ** 2, 0.5e6 + 4 * kt)
+            assert_mean(x[:, k] ** 2, 0.5e6 * (1 + s**2) + 4 * kt + 4 / 3 * kt * s**2)
+            assert_mean((x[:, k] - x0 - s * y0) * (y[:, k] - y0), 2 * kt * s)
+
+    def test_late_growth_is_cubic(self):
+        """Doubling the time multiplies <X^2> by 8, and X stays Gaussian: kurtosis 3."""
+        world = {"diffusivity_m2_s": 5.0, "rate_per_d": 3.0}
+        size = {"number": 5000, "particles": 2, "start_separation_km": 0.001}
+        records = {"duration_d": 20.0, "fix_interval_h": 240.0}
+        x, _ = moments(paths(recipe(kernel=None, shear_diffusion=world, releases=size, records=records)), 0.0)
+        # relative errors of two independent variances, an upper bound: later motion shares the earlier one's
+        expected = 8 * (1 + 3 / 60**2) / (1 + 3 / 30**2)
+        assert np.mean(x[:, 2] ** 2) / np.mean(x[:, 1] ** 2) == pytest.approx(expected, rel=SIGMAS * np.sqrt(4 / 5000))
+        kurtosis = np.mean(x[:, 2] ** 4) / np.mean(x[:, 2] ** 2) ** 2
+        assert kurtosis == pytest.approx(3.0, abs=SIGMAS * np.sqrt(24 / 5000))
+
+    def test_without_shear_pairs_diffuse_evenly(self):
+        world = {"diffusivity_m2_s": 2.0, "rate_per_d": 0.0}
+        size = {"number": 3000, "particles": 2, "start_separation_km": 1.0}
+        x, y = moments(paths(recipe(kernel=None, shear_diffusion=world, releases=size)), 0.0)
+        for z in (x, y):
+            assert_mean(z[:, -1] ** 2, 0.5e6 + 4 * 2.0 * 4 * DAY)
+
+    def test_scaling(self):
+        """Lengths by a, times by b: kappa by a^2 / b and S by 1 / b give the same paths."""
+        options = ((3, 4), 100.0, 10.0, 6, 5)
+        one, _ = shear_diffusion_tracks(ShearDiffusion(2.0, 0.01, 33.0), *options)
+        two, _ = shear_diffusion_tracks(ShearDiffusion(2.0 * 9 / 7, 0.01 / 7, 33.0), (3, 4), 300.0, 70.0, 6, 5)
+        assert two.position == pytest.approx(3 * one.position, rel=1e-9, abs=1e-9)
+        again, _ = shear_diffusion_tracks(ShearDiffusion(2.0, 0.01, 33.0), *options)
+        assert again.position.tobytes() == one.position.tobytes()
+
+    def test_truth(self):
+        world = {"diffusivity_m2_s": 2.0, "rate_per_d": -0.9}
+        found = truth(recipe(kernel=None, shear_diffusion=world))
+        assert found == {"world": "shear_diffusion", "direction_deg": 0.0} | world
+
+    @pytest.mark.parametrize("numbers", [(0.0, 1.0, 0.0), (1.0, np.nan, 0.0), (1.0, 1.0, np.inf)])
+    def test_flows_that_cannot_be(self, numbers):
+        with pytest.raises(DataError, match="diffusivity must be > 0 and all finite; correct the numbers"):
+            ShearDiffusion(*numbers)
+
+    def test_releases_of_one(self):
+        with pytest.raises(DataError, match="got 1 particles in a release; must be 2 or more"):
+            shear_diffusion_tracks(ShearDiffusion(1.0, 1.0), (3, 1), 1.0, 1.0, 5, 1)
+
+
 @pytest.mark.parametrize(
     ("changes", "message"),
     [
@@ -266,6 +361,15 @@ class TestLinearFlows:
         ({"oscillation": {"period_h": 0.0}}, r"oscillation.speed_m_s: missing(.|\n)*oscillation.period_h: got 0.0"),
         ({"shear": {"rate_per_day": 0.1}}, r"shear.rate_per_day: unknown key; known: rate_per_d, .* did you mean rate"),
         ({"convergence": {"rate_per_d": -1.0, "lasts_d": 1.0}}, r"convergence.rate_per_d: got -1.0; must be >= 0"),
+        ({"place": {"eddy_speed_m_s": 0.1}}, "got one of eddy_speed_m_s and eddy_time_d; must give both, or none"),
+        (
+            {"shear_diffusion": {"diffusivity_m2_s": 1.0, "rate_per_d": 0.1}},
+            r"got 2 of \[kernel\], \[fourier\] and \[shear_diffusion\]; must give one world",
+        ),
+        (
+            {"shear_diffusion": {"diffusivity_m2_s": 0.0}},
+            r"diffusivity_m2_s: got 0.0; must be > 0(.|\n)*rate_per_d: miss",
+        ),
         ({"convergence": {"rate_per_d": 1.0}}, r"convergence.lasts_d: missing; must be given"),
     ],
 )

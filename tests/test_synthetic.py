@@ -603,8 +603,8 @@ class TestRecipes:
     @pytest.mark.parametrize(
         ("changes", "message"),
         [
-            ({"fourier": FOURIER}, r"both or neither of \[kernel\] and \[fourier\]; must give one world"),
-            ({"kernel": None}, r"both or neither of \[kernel\] and \[fourier\]; must give one world"),
+            ({"fourier": FOURIER}, r"got 2 of \[kernel\], \[fourier\] and \[shear_diffusion\]; must give one world"),
+            ({"kernel": None}, r"got none of \[kernel\], \[fourier\] and \[shear_diffusion\]; must give one world"),
             ({"kernel": {"exponents": [2.0]}}, "got both or neither; must give either regimes or exponents"),
             ({"kernel": {"transitions_km": [10.0]}}, "got 3 pieces; must be one more than transitions_km"),
             ({"kernel": {"transitions_km": [120.0, 10.0]}}, r"must rise \(transitions_km\)"),

@@ -109,8 +109,8 @@ def drifting_particles(
             "positive step and separation, and an error >= 0; correct the numbers"
         )
     rng = np.random.default_rng(seed)
-    own = _walks(motion, shape, step, n_step, rng)
-    common = _walks(motion, (shape[0], 1), step, n_step, rng) if motion.shared > 0 else 0.0
+    own = remembering_walks(motion, shape, step, n_step, rng)
+    common = remembering_walks(motion, (shape[0], 1), step, n_step, rng) if motion.shared > 0 else 0.0
     z = np.sqrt(motion.shared) * common + np.sqrt(1.0 - motion.shared) * own
     corners = polygon(shape[1], start_separation) if shape[1] > 1 else np.zeros((1, 2))
     z = z + (corners[:, 0] + 1j * corners[:, 1])[:, None]
@@ -121,7 +121,9 @@ def drifting_particles(
     return as_tracks_and_pairs(position, step, rng, position_error)
 
 
-def _walks(motion: Motion, shape: tuple[int, int], step: float, n_step: int, rng: np.random.Generator) -> np.ndarray:
+def remembering_walks(
+    motion: Motion, shape: tuple[int, int], step: float, n_step: int, rng: np.random.Generator
+) -> np.ndarray:
     r"""(shape, n_step) complex positions, from the exact joint law of velocity and displacement over a step.
 
     With w = u + i v and l = gamma + i omega, dw = -l w dt + dW: the new velocity is a w + xi, a = exp(-l h),

@@ -12,7 +12,7 @@ from regimes.cases.problems import describe, headed
 from regimes.errors import CaseError
 from regimes.synthetic.contaminations import EQUATORIAL, Convergence, Oscillation, Shear
 from regimes.synthetic.sections import NotNegative, Positive, Section, Share, Text, Vector, rule
-from regimes.synthetic.worlds import FourierWorld, KernelWorld
+from regimes.synthetic.worlds import FourierWorld, KernelWorld, ShearDiffusionWorld
 
 
 class Releases(Section):
@@ -60,11 +60,15 @@ class Place(Section):
     spread_km: NotNegative = 0.0
     drift_m_s: Vector = (0.0, 0.0)
     wandering_m2_s: NotNegative = 0.0
+    eddy_speed_m_s: NotNegative | None = None
+    eddy_time_d: Positive | None = None
 
     @model_validator(mode="after")
     def _both_or_none(self) -> "Place":
         if (self.longitude is None) != (self.latitude is None):
             raise rule("one of longitude and latitude", "give both, or none for a plane")
+        if (self.eddy_speed_m_s is None) != (self.eddy_time_d is None):
+            raise rule("one of eddy_speed_m_s and eddy_time_d", "give both, or none")
         return self
 
     @property
@@ -74,12 +78,13 @@ class Place(Section):
 
 
 class Recipe(Section):
-    """A synthetic survey: either a `kernel` or a `fourier` world, and what is added to its motion."""
+    """A synthetic survey: a `kernel`, a `fourier` or a `shear_diffusion` world, and what is added to its motion."""
 
     name: Text
     seed: Annotated[int, Field(ge=0)]
     kernel: KernelWorld | None = None
     fourier: FourierWorld | None = None
+    shear_diffusion: ShearDiffusionWorld | None = None
     releases: Releases
     records: Records
     place: Place = Place()
@@ -89,8 +94,10 @@ class Recipe(Section):
 
     @model_validator(mode="after")
     def _one_world(self) -> "Recipe":
-        if (self.kernel is None) == (self.fourier is None):
-            raise rule("both or neither of [kernel] and [fourier]", "give one world")
+        given = sum(world is not None for world in (self.kernel, self.fourier, self.shear_diffusion))
+        if given != 1:
+            got = "none" if given == 0 else f"{given}"
+            raise rule(f"{got} of [kernel], [fourier] and [shear_diffusion]", "give one world")
         return self
 
     @model_validator(mode="after")
@@ -108,9 +115,9 @@ class Recipe(Section):
         return self
 
     @property
-    def world(self) -> KernelWorld | FourierWorld:
+    def world(self) -> KernelWorld | FourierWorld | ShearDiffusionWorld:
         """The one world that is given."""
-        return self.kernel or self.fourier
+        return self.kernel or self.fourier or self.shear_diffusion
 
 
 def load_recipe(path: str | Path) -> Recipe:

@@ -7,6 +7,7 @@ import numpy as np
 from pydantic import Field, model_validator
 
 from regimes.synthetic.sections import Lengths, NotNegative, Numbers, Positive, Section, Share, rule
+from regimes.synthetic.shear_diffusion import ShearDiffusion
 from regimes.synthetic.spectrum import Spectrum
 from regimes.theory.kernel import Kernel
 from regimes.theory.regimes import REGIMES
@@ -83,3 +84,16 @@ class FourierWorld(Section):
             self.persistence,
             self.modes_per_octave,
         )
+
+
+class ShearDiffusionWorld(Section):
+    """A linear shear in which every particle diffuses alike; no kernel, for it has a direction."""
+
+    diffusivity_m2_s: Positive
+    rate_per_d: float
+    direction_deg: float = 0.0
+
+    @property
+    def flow(self) -> ShearDiffusion:
+        """The flow."""
+        return ShearDiffusion(self.diffusivity_m2_s, self.rate_per_d / DAY, self.direction_deg)
