@@ -172,6 +172,11 @@ class Analysis:
         """The verdict in a few sentences."""
         return self.verdict.sentence
 
+    @property
+    def healthy(self) -> bool:
+        """Whether the sampling converged."""
+        return self.verdict.healthy
+
     def summary(self) -> str:
         """What was analysed and what came out, as a few lines of text."""
         origin = self.provenance
@@ -210,6 +215,11 @@ class SinglesOnly:
     ratios: tuple[Ratio, ...]
     sentence: str
     reasons: tuple[str, ...]
+
+    @property
+    def healthy(self) -> bool:
+        """True: nothing was sampled."""
+        return True
 
     def summary(self) -> str:
         """What was analysed and what came out, as a few lines of text."""

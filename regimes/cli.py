@@ -134,11 +134,11 @@ def _run(chosen: argparse.Namespace) -> int:
     with _Watch() as report:
         analysis = analyse(case, progress=report, jobs=chosen.jobs or os.cpu_count() or 1, seed=chosen.seed)
     files = write_report(analysis, folder)
-    verdict = analysis.verdict
-    _tell(verdict.sentence)
+    _tell(analysis.sentence)
     _tell(f"report: {_short(files['report.html'])}")
-    if not verdict.healthy:
-        return _say(f"regimes: sampling did not converge: {verdict.health_reason}; the report says so", UNHEALTHY)
+    if not analysis.healthy:
+        reason = analysis.verdict.health_reason
+        return _say(f"regimes: sampling did not converge: {reason}; the report says so", UNHEALTHY)
     return DONE
 
 

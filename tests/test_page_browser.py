@@ -89,7 +89,7 @@ def test_nothing_is_cut_off_or_scrolls_sideways(seen):
 
 def test_every_figure_is_drawn(seen):
     width, found = seen
-    assert len(found["boxes"]) == 8
+    assert len(found["boxes"]) == 10
     for box in found["boxes"]:
         assert box["width"] > 0.8 * min(width, 500)
         assert 0.5 < box["height"] / box["width"] < 1.2

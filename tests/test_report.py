@@ -15,7 +15,7 @@ from regimes.errors import CaseError
 from regimes.inference.health import Health
 from regimes.report import check_folder, verdict_document, write_report
 from regimes.report import files as files_module
-from regimes.report.figures import FIGURES, draw, svg
+from regimes.report.figures import FIGURES, draw, names_of, svg
 from regimes.report.page import page
 from regimes.report.verdict_json import plain, verdict_text
 from tests.report_fixture import demo_analysis, singles_only, use_drawings_made_before, with_verdict
@@ -121,11 +121,11 @@ def test_headings_descend_one_level_at_a_time(outline):
 
 def test_every_figure_has_words_for_those_who_cannot_see_it(outline):
     drawings = [a for tag, a in outline.tags if tag == "svg"]
-    assert len(drawings) == 8
+    assert len(drawings) == 10
     for attributes in drawings:
         assert attributes["role"] == "img"
         assert attributes["aria-labelledby"] in outline.ids
-    assert sum(tag == "figcaption" for tag, _ in outline.tags) == 8
+    assert sum(tag == "figcaption" for tag, _ in outline.tags) == 10
 
 
 def test_page_says_verdict_reasons_cautions_and_method(analysis, outline):
@@ -193,6 +193,75 @@ def test_report_of_an_analysis_that_found_little(analysis):
     text = Outline(page(found, {name: svg(draw(name, found), name) for name in FIGURES})).text
     for said in ("None fits", "None was raised", "No slope is quoted", "there is no second opinion"):
         assert said in text
+
+
+def test_page_says_what_single_particles_say(analysis, outline):
+    single = analysis.single
+    kappa = single.diffusivity.mean
+    # two digits of the uncertainty, which is some hundreds of m2/s here: tens are printed
+    assert 100.0 < (kappa.high - kappa.low) / 3.92 < 990.0
+    shown = [round(x / 10) * 10 for x in (kappa.value, kappa.low, kappa.high)]
+    assert "diffusivity, mean of both axes {} m²/s {} to {} m²/s".format(*shown) in outline.text
+    assert "plateau of the relative over twice the single-particle diffusivity 0.94" in outline.text
+    assert "Lagrangian length over the deformation radius 1.13" in outline.text
+    assert "9. Single particles: memory of the velocity" in outline.text
+    assert outline.ids.index("second") < outline.ids.index("single") < outline.ids.index("reading")
+
+
+def test_page_says_why_single_particles_say_nothing(analysis):
+    missing = singles_only(False).single_missing
+    bare = replace(analysis, single=None, single_missing=missing, ratios=())
+    drawn = {name: svg(draw(name, bare), name) for name in names_of(bare)}
+    assert list(drawn) == list(FIGURES)[:8]
+    text = Outline(page(bare, drawn)).text
+    assert f"say nothing here: {missing}." in text
+    assert "Nothing is held against a deformation radius" in text
+
+
+def test_cautions_of_single_particles_are_shown_as_sentences(analysis, drawings):
+    rough = replace(analysis, single=replace(analysis.single, cautions=("3 units only: rough", "slow parts are lost")))
+    text = Outline(page(rough, drawings)).text
+    assert "3 units only: rough." in text
+    assert "Slow parts are lost." in text
+
+
+# Without a pair
+
+
+@pytest.mark.parametrize("single", [True, False])
+def test_report_without_a_pair(single, tmp_path):
+    found = singles_only(single)
+    written = write_report(found, tmp_path / "r")
+    figures = {f"figures/{name}.{end}" for name in ("correlation", "absolute") for end in ("svg", "pdf")}
+    assert set(written) == {"report.html", "verdict.json", "curves.csv"} | (figures if single else set())
+    assert {p for p in (tmp_path / "r").rglob("*") if p.is_file()} == set(written.values())
+    outline = Outline(written["report.html"].read_text(encoding="utf-8"))
+    assert len(outline.ids) == len(set(outline.ids))
+    assert "Undecided There are no pair statistics, because there is no pair: no launched pair" in outline.text
+    assert outline.text.count("search and rescue") == 1
+    assert sum(tag == "svg" for tag, _ in outline.tags) == (2 if single else 0)
+    assert ("1. Single particles: memory of the velocity" in outline.text) == single
+    assert (f"say nothing here: {found.single_missing}." in outline.text) != single
+    assert "nan" not in outline.text.lower().split()
+    links = {a["href"] for tag, a in outline.tags if tag == "a"}
+    assert links == {"verdict.json", "curves.csv"} | ({"figures/"} if single else set())
+
+
+def test_report_with_and_without_a_pair_take_each_others_place(analysis, light, tmp_path):
+    write_report(analysis, tmp_path / "r")
+    written = write_report(singles_only(False), tmp_path / "r")
+    assert {p for p in (tmp_path / "r").rglob("*") if p.is_file()} == set(written.values())
+    assert write_report(analysis, tmp_path / "r")["posterior.nc"].exists()
+
+
+def test_summary_without_a_pair_says_what_there_is():
+    found = singles_only()
+    head, sentence, *rest = found.summary().splitlines()
+    assert head == "invented bank: 36 particles, no pair"
+    assert sentence == found.sentence
+    assert "\n".join(rest) == found.single.summary()
+    assert "<td>" in found._repr_html_()
+    assert singles_only(False)._repr_html_() == f"<p>{found.sentence}</p>"
 
 
 # The folder

@@ -10,9 +10,12 @@ import pytest
 from matplotlib.collections import FillBetweenPolyCollection
 from matplotlib.figure import Figure
 
+from regimes.particles import single_particle
 from regimes.report import figures
 from regimes.report.captions import caption, description
 from regimes.report.figures.style import COLOUR, INK, SKY, log_axis, prefixed, svg
+from regimes.report.single import number_rows
+from regimes.synthetic.particles import Motion, drifting_particles
 from regimes.verdict.record import Interval, Slope, Supported
 from tests.report_fixture import demo_analysis, with_verdict
 
@@ -49,6 +52,48 @@ def test_no_window_system_and_no_global_setting_is_touched(analysis):
     assert dict(matplotlib.rcParams) == before
     code = "import sys, regimes.report; sys.exit('matplotlib.pyplot' in sys.modules)"
     assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0
+
+
+def test_correlation_and_its_integral_are_those_of_the_record(analysis):
+    ax = figures.plot_correlation(analysis)
+    found = analysis.single.correlation
+    right = next(other for other in ax.figure.axes if other is not ax)
+    drawn = next(line for line in ax.lines if line.get_label() == "both")
+    assert np.allclose(drawn.get_xdata() * SECONDS_A_DAY, found.lag, rtol=1e-12)  # round-off
+    assert np.array_equal(drawn.get_ydata(), found.both)
+    assert np.allclose(right.lines[0].get_ydata() * SECONDS_A_DAY, found.integral, rtol=1e-12)  # round-off
+    zeros = [axes.transData.transform((0.0, 0.0))[1] for axes in (ax, right)]
+    assert zeros[0] == pytest.approx(zeros[1], abs=1e-6)  # one zero for both axes: round-off
+    for axes, low in ((ax, min(found.low.min(), found.north.min())), (right, found.integral_low.min() / SECONDS_A_DAY)):
+        assert axes.get_ylim()[0] <= low
+
+
+def test_absolute_dispersion_lies_between_taylors_limits(analysis):
+    # Taylor 1921: 2 u'^2 t^2 early and 4 kappa t late, for both components together
+    ax = figures.plot_absolute(analysis)
+    single = analysis.single
+    early, late = (next(line for line in ax.lines if line.get_label() == f"{w} limit") for w in ("early", "late"))
+    t, y = early.get_data()
+    assert np.allclose(y * 1e6, 2 * single.velocity.value**2 * (t * SECONDS_A_DAY) ** 2, rtol=1e-12)  # round-off
+    t, y = late.get_data()
+    assert np.allclose(y * 1e6, 4 * single.diffusivity.mean.value * t * SECONDS_A_DAY, rtol=1e-12)  # round-off
+    line = _errorbar(ax, "total, 95 %")[0]
+    curve = single.dispersion.total
+    # records of 60 days, of which a third is shown where their own mean was removed
+    assert line.get_xdata().max() == pytest.approx(20.0, rel=0.1)
+    shown = curve.axis <= line.get_xdata().max() * SECONDS_A_DAY * (1 + 1e-9)
+    assert np.allclose(line.get_ydata() * 1e6, curve.value[shown], rtol=1e-12)  # round-off
+    whole = replace(analysis, single=replace(single, mean="none"))
+    assert _errorbar(figures.plot_absolute(whole), "total, 95 %")[0].get_xdata().max() == pytest.approx(60.0)
+
+
+def test_single_figures_of_one_particle_have_no_bars(analysis):
+    tracks, _ = drifting_particles(Motion(0.04, 1.0 / (2 * SECONDS_A_DAY)), (1, 1), 21600.0, 241, 4)
+    alone = replace(analysis, single=single_particle(tracks))
+    (bars,) = _errorbar(figures.plot_absolute(alone), "total, 95 %")[2]
+    assert all(np.ptp(segment[:, 1]) == 0 for segment in bars.get_segments())
+    assert np.isfinite(figures.plot_correlation(alone).get_ylim()).all()
+    assert "fewer than two" in str(number_rows(alone.single))
 
 
 def _errorbar(ax, label):

@@ -20,7 +20,7 @@ from regimes.report.tables import (
     write_curves_netcdf,
 )
 from regimes.verdict.record import Interval, Slope
-from tests.report_fixture import demo_analysis, with_verdict
+from tests.report_fixture import demo_analysis, singles_only, with_verdict
 
 
 @pytest.fixture(scope="module")
@@ -120,6 +120,33 @@ def test_csv_and_netcdf_say_the_same(analysis, tmp_path):
                 # eight significant digits are printed
                 assert np.allclose(data[name].values, rows[column], rtol=5e-8, equal_nan=True), name
             assert np.array_equal(data[f"{key}_n_cluster"].values, rows.n_cluster)
+
+
+def test_single_particles_stand_below_the_pairs(analysis, tmp_path):
+    write_curves_csv(analysis, tmp_path / "c.csv")
+    table = pd.read_csv(tmp_path / "c.csv")
+    single = analysis.single
+    rows = table[table.curve == "absolute_dispersion"]
+    parts = [table[table.curve == f"absolute_dispersion_{name}"].value.to_numpy() for name in ("east", "north")]
+    assert np.allclose(sum(parts), rows.value, rtol=1e-7)  # eight printed digits
+    assert np.allclose(rows.hi95 - rows.value, 1.96 * rows.standard_error, rtol=1e-6)  # eight printed digits
+    memory = table[table.curve == "velocity_autocorrelation"]
+    assert memory.value.iloc[0] == 1.0  # exact
+    assert memory.axis_value.iloc[-1] == pytest.approx(single.window)
+    integral = table[table.curve == "running_integral"].value.to_numpy()
+    step = memory.axis_value.iloc[1]
+    # trapezia, by hand; eight printed digits
+    assert integral[2] == pytest.approx(step * (0.5 + memory.value.iloc[1] + 0.5 * memory.value.iloc[2]), rel=1e-6)
+    assert set(rows.n_pair) == {0}
+    assert set(memory.n_cluster) == {single.n_unit}
+
+
+@pytest.mark.parametrize("single", [True, False])
+def test_curves_without_a_pair(single, tmp_path):
+    write_curves_csv(singles_only(single), tmp_path / "c.csv")
+    table = pd.read_csv(tmp_path / "c.csv")
+    assert tuple(table.columns) == COLUMNS
+    assert len(set(table.curve)) == (9 if single else 0)
 
 
 def test_netcdf_names_every_unit_and_long_name(analysis, tmp_path):

@@ -2,7 +2,8 @@
 
 from collections.abc import Callable
 
-from regimes.analysis import Analysis
+from regimes.analysis import Analysis, SinglesOnly
+from regimes.report import single
 from regimes.report.digits import count, probability, significant, span
 from regimes.report.words import DECISIONS, DISPLAY
 from regimes.units import KM
@@ -17,17 +18,18 @@ TITLES = {
     "mean-log": "Check: geometric mean separation",
     "passage": "Check: relative dispersion since first passage",
     "dispersion": "Relative dispersion since the start of the pairs",
-}
+} | single.TITLES
 
 
-def caption(name: str, analysis: Analysis) -> str:
+def caption(name: str, analysis: Analysis | SinglesOnly) -> str:
     """Caption of the figure of that name, to be read without the text around it."""
-    return _CAPTIONS[name](analysis)
+    return single.caption(name, analysis) if name in single.TITLES else _CAPTIONS[name](analysis)
 
 
-def description(name: str, analysis: Analysis) -> str:
+def description(name: str, analysis: Analysis | SinglesOnly) -> str:
     """What the figure shows, in words, for readers who cannot see it."""
-    return f"{TITLES[name]}. {_SHOWN[name](analysis)}"
+    said = single.shown(name, analysis) if name in single.TITLES else _SHOWN[name](analysis)
+    return f"{TITLES[name]}. {said}"
 
 
 FEW = (

@@ -5,26 +5,32 @@ import os
 import tempfile
 from pathlib import Path
 
-from regimes.analysis import Analysis
+from regimes.analysis import Analysis, SinglesOnly
 from regimes.errors import CaseError
-from regimes.report.figures import FIGURES, draw, pdf, svg
+from regimes.report.figures import FIGURES, draw, names_of, pdf, svg
 from regimes.report.page import page
 from regimes.report.posterior import write_posterior
+from regimes.report.singles_page import singles_page
 from regimes.report.tables import write_curves_csv, write_curves_netcdf, write_tex
 from regimes.report.verdict_json import verdict_text
 
 FILES = ("report.html", "verdict.json", "curves.csv", "curves.nc", "posterior.nc", "table.tex")
-FIGURE_FILES = tuple(f"figures/{name}.{suffix}" for name in FIGURES for suffix in ("svg", "pdf"))
+WITHOUT_PAIRS = ("report.html", "verdict.json", "curves.csv")
 
 
-def write_report(analysis: Analysis, folder: str | Path) -> dict[str, Path]:
-    """Write the page, the figures, the tables and the draws.
+def figure_files(names) -> tuple[str, ...]:
+    """Files of the figures of these names."""
+    return tuple(f"figures/{name}.{suffix}" for name in names for suffix in ("svg", "pdf"))
+
+
+def write_report(analysis: Analysis | SinglesOnly, folder: str | Path) -> dict[str, Path]:
+    """Write the page, the figures, the tables and the draws; of data without a pair what there is of these.
 
     Everything is written to a folder beside the final one and moved when it is complete.
 
     Parameters
     ----------
-    analysis : Analysis
+    analysis : Analysis or SinglesOnly
     folder : str or Path
         New, empty, or an earlier report with nothing else in it, which is replaced.
 
@@ -51,7 +57,8 @@ def write_report(analysis: Analysis, folder: str | Path) -> dict[str, Path]:
             f"report folder: got {folder}, which cannot be written ({error.strerror or error}); "
             "must be a place where files may be created; choose another with --out"
         ) from error
-    return {name: folder / name for name in (*FILES, *FIGURE_FILES)}
+    written = WITHOUT_PAIRS if isinstance(analysis, SinglesOnly) else FILES
+    return {name: folder / name for name in (*written, *figure_files(names_of(analysis)))}
 
 
 def _put_in_place(new: Path, folder: Path, aside: Path) -> None:
@@ -91,7 +98,7 @@ def check_folder(folder: str | Path) -> Path:
         ) from error
     if not found:
         return folder
-    foreign = sorted(found - {*FILES, *FIGURE_FILES})
+    foreign = sorted(found - {*FILES, *figure_files(FIGURES)})
     if foreign or not _is_report(folder / "verdict.json"):
         what = f"{foreign[0]} in it" if foreign else "no verdict.json of an earlier report in it"
         raise CaseError(
@@ -108,17 +115,23 @@ def _is_report(path: Path) -> bool:
         return False
 
 
-def _write_all(analysis: Analysis, folder: Path) -> None:
-    (folder / "figures").mkdir()
+def _write_all(analysis: Analysis | SinglesOnly, folder: Path) -> None:
+    names = names_of(analysis)
+    if names:
+        (folder / "figures").mkdir()
     drawings = {}
-    for name in FIGURES:
+    for name in names:
         figure = draw(name, analysis)
         drawings[name] = svg(figure, name)
         (folder / "figures" / f"{name}.svg").write_text(drawings[name], encoding="utf-8", newline="\n")
         (folder / "figures" / f"{name}.pdf").write_bytes(pdf(figure, name))
     write_curves_csv(analysis, folder / "curves.csv")
-    write_curves_netcdf(analysis, folder / "curves.nc")
-    write_posterior(analysis, folder / "posterior.nc")
-    write_tex(analysis, folder / "table.tex")
-    (folder / "report.html").write_text(page(analysis, drawings), encoding="utf-8", newline="\n")
+    if isinstance(analysis, SinglesOnly):
+        text = singles_page(analysis, drawings)
+    else:
+        text = page(analysis, drawings)
+        write_curves_netcdf(analysis, folder / "curves.nc")
+        write_posterior(analysis, folder / "posterior.nc")
+        write_tex(analysis, folder / "table.tex")
+    (folder / "report.html").write_text(text, encoding="utf-8", newline="\n")
     (folder / "verdict.json").write_text(verdict_text(analysis), encoding="utf-8", newline="\n")

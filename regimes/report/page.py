@@ -1,20 +1,16 @@
 """The report page: one HTML file that needs nothing else."""
 
-import math
-import re
-from importlib import resources
 from typing import Any
 
-from jinja2 import Environment, PackageLoader, StrictUndefined
-from markupsafe import Markup, escape
-
 from regimes.analysis import Analysis
-from regimes.report.captions import TITLES, caption, description
 from regimes.report.convergence import compared_rows, convergence_rows, not_shown, opinion_rows
-from regimes.report.digits import count, fixed, probability, significant, span
+from regimes.report.digits import count, fixed, probability, span
+from regimes.report.figures import OF_SINGLES
+from regimes.report.provenance import cleaning_rows, provenance_rows
+from regimes.report.render import figures_content, render
+from regimes.report.singles_page import single_content
 from regimes.report.tables import slope_text
 from regimes.report.words import CURVES, DECISIONS, DISPLAY, sequence
-from regimes.units import DAY, HOUR, KM
 from regimes.verdict.digits import km
 from regimes.verdict.record import Slope, TransitionScale
 from regimes.verdict.rule import CHALLENGE
@@ -38,22 +34,12 @@ def page(analysis: Analysis, figures: dict[str, str]) -> str:
     str
         Self-contained: style and figures inside, no script, no network.
     """
-    loader = PackageLoader("regimes.report", "")
-    environment = Environment(loader=loader, autoescape=True, undefined=StrictUndefined)
-    environment.trim_blocks = environment.lstrip_blocks = True
-    environment.filters["typeset"] = typeset
-    style = resources.files("regimes.report").joinpath("page.css").read_text(encoding="utf-8")
-    return environment.get_template("page.html.j2").render(style=Markup(style), **_content(analysis, figures))
-
-
-def typeset(text: object) -> Markup:
-    """Text for the page: ``k^{-2}`` with a raised exponent, a true minus sign before a number."""
-    safe = re.sub(r"(?<![\w.])-(?=[\d.])", "\u2212", str(escape(text)))
-    return Markup(re.sub(r"\^\{([^{}]*)\}", r"<sup>\1</sup>", safe).replace("<sup>-", "<sup>\u2212"))
+    return render("page.html.j2", _content(analysis, figures))
 
 
 def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
     verdict, origin = analysis.verdict, analysis.provenance
+    drawn = figures_content(analysis, figures)
     sentence, reasons = _headline(analysis)
     likely = [t for t in verdict.transitions if t.probability > TRANSITIONS_FROM]
     return {
@@ -73,22 +59,15 @@ def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
         "slopes": [_slope(s) for s in verdict.slopes],
         "bayes_factor": fixed(verdict.log_bayes_factor, 1),
         "challenge": fixed(CHALLENGE, 1),
-        "figures": [
-            {
-                "name": name,
-                "title": TITLES[name],
-                "svg": _inline(svg, name, analysis),
-                "caption": caption(name, analysis),
-            }
-            for name, svg in figures.items()
-        ],
+        "figures": [figure for name, figure in drawn.items() if name not in OF_SINGLES],
+        "single": single_content(analysis, drawn),
         "opinions": opinion_rows(analysis),
         "curves": [CURVES[name] for name in analysis.fits],
         "compared": compared_rows(analysis),
         "convergence": convergence_rows(analysis),
         "more_models": not_shown(analysis),
-        "cleaning": [(reason, count(n), note) for reason, n, note in origin.cleaning],
-        "provenance": _provenance(analysis),
+        "cleaning": cleaning_rows(origin),
+        "provenance": provenance_rows(origin),
     }
 
 
@@ -130,34 +109,3 @@ def _slope(slope: Slope) -> tuple[str, str, str, str]:
         slope_text(slope),
         slope.reason,
     )
-
-
-def _provenance(analysis: Analysis) -> list[tuple[str, str]]:
-    origin = analysis.provenance
-    start = (significant(r / KM) for r in (origin.median_start, origin.start_p90))
-    gap = f"{origin.longest_gap / HOUR:g} h" if math.isfinite(origin.longest_gap) else "not recorded"
-    return [
-        ("case", origin.case),
-        ("fixes", f"{count(origin.n_fixes)} of {count(origin.n_particles)} particles, from {origin.source}"),
-        ("SHA-256 of the input", origin.sha256 or "none: the data came from memory"),
-        ("pairs", f"{count(origin.n_pairs)}, {origin.kind}"),
-        ("limit of the separation at the start", f"{origin.max_separation / KM:.3g} km"),
-        ("separation at the start", "median {} km, 90th percentile {} km".format(*start)),
-        ("duration of the pairs", f"median {significant(origin.median_duration / DAY)} d"),
-        ("common time step", f"{origin.step / HOUR:g} h"),
-        ("longest gap bridged", gap),
-        ("position error", f"{origin.position_error:g} m"),
-        ("random seed", str(origin.seed)),
-        *((f"version of {name}", version) for name, version in origin.versions.items()),
-    ]  # fmt: skip
-
-
-def _inline(svg: str, name: str, analysis: Analysis) -> Markup:
-    """SVG as part of the page: no header, scalable, with a name and a description."""
-    drawing = svg[svg.index("<svg") :]
-    drawing = re.sub(r"<metadata>.*?</metadata>\s*", "", drawing, flags=re.DOTALL)
-    head, body = drawing.split(">", 1)
-    head = re.sub(r'\s(width|height)="[^"]*"', "", head)
-    words = escape(description(name, analysis))
-    label = f"{name}-words"
-    return Markup(f'{head} role="img" aria-labelledby="{label}"><title id="{label}">{words}</title>{body}')

@@ -7,9 +7,10 @@ import numpy as np
 import pandas as pd
 import xarray as xr
 
-from regimes.analysis import Analysis
+from regimes.analysis import Analysis, SinglesOnly
 from regimes.curves import Curve
 from regimes.report.digits import probability, span
+from regimes.report.single_tables import single_frames, single_variables
 from regimes.report.words import CURVES, DISPLAY
 from regimes.verdict.digits import km
 from regimes.verdict.digits import slope_text as alpha
@@ -72,13 +73,16 @@ def curve_table(analysis: Analysis) -> pd.DataFrame:
     return table.astype({"n_cluster": int, "n_pair": int})
 
 
-def write_curves_csv(analysis: Analysis, path: Path) -> None:
-    """`curve_table` as CSV; empty where not determined."""
-    curve_table(analysis).to_csv(path, index=False, float_format="%.8g", lineterminator="\n")
+def write_curves_csv(analysis: Analysis | SinglesOnly, path: Path) -> None:
+    """`curve_table` and the curves of single particles as CSV; empty where not determined."""
+    frames = [] if isinstance(analysis, SinglesOnly) else [curve_table(analysis)]
+    frames += [] if analysis.single is None else single_frames(analysis.single)
+    table = pd.concat(frames, ignore_index=True) if frames else pd.DataFrame(columns=list(COLUMNS))
+    table.to_csv(path, index=False, float_format="%.8g", lineterminator="\n")
 
 
 def write_curves_netcdf(analysis: Analysis, path: Path) -> None:
-    """`curve_table` and the predicted bands as netCDF, with units and long names."""
+    """`curve_table`, the predicted bands and the curves of single particles as netCDF, with units and long names."""
     table = curve_table(analysis)
     variables: dict[str, tuple] = {}
     for key, (curve, _) in curves_of(analysis).items():
@@ -96,7 +100,7 @@ def write_curves_netcdf(analysis: Analysis, path: Path) -> None:
         for column, words in (("n_cluster", "clusters"), ("n_pair", "pairs")):
             attributes = {"units": "1", "long_name": f"number of {words} behind {curve.name}"}
             variables[f"{key}_{column}"] = ((axis,), rows[column].to_numpy(), attributes)
-    variables.update(_rate_variables(analysis) | _band_variables(analysis))
+    variables.update(_rate_variables(analysis) | _band_variables(analysis) | single_variables(analysis.single))
     xr.Dataset(variables, _coordinates(analysis), _header(analysis)).to_netcdf(path, engine="h5netcdf")
 
 

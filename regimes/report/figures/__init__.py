@@ -5,11 +5,12 @@ from collections.abc import Callable
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from regimes.analysis import Analysis
+from regimes.analysis import Analysis, SinglesOnly
 from regimes.report.figures.by_separation import plot_regimes, plot_slope
 from regimes.report.figures.dispersion import plot_dispersion, plot_mean_log, plot_passage
 from regimes.report.figures.exponent import plot_exponent
 from regimes.report.figures.posteriors import plot_slopes, plot_transitions
+from regimes.report.figures.single import plot_absolute, plot_correlation
 from regimes.report.figures.style import pdf, svg
 
 FIGURES: dict[str, Callable[..., Axes]] = {
@@ -21,12 +22,19 @@ FIGURES: dict[str, Callable[..., Axes]] = {
     "mean-log": plot_mean_log,
     "passage": plot_passage,
     "dispersion": plot_dispersion,
+    "correlation": plot_correlation,
+    "absolute": plot_absolute,
 }
+OF_SINGLES = ("correlation", "absolute")
 
 __all__ = [
     "FIGURES",
+    "OF_SINGLES",
     "draw",
+    "names_of",
     "pdf",
+    "plot_absolute",
+    "plot_correlation",
     "plot_dispersion",
     "plot_exponent",
     "plot_mean_log",
@@ -39,6 +47,13 @@ __all__ = [
 ]
 
 
-def draw(name: str, analysis: Analysis) -> Figure:
+def names_of(analysis: Analysis | SinglesOnly) -> tuple[str, ...]:
+    """Names of the figures that can be drawn, in order of appearance."""
+    left_out = () if analysis.single is not None else OF_SINGLES
+    names = OF_SINGLES if isinstance(analysis, SinglesOnly) else tuple(FIGURES)
+    return tuple(name for name in names if name not in left_out)
+
+
+def draw(name: str, analysis: Analysis | SinglesOnly) -> Figure:
     """The figure of that name in `FIGURES`, on its own."""
     return FIGURES[name](analysis).get_figure()

@@ -12,7 +12,7 @@ from matplotlib.axis import Axis
 from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter, NullLocator
 
-from regimes.analysis import Analysis
+from regimes.analysis import Analysis, SinglesOnly
 
 # Okabe & Ito (2008), Color universal design: values of their palette.
 BLACK, BLUE, ORANGE, GREEN = "#000000", "#0072B2", "#E69F00", "#009E73"
@@ -54,11 +54,11 @@ STYLE = {
 }
 
 
-def figure_function(plot: Callable[[Analysis, Axes], Axes]) -> Callable[..., Axes]:
+def figure_function(plot: Callable[..., Axes]) -> Callable[..., Axes]:
     """Give a plotting function an optional `ax` and the common style, without touching global settings."""
 
     @wraps(plot)
-    def drawn(analysis: Analysis, ax: Axes | None = None) -> Axes:
+    def drawn(analysis: Analysis | SinglesOnly, ax: Axes | None = None) -> Axes:
         with matplotlib.rc_context(STYLE):
             return plot(analysis, new_axes() if ax is None else ax)
 
