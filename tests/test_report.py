@@ -18,6 +18,7 @@ from regimes.report import files as files_module
 from regimes.report.figures import FIGURES, draw, names_of, svg
 from regimes.report.page import page
 from regimes.report.verdict_json import plain, verdict_text
+from regimes.verdict.record import OuterScale
 from tests.report_fixture import demo_analysis, singles_only, use_drawings_made_before, with_verdict
 
 VOID = {"meta", "link", "br", "img", "input", "hr"}  # elements without an end, HTML standard, section 13.1.2
@@ -408,6 +409,19 @@ def test_document_numbers_are_those_of_the_verdict(analysis):
     none = [s for s in document["slopes"] if s["kind"] == "none"]
     assert none
     assert all(s["median"] is None for s in none)
+
+
+def test_end_of_a_spectrum_is_in_the_document_and_on_the_page(analysis, schema):
+    ended = replace(analysis.verdict.slopes[1], outer_scale=OuterScale(8.1e4, 5e4, 1.3e5), log_bayes_factor_end=1.5)
+    found = with_verdict(analysis, slopes=(ended, analysis.verdict.slopes[0]))
+    document = verdict_document(found)
+    schema.validate(document)
+    first, second = document["slopes"]
+    assert first["outer_scale_km"] == {"median": 81.0, "lo95": 50.0, "hi95": 130.0}
+    assert first["log_bayes_factor_end"] == 1.5
+    assert second["outer_scale_km"] == {"median": None, "lo95": None, "hi95": None}
+    assert second["log_bayes_factor_end"] is None
+    assert "the spectrum may end near 81 km (50 to 130, 95 %)" in Outline(page(found, {})).text
 
 
 def test_document_of_single_particles_is_that_of_the_record(analysis):

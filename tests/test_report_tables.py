@@ -14,12 +14,13 @@ from regimes.report.posterior import write_posterior
 from regimes.report.tables import (
     COLUMNS,
     curve_table,
+    end_text,
     slope_text,
     tex_table,
     write_curves_csv,
     write_curves_netcdf,
 )
-from regimes.verdict.record import Interval, Slope
+from regimes.verdict.record import Interval, OuterScale, Slope
 from tests.report_fixture import demo_analysis, singles_only, with_verdict
 
 
@@ -84,6 +85,20 @@ def test_slope_words():
     assert slope_text(slope("lower_bound", lo95=2.41)) == "\u2265 2.4"
     assert slope_text(slope("upper_bound", hi95=1.52)) == "\u2264 1.5"
     assert slope_text(slope("none")) == "none quoted"
+
+
+@pytest.mark.parametrize(
+    ("scale", "words"),
+    [
+        ((8.1e4, 5e4, 1.3e5), "the spectrum may end near 81 km (50 to 130, 95 %)"),
+        ((np.nan, 5e4, np.nan), "if the spectrum ends, then beyond 50 km (95 %)"),
+        ((np.nan, np.nan, 1.3e5), "if the spectrum ends, then below 130 km (95 %)"),
+        ((np.nan, np.nan, np.nan), ""),
+    ],
+)
+def test_words_of_the_outer_scale(scale, words):
+    value = Interval(*[float("nan")] * 5)
+    assert end_text(Slope(1e3, 1e4, "exit_rate", value, "none", "", OuterScale(*scale), 0.5)) == words
 
 
 # Curves

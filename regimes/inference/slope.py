@@ -7,11 +7,14 @@ from scipy.special import logsumexp
 
 from regimes.inference.average import Posterior, local_exponents, mixed_slopes
 from regimes.inference.models import Model, Space
-from regimes.inference.quadrature import integrate
+from regimes.inference.quadrature import Quadrature, integrate
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 
 LEAST_STEPS = 3  # intervals that a slope is fitted to
 CHANGING = np.log(3.0)  # ln Bayes factor of a changing exponent over a constant one
+TOO_FEW = f"fewer than {LEAST_STEPS} resolved intervals lie inside"
+DIFFUSIVE = "the range is diffusive, which implies no spectrum"
+_BENT = (("free", "free"), ("free", "diffusive"), ("exponential", "free"))
 _TAIL = 0.025
 _LEAST_DRAWS = 20  # between the ends; with fewer, all of the posterior lies at the end
 
@@ -63,26 +66,46 @@ def slope_over(likelihood: ExitRateLikelihood, low: float, high: float, rng, siz
     exponent is constant, and that is checked here.
     """
     part, low, high = inside_range(likelihood, low, high)
-    empty = np.empty(0)
     if part is None:
-        return RangeSlope(low, high, empty, "none", f"fewer than {LEAST_STEPS} resolved intervals lie inside")
+        return no_slope(low, high, TOO_FEW)
+    constant = power_law(part)
+    reason = another_shape(part, constant.log_evidence)
+    if reason:
+        return no_slope(low, high, reason)
+    return judged(low, high, constant.sample(2 * size, rng)[:, 1])
+
+
+def power_law(part: ExitRateLikelihood) -> Quadrature:
+    """One free power law fitted to the intervals of a range."""
+    return integrate(part, Model(("free",)), _space(part))
+
+
+def another_shape(part: ExitRateLikelihood, log_evidence: float) -> str:
+    """Why one slope does not describe a range; empty where it does.
+
+    Parameters
+    ----------
+    part : ExitRateLikelihood
+        Intervals of the range.
+    log_evidence : float
+        Of the kernels with one slope.
+    """
+    space = _space(part)
+    if integrate(part, Model(("diffusive",)), space).log_evidence - log_evidence > CHANGING:
+        return DIFFUSIVE
+    bent = [integrate(part, Model(pieces), space) for pieces in _BENT]
+    others = [b.log_evidence for b in bent if b is not None]
+    if others and logsumexp(others) - np.log(len(others)) - log_evidence > CHANGING:
+        return "the exponent changes inside the range"
+    return ""
+
+
+def _space(part: ExitRateLikelihood) -> Space:
+    """Range and prior: ln rate within 12 of the mean rate."""
     steps = np.diff(np.log(part.thresholds))
     middle = float(np.log(part.exits.sum() * steps.mean() / part.risk.sum()))
-    space = Space(
-        float(part.thresholds[0]), float(part.thresholds[-1]), float(steps.mean()), (middle - 12, middle + 12)
-    )
-    constant = integrate(part, Model(("free",)), space)
-    flat = integrate(part, Model(("diffusive",)), space)
-    if flat.log_evidence - constant.log_evidence > CHANGING:
-        return RangeSlope(low, high, empty, "none", "the range is diffusive, which implies no spectrum")
-    bent = [
-        integrate(part, Model(p), space) for p in (("free", "free"), ("free", "diffusive"), ("exponential", "free"))
-    ]
-    others = [b.log_evidence for b in bent if b is not None]
-    if others and logsumexp(others) - np.log(len(others)) - constant.log_evidence > CHANGING:
-        return RangeSlope(low, high, empty, "none", "the exponent changes inside the range")
-    draws = np.clip(constant.sample(2 * size, rng)[:, 1], 1.0, 3.0)  # the prior goes on beyond, the kernel does not
-    return _judged(low, high, draws)
+    low, high = float(part.thresholds[0]), float(part.thresholds[-1])
+    return Space(low, high, float(steps.mean()), (middle - 12, middle + 12))
 
 
 def mixed_slope_over(posteriors, low: float, high: float, rng, size: int = 4000) -> RangeSlope:
@@ -92,20 +115,27 @@ def mixed_slope_over(posteriors, low: float, high: float, rng, size: int = 4000)
     slopes = mixed_slopes(posteriors, middles, size, rng)
     diffusive = float(np.mean(np.isnan(slopes)))
     if diffusive > 0.5:
-        return RangeSlope(low, high, np.empty(0), "none", "the range is diffusive, which implies no spectrum")
+        return no_slope(low, high, DIFFUSIVE)
     draws = 2.0 * local_exponents(slopes).mean(axis=1) - 1.0
-    return _judged(low, high, draws)
+    return judged(low, high, draws)
 
 
-def _judged(low: float, high: float, draws) -> RangeSlope:
-    """The slope with its kind; a bound keeps only draws between the saturated ends.
+def no_slope(low: float, high: float, reason: str) -> RangeSlope:
+    """A range over which no slope is quoted."""
+    return RangeSlope(low, high, np.empty(0), "none", reason)
 
-    The prior beyond 3 (or below 1) decides how much of the posterior sits at the end, and would pull the bound there:
-    with it, bounds printed at 95 % held in 83 % of simulated cases of alpha 2.6 in a short range.
+
+def judged(low: float, high: float, draws) -> RangeSlope:
+    """The slope with its kind, from draws of alpha; a bound keeps only draws between the saturated ends.
+
+    The prior goes on beyond 1 and 3, the kernel does not. How far the prior goes decides how much of the posterior sits
+    at the end, and would pull the bound there: with it, bounds printed at 95 % held in 83 % of simulated cases of alpha
+    2.6 in a short range.
     """
+    draws = np.clip(draws, 1.0, 3.0)
     kind, reason = classify(draws)
     if kind == "none":
-        return RangeSlope(low, high, np.empty(0), kind, reason)
+        return no_slope(low, high, reason)
     if kind != "estimate":
         between = draws[(draws > 1.0 + 1e-9) & (draws < 3.0 - 1e-9)]
         end = 3.0 if kind == "lower_bound" else 1.0

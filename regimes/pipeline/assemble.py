@@ -6,7 +6,8 @@ from regimes.analysis import Analysis, Bands, Provenance
 from regimes.curves import DispersionStatistics, default_times, dispersion_statistics
 from regimes.inference.predict import dispersion_bands, fit_p_value, mixed_kernels, rate_band
 from regimes.inference.record import Inference
-from regimes.inference.slope import mixed_slope_over, slope_over
+from regimes.inference.slope import TOO_FEW, mixed_slope_over
+from regimes.inference.slope_mixture import slope_of_either
 from regimes.pairs import Pairs
 from regimes.pipeline.options import Options
 from regimes.pipeline.origin import provenance
@@ -15,7 +16,7 @@ from regimes.pipeline.singles import cross_checks
 from regimes.tracks import Tracks
 from regimes.units import DAY
 from regimes.verdict.decide import Evidence, decide
-from regimes.verdict.numbers import by_separation, sequences, slope_record, transition_scales
+from regimes.verdict.numbers import by_separation, either_record, sequences, slope_record, transition_scales
 from regimes.verdict.record import Caution, Slope, Supported, Verdict
 from regimes.verdict.rule import CHALLENGE
 from regimes.verdict.words import methods_text, verdict_sentence
@@ -149,10 +150,10 @@ def quoted_slopes(rates: Rates, leading: Inference, second, options: Options, rn
     out = []
     for a, b in ranges:
         wished = (a, b) == options.slope_range
-        found = slope_over(rates.likelihood, a, b, rng)
-        if found.kind == "none" and found.reason.startswith("fewer") and not wished:
+        found = slope_of_either(rates.likelihood, a, b, rng)
+        if found.slope.reason == TOO_FEW and not wished:
             continue
-        out.append(slope_record(found, "exit_rate"))
+        out.append(either_record(found))
         inside = (max(a, low), min(b, high))
         if second is not None and inside[1] > 2.0 * inside[0]:
             out.append(slope_record(mixed_slope_over(second.free_posteriors(), *inside, rng), "separation"))

@@ -8,7 +8,8 @@ from regimes.inference.average import Posterior, local_exponents, mixed_slopes, 
 from regimes.inference.fit import exit_rate_space
 from regimes.inference.models import free_models, named_models
 from regimes.inference.quadrature import integrate
-from regimes.inference.slope import RangeSlope, posterior_list, slope_over
+from regimes.inference.slope import RangeSlope, posterior_list
+from regimes.inference.slope_mixture import slope_of_either
 from regimes.pairs import Pairs
 from regimes.pipeline.options import Options
 from regimes.pipeline.rates import Rates, exit_rates
@@ -60,8 +61,8 @@ class QuickFit:
         return stretches(self.called, self.rates.likelihood.thresholds)
 
     def slope(self, low: float, high: float, seed: int) -> RangeSlope:
-        """alpha over a range [m], see `slope_over`."""
-        return slope_over(self.rates.likelihood, low, high, np.random.default_rng(seed))
+        """alpha over a range [m], see `slope_of_either`."""
+        return slope_of_either(self.rates.likelihood, low, high, np.random.default_rng(seed)).slope
 
 
 def quick_fit(tracks: Tracks, pairs: Pairs, options: Options | None = None) -> QuickFit:

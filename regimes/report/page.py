@@ -9,7 +9,7 @@ from regimes.report.figures import OF_SINGLES
 from regimes.report.provenance import cleaning_rows, provenance_rows
 from regimes.report.render import figures_content, render
 from regimes.report.singles_page import single_content
-from regimes.report.tables import slope_text
+from regimes.report.tables import end_text, slope_text
 from regimes.report.words import CURVES, DECISIONS, DISPLAY, sequence
 from regimes.verdict.digits import km
 from regimes.verdict.record import Slope, TransitionScale
@@ -107,5 +107,5 @@ def _slope(slope: Slope) -> tuple[str, str, str, str]:
         f"{span(slope.low, slope.high)} km",
         CURVES[slope.curve],
         slope_text(slope),
-        slope.reason,
+        "; ".join(text for text in (slope.reason, end_text(slope)) if text),
     )

@@ -12,7 +12,7 @@ from regimes.curves import Curve
 from regimes.report.digits import probability, span
 from regimes.report.single_tables import single_frames, single_variables
 from regimes.report.words import CURVES, DISPLAY
-from regimes.verdict.digits import km
+from regimes.verdict.digits import km, km_interval
 from regimes.verdict.digits import slope_text as alpha
 from regimes.verdict.record import Slope, TransitionScale
 
@@ -205,6 +205,16 @@ def slope_text(slope: Slope) -> str:
     if slope.kind == "lower_bound":
         return f"\u2265 {alpha(value.lo95)}"
     return f"\u2264 {alpha(value.hi95)}" if slope.kind == "upper_bound" else "none quoted"
+
+
+def end_text(slope: Slope) -> str:
+    """Where the spectrum may end, as far as it is known; empty where nothing is."""
+    median, low, high = slope.outer_scale.median, slope.outer_scale.lo95, slope.outer_scale.hi95
+    if np.isfinite(median):
+        return f"the spectrum may end near {km_interval(median, low, high)}"
+    if np.isfinite(low):
+        return f"if the spectrum ends, then beyond {km(low)} km (95 %)"
+    return f"if the spectrum ends, then below {km(high)} km (95 %)" if np.isfinite(high) else ""
 
 
 def _slope_row(slope: Slope) -> str:

@@ -129,4 +129,6 @@ def _slope(slope: Slope) -> dict[str, Any]:
         **_levels(slope.value),
         "kind": slope.kind,
         "reason": slope.reason,
+        "outer_scale_km": {level: getattr(slope.outer_scale, level) / KM for level in ("median", "lo95", "hi95")},
+        "log_bayes_factor_end": slope.log_bayes_factor_end,
     }

@@ -1,11 +1,14 @@
 """From posteriors to the numbers of a verdict."""
 
+from dataclasses import replace
+
 import numpy as np
 
 from regimes.inference.average import local_exponents, mixed_slopes
 from regimes.inference.record import Inference
 from regimes.inference.slope import RangeSlope
-from regimes.verdict.record import BySeparation, Interval, Sequence, Slope, TransitionScale
+from regimes.inference.slope_mixture import EitherSlope
+from regimes.verdict.record import BySeparation, Interval, OuterScale, Sequence, Slope, TransitionScale
 
 _LEVELS = (0.5, 0.16, 0.84, 0.025, 0.975)
 _ONE_SIDED = {"lower_bound": (0.32, 0.05), "upper_bound": (0.68, 0.95)}
@@ -56,3 +59,12 @@ def slope_record(found: RangeSlope, curve: str) -> Slope:
         lower = found.kind == "lower_bound"
         value = Interval(nan, inner, nan, outer, nan) if lower else Interval(nan, nan, inner, nan, outer)
     return Slope(found.low, found.high, curve, value, found.kind, found.reason)
+
+
+def either_record(found: EitherSlope) -> Slope:
+    """Numbers of an exit-rate slope, with where the spectrum may end."""
+    return replace(
+        slope_record(found.slope, "exit_rate"),
+        outer_scale=OuterScale(*(float(v) for v in found.outer_scale)),
+        log_bayes_factor_end=float(found.log_bayes_factor_end),
+    )

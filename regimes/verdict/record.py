@@ -71,6 +71,21 @@ class TransitionScale:
 
 
 @dataclass(frozen=True, slots=True)
+class OuterScale:
+    """Longest wavelength [m] of a spectrum that ends: median and 95 % interval.
+
+    NaN where undetermined; with one end NaN the other is a one-sided 95 % bound, and there is no median.
+    """
+
+    median: float
+    lo95: float
+    hi95: float
+
+
+UNDETERMINED = OuterScale(float("nan"), float("nan"), float("nan"))
+
+
+@dataclass(frozen=True, slots=True)
 class Slope:
     """Spectral slope implied over a range of separations.
 
@@ -86,6 +101,10 @@ class Slope:
         "estimate", "lower_bound" (alpha at least lo95), "upper_bound" (at most hi95) or "none".
     reason : str
         Why it is a bound or nothing; empty for an estimate.
+    outer_scale : OuterScale
+        Where the spectrum ends, given that it does.
+    log_bayes_factor_end : float
+        ln Bayes factor of a spectrum that ends over one that does not; NaN where not compared.
     """
 
     low: float
@@ -94,6 +113,8 @@ class Slope:
     value: Interval
     kind: str
     reason: str
+    outer_scale: OuterScale = UNDETERMINED
+    log_bayes_factor_end: float = float("nan")
 
 
 @dataclass(frozen=True, slots=True)
