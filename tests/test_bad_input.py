@@ -6,7 +6,7 @@ import pytest
 
 from regimes import cli
 from regimes.errors import CaseError, DataError
-from regimes.pipeline import Options, analyse_pairs
+from regimes.pipeline import Options, SingleOptions, analyse_pairs
 from regimes.pipeline.quick import quick_fit
 from tests.test_cli import walks, write_case
 from tests.worlds import kernel, lossy_pairs
@@ -41,7 +41,6 @@ BAD = {  # fixes, changes of the case, exit code, words; data for which counting
     "in step": (moving(lambda k, h: 5e-3 * k + 1e-3 * h), {}, 3, FEW, False),
     "one pair": (moving(lambda k, h: 1e-3 * k * np.exp(h / 40)), {}, 3, "under 5 exits or 3 clusters", False),
     "closing in": (moving(lambda k, h: 3e-3 * k * np.exp(-h / 40), 4), {}, 3, FEW, False),
-    "never together": (apart(), {}, 3, "a valid position at the same time", True),
     "limits beyond the data": (walks(fixes=200), {"more": CURVES.format([5000, 20000])}, 3, FEW, False),
     "limits below the data": (walks(fixes=200), {"more": CURVES.format([1e-6, 1e-5])}, 3, FEW, False),
     "limits that fall": (walks(), {"more": CURVES.format([20, 5])}, 2, "curves.separations_km", True),
@@ -66,6 +65,16 @@ def test_one_message_and_nothing_written(what, tmp_path, monkeypatch, capsys):
             assert "internal error" not in said.err
             assert said.out == ""
         assert not (tmp_path / "reports").exists()
+
+
+def test_pairs_that_never_meet_are_no_pairs(tmp_path, monkeypatch, capsys):
+    monkeypatch.chdir(tmp_path)
+    path = write_case(tmp_path / "case", apart())
+    assert cli.main(["check", str(path)]) == 3
+    words = "no two of one release have a valid position at the same time"
+    assert words in capsys.readouterr().err
+    assert cli.main(["run", str(path)]) == 0
+    assert words in capsys.readouterr().out
 
 
 @pytest.mark.parametrize("how", ["backwards", "shuffled", "twice"])
@@ -129,3 +138,24 @@ def test_no_pairs(world):
 def test_options_out_of_range(wrong, said):
     with pytest.raises(CaseError, match=said):
         Options(**wrong)
+
+
+@pytest.mark.parametrize(
+    ("wrong", "said"),
+    [
+        ({"mean": "median"}, r"mean: got 'median'; must be one of none, record, lowpass, grid"),
+        ({"mean": "lowpass"}, r"period: got None; must be a number of seconds > 0 with lowpass"),
+        ({"period": 3e5}, r"period: got 300000.0; must be .* None with any other mean"),
+        ({"mean": "lowpass", "period": float("inf")}, r"period: got inf"),
+        ({"mean": "grid"}, r"flow: got None; must be a mean flow or the path of one with grid"),
+        ({"flow": "flow.nc"}, r"flow: got 'flow.nc'; must be .* None with any other mean"),
+        ({"deformation_radius": 0.0}, r"deformation_radius: got 0.0; must be a length in metres > 0, or None"),
+        (
+            {"mean": "median", "deformation_radius": -1.0},
+            r"single particles: 2 to correct\n  mean.*\n  def",
+        ),
+    ],
+)
+def test_options_for_single_particles_out_of_range(wrong, said):
+    with pytest.raises(CaseError, match=said):
+        SingleOptions(**wrong)

@@ -6,11 +6,14 @@ import signal
 import subprocess
 import sys
 import time
+from importlib import resources
 from pathlib import Path
 
+import jsonschema
 import numpy as np
 import pandas as pd
 import pytest
+import xarray as xr
 
 import regimes.pipeline
 from regimes import cli
@@ -244,8 +247,12 @@ BAD = {
 }
 
 
-@pytest.mark.parametrize("command", ["check", "run"])
-@pytest.mark.parametrize("what", BAD)
+NO_PAIR = ("one particle", "no pairs")  # a run tells what particles say one by one
+
+
+@pytest.mark.parametrize(
+    ("command", "what"), [("check", what) for what in BAD] + [("run", what) for what in BAD if what not in NO_PAIR]
+)
 def test_bad_input_gives_one_clear_message(what, command, here, capsys):
     fixes, changes, code, words = BAD[what]
     path = here / "absent.toml" if fixes is None else write_case(here / "case", fixes, **changes)
@@ -256,6 +263,92 @@ def test_bad_input_gives_one_clear_message(what, command, here, capsys):
     assert "internal error" not in said.err
     assert said.out == ""
     assert not (here / "reports").exists()
+
+
+# Data without a pair
+
+FAR = "the smallest start separation within 6 h is"
+
+
+def _far_apart(fixes):
+    """Particles that wander a degree of longitude and more from one another."""
+    drifts = walks(fixes=fixes)
+    drifts["lon"] += drifts.id.str[1:].astype(float)
+    return drifts
+
+
+@pytest.mark.parametrize("what", NO_PAIR)
+def test_run_without_a_pair_is_done_and_undecided(what, here, capsys):
+    fixes, changes, _, words = BAD[what]
+    assert cli.main(["run", str(write_case(here / "case", fixes, **changes))]) == 0
+    said = capsys.readouterr()
+    assert words in said.out
+    assert said.out.startswith("Undecided: there are no pair statistics, because there is no pair: ")
+    assert said.err == ""
+
+
+@pytest.mark.parametrize(("fixes", "enough"), [(200, True), (12, False)])
+def test_particles_far_apart_from_end_to_end(fixes, enough, here, capsys):
+    path = write_case(here / "case", _far_apart(fixes), more="[single]\ndeformation_radius_km = 20")
+    assert cli.main(["run", str(path), "--out", "r"]) == 0
+    out = capsys.readouterr().out
+    assert FAR in out
+    assert "raise pairs.max_separation_km" in out
+    document = json.loads((here / "r" / "verdict.json").read_text(encoding="utf-8"))
+    schema = resources.files("regimes.report").joinpath("verdict.schema.json").read_text(encoding="utf-8")
+    jsonschema.Draft202012Validator(json.loads(schema)).validate(document)
+    assert document["decision"] == "undecided"
+    assert FAR in document["reasons"][0]
+    assert (document["input"]["n_pairs"], document["input"]["n_particles"]) == (0, 4)
+    assert document["case"] == "Invented bank"
+    assert document["resolved_km"] == document["transitions"] == document["slopes"] == []
+    table = pd.read_csv(here / "r" / "curves.csv")
+    page = (here / "r" / "report.html").read_text(encoding="utf-8")
+    assert "Single particles" in page
+    if enough:
+        (ratio,) = document["single_particle"]["ratios"]
+        length = document["single_particle"]["integral_length_km"]["decaying_cosine"]["value"]
+        assert ratio["value"] == pytest.approx(length / 20.0, rel=1e-5)  # six printed digits
+        assert document["single_particle"]["n_units"] == 4
+        assert table.curve.nunique() == 9
+        assert (here / "r" / "figures" / "absolute.pdf").exists()
+    else:
+        assert document["single_particle"] is None
+        assert "at least 15 are needed" in document["single_particle_reason"]
+        assert "at least 15 are needed" in document["reasons"][1]
+        assert len(table) == 0
+        assert not (here / "r" / "figures").exists()
+
+
+def test_mean_flow_of_a_file_is_taken_away(here, capsys):
+    """A flow that carries all particles alike changes nothing once it is removed as it was added."""
+    still = _far_apart(200)
+    hour = still.groupby("id").cumcount()
+    carried = still.assign(lat=still.lat + 1e-3 * hour)
+    grid = {"lat": [45.0, 55.0], "lon": [5.0, 20.0]}
+    # Metres of a degree of latitude on WGS84 at 50 degrees north: 111 229 (from memory), good to 1e-3 nearby.
+    speed = np.full((2, 2), 1e-3 * 111_229 / 3600.0)
+    flow = xr.Dataset({"u": (("lat", "lon"), 0.0 * speed), "v": (("lat", "lon"), speed)}, grid)
+    kappa = {}
+    for name, fixes, mean in (("still", still, "none"), ("carried", carried, "grid"), ("as it is", carried, "none")):
+        path = write_case(
+            here / name, fixes, more=f'[single]\nmean = "{mean}"\n' + 'mean_flow = "f.nc"' * (mean == "grid")
+        )
+        if mean == "grid":
+            flow.to_netcdf(here / name / "f.nc", engine="h5netcdf")
+        assert cli.main(["run", str(path), "--out", name + " report"]) == 0
+        document = json.loads((here / f"{name} report" / "verdict.json").read_text(encoding="utf-8"))
+        assert document["single_particle"]["mean_removed"] == mean
+        kappa[name] = document["single_particle"]["diffusivity_m2_s"]["mean"]["value"]
+    assert kappa["carried"] == pytest.approx(kappa["still"], rel=0.02)  # the degree of latitude and its change
+    assert kappa["as it is"] > 1.1 * kappa["still"]
+
+
+def test_mean_flow_that_cannot_be_read_is_a_reason_not_a_failure(here, capsys):
+    path = write_case(here / "case", _far_apart(200), more='[single]\nmean = "grid"\nmean_flow = "f.nc"')
+    (here / "case" / "f.nc").write_text("u,v")
+    assert cli.main(["run", str(path), "--out", "r"]) == 0
+    assert "is no NetCDF file" in json.loads((here / "r" / "verdict.json").read_text())["single_particle_reason"]
 
 
 def test_ten_rows_can_be_counted_but_not_fitted(here, capsys):
