@@ -4,10 +4,12 @@ from datetime import UTC, datetime
 
 import numpy as np
 import pytest
+from scipy import stats
 from scipy.special import j0
 
 from regimes.errors import CaseError, DataError
 from regimes.synthetic import recipe_from, simulate, truth
+from regimes.synthetic.linear_flow import convergence_displacement
 from regimes.synthetic.shear_diffusion import ShearDiffusion, shear_diffusion_tracks
 
 SIGMAS = 4.5  # Monte Carlo tolerance in standard errors, fixed seeds
@@ -33,6 +35,7 @@ BASE = {
 }
 # Pairs that keep their separation to 1e-5: only what is added moves them.
 STILL = {"regimes": ["exponential"], "transitions_km": [], "rate_per_d": 1e-14}
+WIDE = {"diffusivity_m2_s": 5.0, "rate_per_d": 0.0}
 GLOBE = {"longitude": 179.8, "latitude": 52.0}
 
 
@@ -83,11 +86,18 @@ OBSERVED = {"position_error_m": 20.0, "loss_per_d": 0.1, "gap_probability": 0.05
         {"shear": {"rate_per_d": 0.0, "direction_deg": 20.0}},
         {"convergence": {"rate_per_d": 0.0, "direction_deg": 20.0, "lasts_d": 1.0}},
         {"place": {"eddy_speed_m_s": 0.0, "eddy_time_d": 2.0}},
+        {"records": {"error_memory_h": 0.0}},
+        {"records": {"error_tail": 3.0, "error_memory_h": 9.0, "position_error_m": 0.0}},
+        {"records": {"loss_per_d_apart": 0.0, "apart_km": 1.0}},
+        {"instruments": {"slip_share": 0.0, "slip_m_s": [0.1, 0.0]}},
+        {"instruments": {"slip_share": 0.5, "slip_m_s": [0.0, 0.0]}},
+        {"faults": {"lashed": 0, "grounded": 0, "picked_up": 0}},
     ],
     ids=str,
 )
 def test_zero_strength_is_the_clean_twin(nothing, place):
-    both = {"place": place, "records": OBSERVED}
+    error = nothing.get("records", {}).get("position_error_m", 20.0)
+    both = {"place": place, "records": OBSERVED | {"position_error_m": error}}
     changed = {section: both.get(section, {}) | keys for section, keys in nothing.items()}
     assert_same_bytes(simulate(recipe(**both | changed)), simulate(recipe(**both)))
 
@@ -106,6 +116,20 @@ def test_starts_stay_and_strength_moves(something):
     moved = added(something)
     assert np.all(moved[:, :, 0] == 0)
     assert np.all(np.hypot(*moved[:, :, 1:].reshape(-1, 2).T) > 0.1)
+
+
+def test_contaminations_draw_from_streams_of_their_own():
+    """What several add is the sum of what each adds, and none of them changes which fixes arrive."""
+    each = [
+        {"oscillation": {"speed_m_s": 0.3, "period_h": 14.9}},
+        {"instruments": {"slip_share": 0.4, "slip_m_s": [0.1, 0.02]}},
+        {"place": {"eddy_speed_m_s": 0.2, "eddy_time_d": 2.0}},
+        {"records": {"position_error_m": 20.0, "error_tail": 4.0, "error_memory_h": 5.0}},
+    ]
+    together = {section: keys for one in each for section, keys in one.items()}
+    assert added(together) == pytest.approx(sum(added(one) for one in each), abs=1e-6)
+    made = together | {"records": together["records"] | OBSERVED}
+    assert simulate(recipe(**made)).time.tobytes() == simulate(recipe(records=OBSERVED)).time.tobytes()
 
 
 class TestOscillation:
@@ -202,8 +226,10 @@ class TestLinearFlows:
         assert change.real == pytest.approx(0.8 * days * before.imag, abs=0.02)
         assert change.imag == pytest.approx(np.zeros(change.shape), abs=1e-6)
 
-    def test_shear_leaves_the_centroid_and_the_cross_axis(self):
-        moved = added({"shear": {"rate_per_d": 2.0, "direction_deg": 90.0}})
+    @pytest.mark.parametrize("world", [{}, {"kernel": None, "shear_diffusion": WIDE}])
+    def test_shear_leaves_the_centroid_and_the_cross_axis(self, world):
+        """Whether the world keeps the centroid of a release at its centre or lets it diffuse."""
+        moved = added({"shear": {"rate_per_d": 2.0, "direction_deg": 90.0}}, **world)
         assert moved.mean(axis=1) == pytest.approx(np.zeros(moved.mean(axis=1).shape), abs=1e-5)
         assert np.abs(moved[..., 0]).max() < 1e-9
         assert np.abs(moved[..., 1]).max() > 500.0
@@ -222,6 +248,16 @@ class TestLinearFlows:
         days = np.minimum(np.arange(before.shape[1]) * 0.125, 2.05)
         assert after.real == pytest.approx(before.real * np.exp(-0.7 * days), abs=0.01)
         assert after.imag == pytest.approx(before.imag, abs=1e-6)
+
+    def test_convergence_of_pairs_that_part_evenly(self):
+        """d xi' / dt = v - gamma xi': xi0 exp(-gamma t) + v (1 - exp(-gamma t)) / gamma, exact at coarse fixes."""
+        t = np.arange(8) * 40.0
+        local = np.zeros((1, 2, 8, 2))
+        local[0, :, :, 0] = np.outer([-0.5, 0.5], 6.0 + 0.3 * t)
+        moved = local + convergence_displacement(local, 40.0, 0.02, 0.0, 200.0)
+        apart, end = moved[0, 1, :, 0] - moved[0, 0, :, 0], np.minimum(t, 200.0)
+        exact = 6.0 * np.exp(-0.02 * end) + 0.3 * (1 - np.exp(-0.02 * end)) / 0.02 + 0.3 * (t - end)
+        assert apart == pytest.approx(exact, rel=1e-12)
 
     def test_mean_squared_separation_under_convergence(self):
         """(1 + exp(-2 gamma t)) / 2 over all directions."""
@@ -346,6 +382,175 @@ class TestShearDiffusion:
             shear_diffusion_tracks(ShearDiffusion(1.0, 1.0), (3, 1), 1.0, 1.0, 5, 1)
 
 
+NOISY = {"position_error_m": 20.0, "duration_d": 20.0, "fix_interval_h": 6.0}
+
+
+class TestErrors:
+    def errors(self, **options):
+        """Errors (n_release, n_member, n_fix, 2) in units of their stated standard deviation."""
+        size = {"number": 60, "particles": 3}
+        noisy, clean = (
+            paths(recipe(kernel=STILL, releases=size, records=NOISY | more))
+            for more in (options, {"position_error_m": 0.0})
+        )
+        return (noisy - clean) / 20.0
+
+    @pytest.mark.parametrize("freedom", [3.5, 8.0])
+    def test_heavy_tails_are_those_of_student(self, freedom):
+        """Scaled by sqrt((nu - 2) / nu): standard deviation one. A fix is bad in both coordinates or in none."""
+        found = self.errors(error_tail=freedom)
+        law = stats.t(freedom, scale=np.sqrt((freedom - 2) / freedom))
+        for component in range(2):
+            assert stats.kstest(found[..., component].ravel(), law.cdf).pvalue > 1e-4
+        far = np.abs(found) > 3.0
+        share = law.sf(3.0) * 2
+        assert np.mean(far[..., 0] & far[..., 1]) > 3 * share**2
+        assert abs(np.mean(far) - share) < SIGMAS * np.sqrt(2 * share / far.size)
+
+    def test_tails_end_at_the_normal_law(self):
+        plain, wide = self.errors(), self.errors(error_tail=1e9)
+        assert wide == pytest.approx(plain, abs=1e-3)
+
+    @pytest.mark.parametrize("tail", [{}, {"error_tail": 5.0}])
+    def test_memory(self, tail):
+        """Correlation exp(-h / tau) at one fix, exp(-2 h / tau) at two; the variance stays, from the first fix on."""
+        found = self.errors(error_memory_h=9.0, **tail)
+        for lag in (0, 1, 2):
+            product = found[:, :, : found.shape[2] - lag] * found[:, :, lag:]
+            assert_mean(product.mean(axis=(2, 3)).ravel(), np.exp(-lag * 6 / 9))
+        assert_mean(np.mean(found[:, :, 0] ** 2, axis=2).ravel(), 1.0)
+
+    def test_errors_leave_losses_and_gaps_alone(self):
+        plain = simulate(recipe(records=OBSERVED))
+        other = simulate(recipe(records=OBSERVED | {"error_tail": 3.0, "error_memory_h": 5.0}))
+        assert np.array_equal(plain.time, other.time)
+        assert np.array_equal(plain.particle, other.particle)
+        assert np.median(np.abs(plain.position - other.position)) > 1.0
+
+
+class TestLosses:
+    def test_extra_losses_apart(self):
+        """Particles 0.5 / sqrt 3 = 0.289 km from the centroid: within 0.3 km none is lost, beyond 0.28 km exp(-a t)."""
+        size = {"number": 400, "particles": 3}
+        for apart, rate in ((0.3, 0.0), (0.28, 0.4)):
+            records = {"loss_per_d_apart": 0.4, "apart_km": apart}
+            fixes = simulate(recipe(kernel=STILL, releases=size, records=records))
+            days = np.bincount(fixes.particle) * 0.125
+            for day in (1.0, 3.0):
+                expected = np.exp(-rate * day)
+                error = np.sqrt(expected * (1 - expected) / 1200)
+                assert abs(np.mean(days > day) - expected) <= SIGMAS * error
+
+    def test_losses_add(self):
+        size = {"number": 400, "particles": 3}
+        both = {"loss_per_d": 0.1, "loss_per_d_apart": 0.3, "apart_km": 0.1}
+        added_up, plain = (
+            simulate(recipe(kernel=STILL, releases=size, records=r)) for r in (both, {"loss_per_d": 0.4})
+        )
+        assert np.array_equal(np.bincount(added_up.particle), np.bincount(plain.particle))
+
+    def test_pairs_that_stay_together_are_recorded_longer(self):
+        made = {"records": {"duration_d": 20.0, "loss_per_d_apart": 1.0, "apart_km": 5.0}, "releases": {"number": 100}}
+        clean = paths(recipe(records={"duration_d": 20.0}, releases={"number": 100}))
+        fixes = simulate(recipe(**made))
+        length = np.bincount(fixes.particle)
+        apart = np.linalg.norm(clean - clean.mean(axis=1, keepdims=True), axis=3).reshape(300, -1)
+        until = np.where((apart > 5e3).any(axis=1), np.argmax(apart > 5e3, axis=1), apart.shape[1] - 1)
+        assert np.all(length > until), "no loss before the particle is apart"
+        assert np.mean(length - 1 - until) * 0.125 < 3.0
+
+
+class TestInstruments:
+    def test_the_second_type_slips(self):
+        """A third of 18 particles moves by 0.05 m/s x 4 d = 17.28 km east, the rest does not know."""
+        moved = added({"instruments": {"slip_share": 1 / 3, "slip_m_s": [0.05, 0.0]}})
+        end = moved[:, :, -1].reshape(18, 2)
+        assert np.sort(end[:, 0]) == pytest.approx([0.0] * 12 + [17280.0] * 6, abs=1e-5)
+        assert np.all(end[:, 1] == 0)
+        half = moved[:, :, 16].reshape(18, 2)
+        assert half == pytest.approx(end / 2, abs=1e-5)
+
+    def test_a_larger_share_keeps_the_smaller(self):
+        few, most = (
+            added({"instruments": {"slip_share": s, "slip_m_s": [0.0, 0.1]}})[:, :, -1, 1] > 1.0 for s in (0.2, 0.7)
+        )
+        assert few.sum() == round(0.2 * 18)
+        assert most.sum() == round(0.7 * 18)
+        assert np.all(most[few])
+
+
+class TestFaults:
+    @pytest.mark.parametrize("number", [2, 6])
+    def test_lashed_pairs_keep_their_vector(self, number):
+        clean, made = paths(recipe()), paths(recipe(faults={"lashed": number}))
+        apart = made[:, 1] - made[:, 0]
+        together = np.all(np.abs(apart - apart[:, :1]) < 1e-6, axis=(1, 2))
+        assert together.sum() == number
+        assert np.array_equal(made[:, [0, 2]], clean[:, [0, 2]])
+        assert np.array_equal(made[~together], clean[~together])
+        assert np.linalg.norm(apart[together], axis=2) == pytest.approx(np.full((number, 33), 500.0), rel=1e-6)
+
+    @pytest.mark.parametrize("place", [{}, GLOBE])
+    def test_grounded_particles_stay(self, place):
+        """From some fix on the same place, though the centre drifts; before that the clean path."""
+        clean, made = (
+            paths(recipe(place=place, **more)).reshape(18, 33, 2) for more in ({}, {"faults": {"grounded": 5}})
+        )
+        changed = np.flatnonzero(np.any(clean != made, axis=(1, 2)))
+        for i in changed:
+            stop = np.argmax(np.all(clean[i] != made[i], axis=1)) - 1
+            assert np.array_equal(made[i, : stop + 1], clean[i, : stop + 1])
+            assert np.all(made[i, stop:] == made[i, stop])
+        assert 3 <= len(changed) <= 5, "one that stops at its last fix shows no change"
+
+    def test_grounded_particles_report_with_error(self):
+        records = {"duration_d": 40.0, "position_error_m": 15.0}
+        made = paths(recipe(records=records, faults={"grounded": 18})).reshape(18, -1, 2)
+        steps = np.diff(made, axis=1)
+        # after the stop differences have variance 2 sigma^2; half of all fixes are after it
+        late = steps[:, -20:][np.all(np.abs(steps[:, -20:]) < 150.0, axis=(1, 2))]
+        assert len(late) >= 12
+        squared = np.mean(late**2, axis=(1, 2))
+        assert abs(np.mean(squared) - 2 * 15.0**2) < SIGMAS * np.std(squared) / np.sqrt(len(late))
+
+    def test_moments_of_grounding_are_even(self):
+        size = {"number": 300, "particles": 2}
+        made, clean = (paths(recipe(kernel=STILL, releases=size, faults=f)) for f in ({"grounded": 600}, {}))
+        same = np.sum(np.all(made == clean, axis=3), axis=2).ravel()  # fixes up to and with the stop
+        assert stats.kstest(same - np.random.default_rng(0).random(600), "uniform", args=(0, 33)).pvalue > 1e-4
+
+    def test_boats(self):
+        """5 m/s for the last 9 h of the record, after the clean path, in a straight line."""
+        clean, made = (paths(recipe(faults=f)).reshape(18, 33, 2) for f in ({}, {"picked_up": 4, "boat_h": 9.0}))
+        taken = np.any(made != clean, axis=(1, 2))
+        assert taken.sum() == 4
+        assert np.array_equal(made[:, :30], clean[:, :30])
+        velocity = np.diff(made[taken], axis=1)[:, 29:] / 10800.0
+        assert np.linalg.norm(velocity, axis=2) == pytest.approx(np.full((4, 3), 5.0), rel=1e-9)
+        still = {"kernel": STILL, "place": {"drift_m_s": [0.0, 0.0]}}
+        rest = paths(recipe(faults={"picked_up": 18, "boat_speed_m_s": 7.0}, **still))
+        speed = np.linalg.norm(np.diff(rest, axis=2), axis=3) / 10800.0
+        assert speed[..., -2:] == pytest.approx(np.full((6, 3, 2), 7.0), rel=1e-6)
+        assert np.all(speed[..., :-2] < 1e-6)
+
+    def test_boats_come_at_the_end_of_short_records(self):
+        records = {"loss_per_d": 0.5}
+        still = {"kernel": STILL, "place": {"drift_m_s": [0.0, 0.0]}}
+        fixes = simulate(recipe(records=records, faults={"picked_up": 18, "boat_h": 3.0}, **still))
+        speed = np.linalg.norm(np.diff(fixes.position, axis=0), axis=1) / 10800.0
+        ends = np.append(np.flatnonzero(np.diff(fixes.particle)), fixes.n_fix - 1) - 1
+        ends = ends[np.bincount(fixes.particle) > 1]
+        assert len(ends) > 9
+        assert speed[ends] == pytest.approx(np.full(len(ends), 5.0), rel=1e-6)
+
+    def test_no_particle_is_aground_and_aboard(self):
+        still = {"kernel": STILL, "records": {"duration_d": 40.0}}
+        made = paths(recipe(faults={"grounded": 9, "picked_up": 9}, **still))
+        speed = np.linalg.norm(np.diff(made, axis=2), axis=3)[..., -1] / 10800.0
+        assert np.sum(np.abs(speed - 5.0) < 0.01) == 9
+        assert np.sum(speed == 0) == 9, "the centres drift, so those that are afloat do not stand still"
+
+
 @pytest.mark.parametrize(
     ("changes", "message"),
     [
@@ -370,6 +575,17 @@ class TestShearDiffusion:
             {"shear_diffusion": {"diffusivity_m2_s": 0.0}},
             r"diffusivity_m2_s: got 0.0; must be > 0(.|\n)*rate_per_d: miss",
         ),
+        ({"records": {"error_tail": 2.0}}, r"records.error_tail: got 2.0; must be > 2"),
+        ({"records": {"error_memory_h": -1.0}}, r"records.error_memory_h: got -1.0; must be >= 0"),
+        ({"records": {"apart_km": 3.0}}, "got one of loss_per_d_apart and apart_km; must give both, or none"),
+        ({"faults": {"lashed": 7}}, r"got \[faults\] with lashed = 7; must be 6, the releases, at most"),
+        (
+            {"faults": {"grounded": 17, "picked_up": 2}},
+            r"grounded \+ picked_up = 17 \+ 2; must be 18, the particles, at",
+        ),
+        ({"faults": {"grounded": 1.5}}, r"faults.grounded: got 1.5; must be a whole number"),
+        ({"instruments": {"slip_share": 1.1, "slip_m_s": [0.1, 0.0]}}, r"slip_share: got 1.1; must be <= 1"),
+        ({"instruments": {"slip_share": 0.1, "slip_m_s": [0.1]}}, r"slip_m_s: got \[0.1\]; must be a list of 2"),
         ({"convergence": {"rate_per_d": 1.0}}, r"convergence.lasts_d: missing; must be given"),
     ],
 )

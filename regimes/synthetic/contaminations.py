@@ -1,11 +1,15 @@
 """What a recipe may add to the motion of its world; each section moves the particles of the clean twin."""
 
-import numpy as np
+from typing import Annotated
 
-from regimes.synthetic.sections import NotNegative, Positive, Section
+import numpy as np
+from pydantic import Field
+
+from regimes.synthetic.sections import NotNegative, Positive, Section, Share, Vector
 from regimes.units import HOUR
 
 EARTH_ROTATION = 7.292115e-5  # rad/s, WGS84
+Count = Annotated[int, Field(ge=0)]
 # Nearer to the equator than this, in degrees, an inertial period exceeds two weeks and means little.
 EQUATORIAL = 2.0
 
@@ -38,3 +42,20 @@ class Convergence(Section):
     rate_per_d: NotNegative
     direction_deg: float = 0.0
     lasts_d: Positive
+
+
+class Instruments(Section):
+    """A second type of particle that slips through the water."""
+
+    slip_share: Share
+    slip_m_s: Vector
+
+
+class Faults(Section):
+    """Releases with two particles lashed together; particles aground; particles picked up by a boat at the end."""
+
+    lashed: Count = 0
+    grounded: Count = 0
+    picked_up: Count = 0
+    boat_speed_m_s: Positive = 5.0
+    boat_h: Positive = 6.0

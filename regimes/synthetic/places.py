@@ -31,13 +31,26 @@ def centres(recipe: Recipe, rng: np.random.Generator, eddies: np.random.Generato
     return centre + place.eddy_speed_m_s * np.stack([z.real, z.imag], axis=-1)
 
 
-def on_globe(place: Place, centre: np.ndarray, local: np.ndarray) -> np.ndarray:
-    """Longitude and latitude (n_release, n_member, n_fix, 2) of planar displacements about moving centres."""
-    shape = centre.shape[:2]
-    home = np.full(shape, place.longitude), np.full(shape, place.latitude)
-    middle = _displaced(*home, centre)
-    around = (np.broadcast_to(x[:, None], local.shape[:3]) for x in middle)
-    return np.stack(_displaced(*around, local), axis=-1)
+def positions(place: Place, centre: np.ndarray, local: np.ndarray, hold: np.ndarray) -> np.ndarray:
+    """Displacements about moving centres as longitude and latitude, or x and y on a plane.
+
+    Parameters
+    ----------
+    place : Place
+    centre : (n_release, n_fix, 2) float array [m]
+    local : (n_release, n_member, n_fix, 2) float array [m]
+    hold : (n_release, n_member, n_fix) int array
+        Index of the fix whose centre each displacement is from.
+
+    Returns
+    -------
+    (n_release, n_member, n_fix, 2) float array [degree or m]
+    """
+    if not place.planar:
+        home = np.full(centre.shape[:2], place.longitude), np.full(centre.shape[:2], place.latitude)
+        centre = np.stack(_displaced(*home, centre), axis=-1)
+    around = np.take_along_axis(np.broadcast_to(centre[:, None], local.shape), hold[..., None], axis=2)
+    return around + local if place.planar else np.stack(_displaced(around[..., 0], around[..., 1], local), axis=-1)
 
 
 def _displaced(longitude: np.ndarray, latitude: np.ndarray, move: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

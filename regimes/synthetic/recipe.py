@@ -10,7 +10,7 @@ from pydantic import Field, ValidationError, model_validator
 
 from regimes.cases.problems import describe, headed
 from regimes.errors import CaseError
-from regimes.synthetic.contaminations import EQUATORIAL, Convergence, Oscillation, Shear
+from regimes.synthetic.contaminations import EQUATORIAL, Convergence, Faults, Instruments, Oscillation, Shear
 from regimes.synthetic.sections import NotNegative, Positive, Section, Share, Text, Vector, rule
 from regimes.synthetic.worlds import FourierWorld, KernelWorld, ShearDiffusionWorld
 
@@ -39,11 +39,17 @@ class Records(Section):
     loss_per_d: NotNegative = 0.0
     gap_probability: Share = 0.0
     gap_h: Positive = 6.0
+    error_tail: Annotated[float, Field(gt=2)] | None = None
+    error_memory_h: NotNegative = 0.0
+    loss_per_d_apart: NotNegative | None = None
+    apart_km: Positive | None = None
 
     @model_validator(mode="after")
-    def _two_fixes(self) -> "Records":
+    def _possible(self) -> "Records":
         if self.n_fix < 2:
             raise rule(f"{self.duration_d:g} d at {self.fix_interval_h:g} h", "give two fixes at least")
+        if (self.loss_per_d_apart is None) != (self.apart_km is None):
+            raise rule("one of loss_per_d_apart and apart_km", "give both, or none")
         return self
 
     @property
@@ -91,6 +97,8 @@ class Recipe(Section):
     oscillation: Oscillation | None = None
     shear: Shear | None = None
     convergence: Convergence | None = None
+    instruments: Instruments | None = None
+    faults: Faults | None = None
 
     @model_validator(mode="after")
     def _one_world(self) -> "Recipe":
@@ -112,6 +120,18 @@ class Recipe(Section):
                 f"[oscillation] without period_h at latitude {latitude:g}",
                 f"give period_h within {EQUATORIAL:g} degrees of the equator",
             )
+        return self
+
+    @model_validator(mode="after")
+    def _enough_particles(self) -> "Recipe":
+        if self.faults is None:
+            return self
+        releases, particles = self.releases.number, self.releases.number * self.releases.particles
+        if self.faults.lashed > releases:
+            raise rule(f"[faults] with lashed = {self.faults.lashed}", f"be {releases}, the releases, at most")
+        if self.faults.grounded + self.faults.picked_up > particles:
+            both = f"{self.faults.grounded} + {self.faults.picked_up}"
+            raise rule(f"[faults] with grounded + picked_up = {both}", f"be {particles}, the particles, at most")
         return self
 
     @property

@@ -3,13 +3,16 @@
 import numpy as np
 
 from regimes.fixes import Fixes
+from regimes.synthetic.faults import halted, lashed
 from regimes.synthetic.paths import with_contaminations, world_paths
-from regimes.synthetic.places import centres, on_globe
+from regimes.synthetic.places import centres, positions
 from regimes.synthetic.recipe import Recipe
-from regimes.units import DAY, HOUR
+from regimes.synthetic.releases import about_centroid
+from regimes.synthetic.watching import position_errors, seen_fixes
+from regimes.units import HOUR
 
 # Each has a stream of random numbers of its own; new ones go to the end, so that old recipes keep their fixes.
-_STREAMS = ("flow", "place", "watch", "oscillation", "eddies")
+_STREAMS = ("flow", "place", "watch", "oscillation", "eddies", "errors", "instruments", "faults")
 
 
 def simulate(recipe: Recipe) -> Fixes:
@@ -33,36 +36,32 @@ def simulate(recipe: Recipe) -> Fixes:
     Notes
     -----
     Flow, place, observation and each contamination draw from streams of their own: with other gaps, losses or
-    contaminations the particles still take the same paths, up to what was added. Convergence, shear and
+    contaminations the particles still take the same paths, up to what was added. Slip, convergence, shear and
     oscillation are added in this order, each to the paths that the ones before it gave; they are kinematic: the
-    flow of the world does not know of them. Displacements from the centroid of a release are laid out along
-    geodesics from the centroid (azimuthal equidistant); separations are true to (r / 6371 km)^2 / 6.
+    flow of the world does not know of them. Faults come last. Displacements from the centroid of a release are laid
+    out along geodesics from the centroid (azimuthal equidistant); separations are true to (r / 6371 km)^2 / 6.
     """
     streams = np.random.SeedSequence(recipe.seed).spawn(len(_STREAMS))
     rng = {name: np.random.default_rng(stream) for name, stream in zip(_STREAMS, streams, strict=True)}
-    watch = rng["watch"]
+    records = recipe.records
     local = with_contaminations(recipe, world_paths(recipe, int(rng["flow"].integers(2**63))), rng)
-    centre = centres(recipe, rng["place"], rng["eddies"])
-    error = recipe.records.position_error_m
-    local = local + error * watch.standard_normal(local.shape)
-    position = centre[:, None] + local if recipe.place.planar else on_globe(recipe.place, centre, local)
-    seen = _seen(recipe, watch, local.shape[:3])
+    if recipe.faults is not None:
+        local = lashed(local, recipe.faults.lashed, rng["faults"])
+    error = position_errors(records, local.shape, rng["watch"], rng["errors"])
+    seen = seen_fixes(records, np.hypot(*np.moveaxis(about_centroid(local), -1, 0)), rng["watch"])
+    hold, local = _held(recipe, local, seen, rng["faults"])
+    position = positions(recipe.place, centres(recipe, rng["place"], rng["eddies"]), local + error, hold)
     return _as_fixes(recipe, position, seen)
 
 
-def _seen(recipe: Recipe, rng: np.random.Generator, shape: tuple[int, ...]) -> np.ndarray:
-    """Which fixes (n_release, n_member, n_fix) arrive: before the loss of the particle, outside gaps."""
-    records = recipe.records
-    step = records.fix_interval_h * HOUR
-    index = np.arange(shape[2])
-    life = rng.standard_exponential(shape[:2])  # drawn in any case, so that gaps do not depend on losses
-    seen = index * step * records.loss_per_d / DAY < life[..., None]
-    begins = rng.random(shape) < records.gap_probability
-    lasts = np.floor(records.gap_h * HOUR / step * rng.standard_exponential(shape)).astype(np.int64)
-    end = np.maximum.accumulate(np.where(begins, index + lasts, -1), axis=2)
-    seen &= index > end
-    seen[..., 0] = True  # a release is always recorded
-    return seen
+def _held(
+    recipe: Recipe, local: np.ndarray, seen: np.ndarray, rng: np.random.Generator
+) -> tuple[np.ndarray, np.ndarray]:
+    """Index of the fix at which each particle's centre is to be taken, and the displacements from there [m]."""
+    if recipe.faults is None:
+        return np.broadcast_to(np.arange(seen.shape[2]), seen.shape), local
+    hold, boat = halted(recipe.faults, seen, recipe.records.fix_interval_h, rng)
+    return hold, np.take_along_axis(local, hold[..., None], axis=2) + boat
 
 
 def _as_fixes(recipe: Recipe, position: np.ndarray, seen: np.ndarray) -> Fixes:
