@@ -9,9 +9,9 @@ from regimes.curves.dispersion import dispersion_statistics
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
 
-# With one law throughout, K changes between the two windows by 0 on a plateau, 1/2 for a kernel linear in separation
-# and 12/13 for Richardson's. Both limits are chosen so that the middle of what a linear kernel gives is just refused.
-LEVEL, PRECISION = 0.1, 0.4
+# With one law throughout, K changes between the two windows by 0 on a plateau, by 12/13 for Richardson's kernel and by
+# this for one linear in separation, the flattest of the named kernels that grow.
+FLAT = 0.5
 # An exponential law needs this growth of the mean square for its change to be 0.7 or more; less is no growth at all.
 GROWTH = 10.0
 _NORMAL_95 = 1.959963984540054
@@ -47,8 +47,8 @@ class Plateau:
 def late_plateau(tracks: Tracks, pairs: Pairs) -> Plateau:
     """Relative diffusivity in the second and the last third of the median record of a pair.
 
-    A plateau: the mean square separation has grown by `GROWTH` or more, the 95 % interval of the relative change
-    comes within `LEVEL` of zero, and half its width is at most `PRECISION`.
+    A plateau: the mean square separation has grown by `GROWTH` or more, and the 95 % interval of the relative change
+    lies within `FLAT` of zero, so that a linear kernel is taken for one in 2.5 % of surveys.
 
     Parameters
     ----------
@@ -83,8 +83,8 @@ def late_plateau(tracks: Tracks, pairs: Pairs) -> Plateau:
 def _reason(change: float, half_width: float, growth: float) -> str:
     if growth < GROWTH:
         return f"the mean square separation grows by a factor of {growth:.2g} only"
-    if abs(change) - half_width > LEVEL:
+    if abs(change) + half_width <= FLAT:
+        return ""
+    if abs(change) > half_width:
         return f"the relative diffusivity still changes by {change:+.0%} late in the records"
-    if half_width > PRECISION:
-        return f"whether the relative diffusivity levels off is known to +-{half_width:.0%} only"
-    return ""
+    return f"whether the relative diffusivity levels off is known to +-{half_width:.0%} only"
