@@ -253,7 +253,7 @@ def singles_only(single: bool = True) -> SinglesOnly:
     """What a survey without a pair gives, with and without enough velocities."""
     nothing = float("nan")
     why = "no launched pair among 36 particles: the smallest start separation within 6 h is 250 km; must be at most 1"
-    missing = "single particles: typical tracks have 4 velocities in a row; at least 15 are needed"
+    missing = "typical tracks have 4 velocities in a row; at least 15 are needed"
     return SinglesOnly(
         provenance=replace(
             demo_analysis().provenance, n_particles=36, n_pairs=0, n_clusters=0, kind="none", median_start=nothing,
@@ -262,7 +262,7 @@ def singles_only(single: bool = True) -> SinglesOnly:
         single=_single() if single else None,
         single_missing="" if single else missing,
         ratios=_RATIOS[1:2] if single else (),
-        sentence=f"Undecided: there are no pair statistics, because there is no pair: {why}.",
+        sentence=f"Undecided: no pair statistics exist, for want of a pair to compare. {why.capitalize()}.",
         reasons=(why,) if single else (why, missing),
     )  # fmt: skip
 

@@ -283,7 +283,7 @@ def test_run_without_a_pair_is_done_and_undecided(what, here, capsys):
     assert cli.main(["run", str(write_case(here / "case", fixes, **changes))]) == 0
     said = capsys.readouterr()
     assert words in said.out
-    assert said.out.startswith("Undecided: there are no pair statistics, because there is no pair: ")
+    assert said.out.startswith("Undecided: no pair statistics exist, for want of a pair to compare. ")
     assert said.err == ""
 
 

@@ -238,7 +238,7 @@ def test_report_without_a_pair(single, tmp_path):
     assert {p for p in (tmp_path / "r").rglob("*") if p.is_file()} == set(written.values())
     outline = Outline(written["report.html"].read_text(encoding="utf-8"))
     assert len(outline.ids) == len(set(outline.ids))
-    assert "Undecided There are no pair statistics, because there is no pair: no launched pair" in outline.text
+    assert "Undecided No pair statistics exist, for want of a pair to compare. No launched pair" in outline.text
     assert outline.text.count("search and rescue") == 1
     assert sum(tag == "svg" for tag, _ in outline.tags) == (2 if single else 0)
     assert ("1. Single particles: memory of the velocity" in outline.text) == single

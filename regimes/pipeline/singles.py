@@ -31,7 +31,7 @@ def single_side(tracks: Tracks, chosen: SingleOptions, seed: int) -> tuple[Singl
         flow = _mean_flow(chosen.flow, tracks.planar)
         return single_particle(tracks, chosen.mean, chosen.period, flow, seed=seed), ""
     except DataError as error:
-        return None, str(error)
+        return None, str(error).removeprefix("single particles: ")
 
 
 def cross_checks(
@@ -85,13 +85,14 @@ def analyse_singles(
     options = options or Options()
     single, missing = single_side(tracks, options.single, options.seed)
     reasons = (no_pair,) if single is not None else (no_pair, missing)
-    rest = "" if single is not None else f" Nor is there a single-particle side: {missing}."
+    why = no_pair[:1].upper() + no_pair[1:]
+    rest = "" if single is not None else f" Nor do particles say anything one by one: {missing}."
     return SinglesOnly(
         provenance=provenance(tracks, None, options.seed),
         single=single,
         single_missing=missing,
         ratios=cross_checks(single, tracks, None, (), options.single.deformation_radius),
-        sentence=f"Undecided: there are no pair statistics, because there is no pair: {no_pair}.{rest}",
+        sentence=f"Undecided: no pair statistics exist, for want of a pair to compare. {why}.{rest}",
         reasons=reasons,
     )
 
