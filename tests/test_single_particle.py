@@ -259,6 +259,12 @@ def test_energetic_seas_are_within_the_usual_range():
     assert 1.5 * DAY < found.scale().time.value < 2.6 * DAY
 
 
+def test_surface_drifters_remember_for_two_to_four_days():
+    # Common practice, no source: integral times of 2 to 4 days at the surface; every method must find 3 days there.
+    found = single_particle(drifters(n=60, motion=Motion(0.04, 1.0 / (3 * DAY))))
+    assert all(2 * DAY < found.scale(method).time.value < 4 * DAY for method in METHODS)
+
+
 def test_members_of_one_release_are_one_unit():
     """Particles that move as one are one particle: the error by releases is that of the releases alone."""
     motion = replace(MOTION, shared=1.0)
