@@ -143,7 +143,7 @@ class Analysis:
     passage_separation : float [m]
         Lowest resolved separation.
     fits : dict of str to Inference
-        "exit_rate" and "separation" (absent where the data do not allow it).
+        "exit_rate", "separation" and "joint" (the last two absent where the data do not allow them).
     bands : Bands
     verdict : Verdict
     single : SingleParticle or None

@@ -69,7 +69,7 @@ def _inference(curve, shift):
         _fit(("free", "diffusive"), -107.0, (2.15,), (65,), 7),
         _screened(("free",), -140.0),
     )
-    return Inference(curve, SPACE, named, free, 2.9 if curve == "exit_rate" else 1.6)
+    return Inference(curve, SPACE, named, free, {"exit_rate": 2.9, "separation": 1.6, "joint": 1.8}[curve])
 
 
 def _rate_table(stats):
@@ -215,7 +215,9 @@ def demo_analysis(n_pair: int = 60) -> Analysis:
     """An analysis of `n_pair` invented pairs, exponential to 8 km, Richardson to 80 km, diffusive beyond."""
     tracks, pairs = kernel_pairs(TRUTH, n_pair, 600.0, 7200.0, 1200, seed=11)
     stats = exit_statistics(tracks, pairs, 0.6 * KM * RHO ** np.arange(18))
-    fits = {name: _inference(name, shift) for name, shift in (("exit_rate", 1.0), ("separation", 1.12))}
+    fits = {
+        name: _inference(name, shift) for name, shift in (("exit_rate", 1.0), ("separation", 1.12), ("joint", 1.06))
+    }
     passed = _since_passage(tracks, pairs, SPACE.lowest)
     times = default_times(passed, tracks.step, 30)
     provenance = Provenance(

@@ -171,7 +171,7 @@ def test_models_that_did_not_converge_are_always_shown(analysis):
     rows = convergence_rows(changed)
     # seven models of the fixture were sampled; six lead and the seventh is the sick one
     assert (len(rows), not_shown(changed)) == (7, 0)
-    assert (len(convergence_rows(analysis)), not_shown(analysis)) == (12, 2)
+    assert (len(convergence_rows(analysis)), not_shown(analysis)) == (18, 3)  # seven of each of three curves
     assert rows[-1][1] == "exponential \u2192 diffusive"
     assert rows[-1][-1].startswith("split R-hat 1.200 is not below 1.01; effective sample size 30")
     assert all(row[-1] == "good" for row in rows[:-1])
@@ -194,6 +194,11 @@ def test_report_of_an_analysis_that_found_little(analysis):
     text = Outline(page(found, {name: svg(draw(name, found), name) for name in FIGURES})).text
     for said in ("None fits", "None was raised", "No slope is quoted", "there is no second opinion"):
         assert said in text
+
+
+def test_page_sets_the_joint_fit_beside_the_others(outline):
+    assert outline.text.count("both together") >= 3  # second opinion, comparison and convergence
+    assert "the decision does not rest on it" in outline.text
 
 
 def test_page_says_what_single_particles_say(analysis, outline):

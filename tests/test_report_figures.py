@@ -231,6 +231,7 @@ def test_slopes_are_points_arrows_or_words(analysis):
         Slope(1e3, 5e3, "separation", Interval(nan, 2.6, nan, 2.4, nan), "lower_bound", "steep"),
         Slope(1e3, 5e3, "exit_rate", Interval(nan, nan, 1.2, nan, 1.4), "upper_bound", "flat"),
         Slope(1e3, 5e3, "exit_rate", Interval(nan, nan, nan, nan, nan), "none", "the range is diffusive"),
+        Slope(1e3, 5e3, "joint", Interval(2.2, 2.1, 2.3, 2.0, 2.4), "estimate", ""),
     )
     ax = figures.plot_slopes(with_verdict(analysis, slopes=slopes))
     words = [t.get_text() for t in ax.texts]
@@ -238,6 +239,9 @@ def test_slopes_are_points_arrows_or_words(analysis):
     spans = [tuple(np.round(li.get_xdata(), 9)) for li in ax.lines if len(li.get_xdata()) == 2]
     assert (1.5, 1.9) in spans
     assert (1.6, 1.8) in spans
+    assert (2.0, 2.4) in spans
+    marks = [line.get_marker() for line in ax.lines if line.get_marker() not in ("None", "|")]
+    assert marks == ["o", "D"]
 
 
 @pytest.mark.parametrize(("low", "high"), [(1.0, 3.0), (0.5, 40.0), (1e-3, 1e3), (1e-9, 1e9)])

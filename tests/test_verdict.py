@@ -228,6 +228,8 @@ def test_cautions(changes, code, said):
 
 
 def test_a_slope_over_less_than_a_decade_has_its_caution():
+    joint = Slope(2 * KM, 9 * KM, "joint", Interval(1.7, 1.6, 1.8, 1.5, 1.9), "estimate", "")
+    assert decide(evidence(slopes=(joint,))).cautions == ()  # that of the separations, over the same range, is enough
     slope = Slope(2 * KM, 9 * KM, "exit_rate", Interval(1.7, 1.6, 1.8, 1.5, 1.9), "estimate", "")
     (caution,) = decide(evidence(slopes=(slope,))).cautions
     assert caution.text.startswith("The slope over 2.0 to 9.0 km rests on less than one decade;")

@@ -59,15 +59,14 @@ def make_groups(pairs: Pairs) -> Groups:
     ----------
     Aronow, Samii & Assenova 2015, Political Analysis 23, 564.
     """
-    one, two = pairs.cluster[pairs.first], pairs.cluster[pairs.second]
+    one, two = _members(pairs)
     if one.size and (min(one.min(), two.min()) < 0 or max(one.max(), two.max()) >= pairs.n_cluster):
         raise DataError(
             f"pairs: got members with a cluster outside 0 to {pairs.n_cluster - 1}; every member of a pair "
             "must belong to a cluster; find the pairs again from the tracks"
         )
     apart = one != two
-    low, high = np.minimum(one, two).astype(np.int64), np.maximum(one, two).astype(np.int64)
-    couples, index = np.unique(low[apart] * pairs.n_cluster + high[apart], return_inverse=True)
+    couples, index = np.unique(_couples(one, two, pairs.n_cluster)[apart], return_inverse=True)
     row_dyad = np.full(one.size, -1, dtype=np.int64)
     row_dyad[apart] = pairs.n_cluster + index
     weight = np.concatenate([np.ones(pairs.n_cluster), -np.ones(couples.size)])
@@ -78,3 +77,34 @@ def make_groups(pairs: Pairs) -> Groups:
         n_row=weight.size,
         weight=weight,
     )
+
+
+def place_of_rows(some: Pairs, every: Pairs) -> np.ndarray:
+    """Row among those of `every` pair for each row of `some` of them: the same cluster, or couple of clusters.
+
+    Parameters
+    ----------
+    some, every : Pairs
+        With the same clusters; `some` are taken from `every`.
+
+    Returns
+    -------
+    (n_row of some,) int array
+    """
+    fewer, all_keys = (_keys(pairs) for pairs in (some, every))
+    return np.concatenate([np.arange(every.n_cluster), every.n_cluster + np.searchsorted(all_keys, fewer)])
+
+
+def _keys(pairs: Pairs) -> np.ndarray:
+    """One number per couple of clusters connected by a pair, in the order of their rows."""
+    one, two = _members(pairs)
+    return np.unique(_couples(one, two, pairs.n_cluster)[one != two])
+
+
+def _members(pairs: Pairs) -> tuple[np.ndarray, np.ndarray]:
+    """Clusters of the two members of each pair."""
+    return pairs.cluster[pairs.first], pairs.cluster[pairs.second]
+
+
+def _couples(one, two, n_cluster: int) -> np.ndarray:
+    return np.minimum(one, two).astype(np.int64) * n_cluster + np.maximum(one, two).astype(np.int64)

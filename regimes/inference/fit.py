@@ -14,15 +14,17 @@ from regimes.inference.quadrature import integrate
 from regimes.inference.record import Fit, Inference
 from regimes.inference.sampler import sample
 from regimes.likelihood.exit_rate import ExitRateLikelihood
+from regimes.likelihood.joint import JointLikelihood
 from regimes.likelihood.separation import SeparationLikelihood
 
 NEGLIGIBLE = np.log(1e-3)  # share of the evidence below which a model is not sampled
 _MARGIN = 0.5  # of ln evidence, for the error of the screening
 _HOPELESS = 15.0  # ln posterior below the best maximum at which a model is not even screened
-_WALKERS = {"exit_rate": 32, "separation": 24}
+_WALKERS = {"exit_rate": 32, "separation": 24, "joint": 24}
 _KEPT = 4000  # draws kept of each model, after thinning
 
 Progress = Callable[[str, int, int], None]
+Costly = SeparationLikelihood | JointLikelihood
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,15 +95,25 @@ class _ExitRate:
         return self.likelihood.batch(self.model, theta, self.space)
 
 
-def screen_separations(
-    likelihood: SeparationLikelihood, candidates, seed: int, progress: Progress | None = None
-) -> tuple[list[Candidate], SeparationLikelihood]:
-    """Evidence of each model from the separations, starting from its exit-rate draws.
+def screen_costly(
+    curve: str, likelihood: Costly, candidates, seed: int, progress: Progress | None = None
+) -> tuple[list[Candidate], Costly]:
+    """Evidence of each model from the separations, with or without the exit rates, starting from its exit-rate draws.
+
+    Parameters
+    ----------
+    curve : str
+        "separation" or "joint".
+    likelihood : SeparationLikelihood or JointLikelihood
+    candidates : list of Candidate
+    seed : int
+    progress : callable, optional
+        Called with (stage, done, total).
 
     Returns
     -------
     candidates : list of Candidate
-    likelihood : SeparationLikelihood
+    likelihood : SeparationLikelihood or JointLikelihood
         Tempered at the best model.
 
     Notes
@@ -129,11 +141,11 @@ def screen_separations(
             guess: Approximation = approximate(target, candidate.draws[:60], climb, seed + i)
             found.append(Candidate(target, guess.log_evidence, guess.draws))
         if progress is not None:
-            progress("screening the separation distribution", i + 1, len(candidates))
+            progress(f"screening the {curve} fits", i + 1, len(candidates))
     return found, tempered
 
 
-def _temper(likelihood: SeparationLikelihood, best, space: Space) -> SeparationLikelihood:
+def _temper(likelihood: Costly, best, space: Space) -> Costly:
     reasons = []
     for _, model, theta in best:
         target = Posterior(likelihood.evaluator(model, space), model, space)
@@ -142,7 +154,7 @@ def _temper(likelihood: SeparationLikelihood, best, space: Space) -> SeparationL
             return likelihood.tempered(model, best_theta, space)
         except FitError as error:
             reasons.append(str(error))
-    raise FitError(f"separation likelihood: no model has a definite maximum; {reasons[0]}")
+    raise FitError(f"no model has a definite maximum; {reasons[0]}")
 
 
 def sample_candidates(
@@ -153,7 +165,7 @@ def sample_candidates(
     Parameters
     ----------
     curve : str
-        "exit_rate" or "separation".
+        "exit_rate", "separation" or "joint".
     groups : sequence of lists of Candidate
         Models compete within a group.
     seed : int

@@ -57,7 +57,7 @@ class Inference:
     Parameters
     ----------
     curve : str
-        "exit_rate" or "separation".
+        "exit_rate", "separation" or "joint".
     space : Space
         Range and prior bounds, common to all models.
     named : tuple of Fit

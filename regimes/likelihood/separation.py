@@ -6,7 +6,8 @@ import numpy as np
 from numba import njit
 
 from regimes.curves import SeparationCounts
-from regimes.errors import DataError, FitError
+from regimes.errors import DataError
+from regimes.likelihood.sandwich import magnitude
 from regimes.theory.fokker_planck import kernel_at, separation_masses
 
 CELL = 0.25  # width of a grid cell in ln r; with STEPS it moves alpha by 0.01 from the converged value (measured)
@@ -135,40 +136,9 @@ class SeparationLikelihood:
         FitError
             If no parameter is identified there.
         """
-        score, curvature = self._score_and_curvature(model, np.asarray(theta, float), space)
-        weight = self.counts.weight
-        clusters = np.sum(weight > 0)
-        spread = clusters / max(clusters - 1, 1) * score.T @ (weight[:, None] * score)
-        known = np.flatnonzero(np.diag(curvature) > 1e-3 * np.max(np.abs(np.diag(curvature))))
-        part = np.ix_(known, known)
-        trace = np.trace(np.linalg.solve(curvature[part], spread[part])) if known.size else np.nan
-        if not trace > 0 or np.any(np.linalg.eigvalsh(curvature[part]) <= 0):
-            raise FitError(f"separation likelihood: {model.label} has no definite maximum; cannot be tempered")
-        return replace(self, tempering=min(float(known.size / trace), 1.0))
-
-    def _score_and_curvature(self, model, theta, space):
-        """Row scores (n_row, p) and minus the Hessian (p, p) by central differences."""
-        size = theta.size
-        h = 0.02
-        eye = h * np.eye(size)
-        rows = {}
-
-        def value(shift):
-            key = tuple(np.round(shift / h).astype(int))
-            if key not in rows:
-                rows[key] = self.row_values(model, theta + shift, space)
-            return rows[key]
-
-        score = np.stack([(value(eye[j]) - value(-eye[j])) / (2 * h) for j in range(size)], axis=1)
-        weight = self.counts.weight
-        curvature = np.empty((size, size))
-        for j in range(size):
-            for k in range(j + 1):
-                mixed = (
-                    value(eye[j] + eye[k]) - value(eye[j] - eye[k]) - value(eye[k] - eye[j]) + value(-eye[j] - eye[k])
-                )
-                curvature[j, k] = curvature[k, j] = -float(weight @ mixed) / (4 * h * h)
-        return score, curvature
+        label = f"separation likelihood: {model.label}"
+        kappa = magnitude(lambda t: self.row_values(model, t, space), self.counts.weight, theta, label)
+        return replace(self, tempering=min(kappa, 1.0))
 
 
 def output_times(begin: float, end: float, step: float, number: int = 10) -> np.ndarray:

@@ -25,19 +25,21 @@ from regimes.verdict.words import methods_text, verdict_sentence
 def put_together(tracks, pairs, options: Options, rates: Rates, fits, alone) -> Analysis:
     """The analysis from its parts.
 
-    `fits` is (leading, second or None, why there is no second, pairs from passage), `alone` what `single_side` gives.
+    `fits` is (leading, second or None, why there is no second, pairs from passage, (joint or None, why there is none)),
+    `alone` what `single_side` gives.
     """
-    leading, second, missing, moved = fits
+    leading, second, missing, moved, (joint, no_joint) = fits
     rng = np.random.default_rng(options.seed)
-    slopes = quoted_slopes(rates, leading, second, options, rng)
+    others = {name: fit for name, fit in (("separation", second), ("joint", joint)) if fit is not None}
+    slopes = quoted_slopes(rates, leading, others, options, rng)
     evidence = _evidence(tracks, rates, (leading, second, missing), slopes, options.seed)
     record = provenance(tracks, pairs, options.seed)
     passage = dispersion_of(tracks, moved)
     spread = bands(leading, rates, moved, passage, rng)
-    verdict = _verdict(evidence, rates, _facts(record, rates, options), dissent(passage, spread))
+    extra = dissent(passage, spread) + joint_cautions(joint, no_joint)
+    verdict = _verdict(evidence, rates, _facts(record, rates, options), extra)
     single, missing_single = alone
     radius = options.single.deformation_radius
-    fitted = {"exit_rate": leading} | ({"separation": second} if second is not None else {})
     return Analysis(
         provenance=record,
         rates=rate_table(rates),
@@ -45,7 +47,7 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits, alone) -> 
         dispersion=dispersion_of(tracks, pairs),
         passage_dispersion=passage,
         passage_separation=rates.resolved.low,
-        fits=fitted,
+        fits={"exit_rate": leading} | others,
         bands=spread,
         verdict=verdict,
         single=single,
@@ -133,8 +135,20 @@ def dissent(passage: DispersionStatistics, spread: Bands) -> tuple[Caution, ...]
     )
 
 
-def quoted_slopes(rates: Rates, leading: Inference, second, options: Options, rng) -> tuple[Slope, ...]:
-    """Slopes over the wished range and over each range of the best sequence that is not diffusive."""
+def joint_cautions(joint: Inference | None, missing: str) -> tuple[Caution, ...]:
+    """What a reader must know of the joint fit, on which the decision does not rest."""
+    if joint is None:
+        return (Caution("no_joint_fit", f"No fit of both curves together: {missing}."),)
+    if joint.health.ok:
+        return ()
+    return (Caution("joint_not_converged", f"The joint fit has not converged: {joint.health.reason}."),)
+
+
+def quoted_slopes(rates: Rates, leading: Inference, others, options: Options, rng) -> tuple[Slope, ...]:
+    """Slopes over the wished range and over each range of the best sequence that is not diffusive.
+
+    `others` are the fits by curve that have no likelihood of a sub-range.
+    """
     low, high = rates.resolved.low, rates.resolved.high
     best = leading.named[int(np.argmax(leading.sequence_probability()))]
     moves = best.posterior.draws[:, 1 + best.model.n_free :]
@@ -155,8 +169,8 @@ def quoted_slopes(rates: Rates, leading: Inference, second, options: Options, rn
             continue
         out.append(either_record(found))
         inside = (max(a, low), min(b, high))
-        if second is not None and inside[1] > 2.0 * inside[0]:
-            out.append(slope_record(mixed_slope_over(second.free_posteriors(), *inside, rng), "separation"))
+        if inside[1] > 2.0 * inside[0]:
+            out += [slope_record(mixed_slope_over(f.free_posteriors(), *inside, rng), c) for c, f in others.items()]
     return tuple(out)
 
 

@@ -5,7 +5,7 @@ import numpy as np
 from regimes.curves import separation_counts
 from regimes.curves.passage import from_passage
 from regimes.errors import DataError, FitError
-from regimes.inference.fit import infer, screen_separations
+from regimes.inference.fit import infer, screen_costly
 from regimes.likelihood.separation import SeparationLikelihood, grid_edges, output_times
 from regimes.pairs import Pairs
 from regimes.pipeline.rates import Rates, largest_separation
@@ -15,19 +15,26 @@ _START_BINS = np.array([1.0, 1.15, 1.4, 1.8, 3.0, 1e9])  # in units of the separ
 
 
 def second_opinion(tracks: Tracks, rates: Rates, candidates, how):
-    """The separation-distribution fit, or why there is none, and the pairs from their first passage."""
+    """The separation-distribution fit, or why there is none, its likelihood, and the pairs from their first passage."""
     moved = from_passage(tracks, rates.pairs, rates.resolved.low)
     try:
-        likelihood = _separation_likelihood(tracks, rates, moved)
+        likelihood = separation_likelihood(tracks, rates, moved)
         named, free = candidates
-        screened, tempered = screen_separations(likelihood, [*named, *free], how["seed"], how["progress"])
+        screened, tempered = screen_costly("separation", likelihood, [*named, *free], how["seed"], how["progress"])
         found = infer("separation", screened[: len(named)], screened[len(named) :], 1.0 / tempered.tempering, **how)
     except (DataError, FitError) as error:
-        return None, str(error), moved
-    return found, "", moved
+        return None, str(error), None, moved
+    return found, "", tempered, moved
 
 
-def _separation_likelihood(tracks: Tracks, rates: Rates, moved: Pairs) -> SeparationLikelihood:
+def separation_likelihood(tracks: Tracks, rates: Rates, moved: Pairs) -> SeparationLikelihood:
+    """Likelihood of the separations of pairs since their first passage, not tempered.
+
+    Raises
+    ------
+    DataError
+        If records are too short.
+    """
     low = rates.resolved.low
     lasting = np.sort(moved.length)[::-1]
     end = float(lasting[min(max(9, lasting.size // 4), lasting.size - 1)] - 1) * tracks.step

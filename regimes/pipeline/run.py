@@ -9,6 +9,7 @@ from regimes.inference.fit import exit_rate_space, infer, screen_exit_rates
 from regimes.inference.models import free_models, named_models
 from regimes.pairs import Pairs
 from regimes.pipeline.assemble import put_together
+from regimes.pipeline.joint import joint_fit
 from regimes.pipeline.opinion import second_opinion
 from regimes.pipeline.options import Options, SingleOptions
 from regimes.pipeline.origin import of_case
@@ -92,8 +93,9 @@ def analyse_pairs(
     free = screen_exit_rates(rates.likelihood, space, free_models(), seed + 1)
     how = {"seed": seed, "jobs": jobs, "progress": progress}
     leading = infer("exit_rate", named, free, rates.spread.total, **how)
-    second, missing, moved = second_opinion(tracks, rates, (named, free), how)
-    return put_together(tracks, pairs, options, rates, (leading, second, missing, moved), alone)
+    second, missing, separation, moved = second_opinion(tracks, rates, (named, free), how)
+    joint = joint_fit(rates, moved, separation, leading, (named, free), how)
+    return put_together(tracks, pairs, options, rates, (leading, second, missing, moved, joint), alone)
 
 
 def _options(case: Case, seed: int, jobs: int) -> Options:

@@ -92,8 +92,8 @@ def _transitions(_analysis: Analysis) -> str:
 
 def _slopes(_analysis: Analysis) -> str:
     return (
-        "Spectral slope α implied over ranges of separation, from exit rates (filled) and from "
-        "separations at fixed times (open). Dot: median; thick line: 68 %; thin line: 95 %. An arrow "
+        "Spectral slope α implied over ranges of separation, from exit rates (black), from separations at fixed "
+        "times (white) and from both together (grey). Mark: median; thick line: 68 %; thin line: 95 %. An arrow "
         "starts at the 95 % bound where only a bound is known. Dotted lines: slopes 5/3, 2 and 3."
     )
 

@@ -7,7 +7,7 @@ DISPLAY = {
     "diffusive": "diffusive",
     "free": "free",
 }
-CURVES = {"exit_rate": "exit rates", "separation": "separations at fixed times"}
+CURVES = {"exit_rate": "exit rates", "separation": "separations at fixed times", "joint": "both together"}
 DECISIONS = {
     "supported": "Supported",
     "undecided": "Undecided",

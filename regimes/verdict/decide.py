@@ -204,7 +204,9 @@ def _of_the_fits(evidence: Evidence, against: list[str]) -> list[Caution]:
     if evidence.second_missing:
         out.append(Caution("no_second_opinion", f"No second opinion: {evidence.second_missing}."))
     out += [Caution("second_opinion_differs", text[0].upper() + text[1:] + ".") for text in against]
-    out += [_short_range(s) for s in evidence.slopes if s.kind == "estimate" and s.high / s.low < 10.0]
+    # The joint slope has the range of the separations' own: one caution will do.
+    short = [s for s in evidence.slopes if s.kind == "estimate" and s.high / s.low < 10.0 and s.curve != "joint"]
+    out += [_short_range(s) for s in short]
     if evidence.exit_rate.challenge > np.log(3.0):
         out.append(
             Caution(

@@ -94,7 +94,7 @@ class Slope:
     low, high : float [m]
         The range.
     curve : str
-        "exit_rate" or "separation".
+        "exit_rate", "separation" or "joint".
     value : Interval
         alpha. NaN when `kind` is "none".
     kind : str

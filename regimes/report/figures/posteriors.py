@@ -32,7 +32,8 @@ SHADES = (
     (BLACK, (0, (6, 1.5, 1, 1.5))),
     (SKY, "-"),
 )
-SHORT = {"exit_rate": "exit rates", "separation": "fixed times"}
+SHORT = {"exit_rate": "exit rates", "separation": "fixed times", "joint": "both"}
+MARKS = {"exit_rate": ("o", INK), "separation": ("s", "white"), "joint": ("D", GREY)}  # shape and filling
 LANDMARKS = ((5 / 3, "5/3"), (2.0, "2"), (3.0, "3"))
 
 
@@ -116,8 +117,7 @@ def _range_words(slope: Slope) -> str:
 
 
 def _slope_row(ax: Axes, row: int, slope: Slope) -> None:
-    value, filled = slope.value, slope.curve == "exit_rate"
-    face = INK if filled else "white"
+    value, (mark, face) = slope.value, MARKS[slope.curve]
     if slope.kind == "none":
         ax.annotate(
             fill(slope.reason, 44),
@@ -130,7 +130,7 @@ def _slope_row(ax: Axes, row: int, slope: Slope) -> None:
     elif slope.kind == "estimate":
         ax.plot([value.lo95, value.hi95], [row, row], color=INK, lw=1.2)
         ax.plot([value.lo68, value.hi68], [row, row], color=INK, lw=3.5)
-        ax.plot(value.median, row, "o" if filled else "s", ms=7, mfc=face, mec=INK)
+        ax.plot(value.median, row, mark, ms=7, mfc=face, mec=INK)
     else:
         at, to, word = (value.lo95, 3.3, "≥") if slope.kind == "lower_bound" else (value.hi95, 0.85, "≤")
         ax.annotate("", (to, row), (at, row), arrowprops={"arrowstyle": "->", "color": INK, "lw": 1.4, "shrinkA": 0})
