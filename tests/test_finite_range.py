@@ -128,7 +128,7 @@ def test_evidences_by_brute_force():
     alpha uniform from 0 to 4, of which the kernel takes 1 to 4; outer scale log-uniform from half to a hundred times
     the range; ln rate uniform over 24. Tolerance: 5 standard errors of the mean over 2000 draws.
     """
-    likelihood = as_predicted(finite_range_kernel(2.0, 150 * KM, 1e-5, (1 * KM, 64 * KM)), 10.0)
+    likelihood = as_predicted(finite_range_kernel(1.1, 150 * KM, 1e-5, (1 * KM, 64 * KM)), 10.0)
     rng = np.random.default_rng(5)
     log_rate = np.log(1e-5) + np.linspace(-12, 12, 1201)
     width = likelihood.exits.sum() / likelihood.dispersion

@@ -142,6 +142,22 @@ def test_magnitude_of_a_mean():
     assert found == pytest.approx(1.0 / np.var(x, ddof=1), rel=1e-9)  # differences of a parabola are exact
 
 
+def test_magnitude_with_couples_of_clusters():
+    """J against the plain sum over all pairs of pairs that share a cluster, by loops."""
+    rng = np.random.default_rng(4)
+    ends = np.array([rng.choice(6, 2, replace=False) for _ in range(40)])
+    x = rng.standard_normal(6)[ends].sum(axis=1) + rng.standard_normal(40)
+    couples = sorted({tuple(sorted(e)) for e in ends.tolist()})
+    member = np.array(
+        [[c in e for e in ends] for c in range(6)] + [[tuple(sorted(e)) == d for e in ends.tolist()] for d in couples]
+    )
+    weight = np.append(np.ones(6), -np.ones(len(couples)))
+    score = x - x.mean()
+    shared = sum(score[i] * score[j] for i in range(40) for j in range(40) if set(ends[i]) & set(ends[j]))
+    found = magnitude(lambda t: member @ (-0.5 * (x - t[0]) ** 2), weight, [x.mean()], "couples")
+    assert found == pytest.approx(40.0 / (shared * 6 / 5), rel=1e-8)
+
+
 def test_no_maximum_no_tempering():
     with pytest.raises(FitError, match=r"flat: F has no definite maximum; cannot be tempered"):
         magnitude(lambda t: np.array([1.0, -1.0]) * t[0], np.ones(2), [0.3], "flat: F")
