@@ -71,7 +71,7 @@ def _substep(pieces, i, x, longest):
 
 
 @njit(cache=True, error_model="numpy")
-def _pair_walk(pieces, start, step, substep, rng, out):
+def pair_walk(pieces, start, step, substep, rng, out):
     """Separation vector of one pair at every step, into `out` (n_time, 2).
 
     The direction turns with variance 2 (1 + a) K / r^2 dt, the transverse part of an incompressible flow.
@@ -102,7 +102,7 @@ def _pairs_walk(pieces, start, step, substep, rng, position):
     """Positions (n_pair, 2, n_time, 3) of the two members about their midpoint."""
     vector = np.empty((position.shape[2], 2))
     for p in range(position.shape[0]):
-        _pair_walk(pieces, start, step, substep, rng, vector)
+        pair_walk(pieces, start, step, substep, rng, vector)
         for t in range(position.shape[2]):
             for axis in range(2):
                 position[p, 0, t, axis] = -0.5 * vector[t, axis]

@@ -15,7 +15,7 @@ from regimes.tracks import Tracks
 # Longest substep in units of the smallest r2 / K in the group. An Euler substep h makes the growth rate of
 # mean squared separation 4 h too low in the exponential regime.
 GROUP_SUBSTEP = 0.002
-_MOST_SUBSTEPS = 20000.0
+MOST_SUBSTEPS = 20000.0
 MOST_PARTICLES = 10
 # Share of the covariance that may be cut on average, see `release_tracks`.
 MOST_CUT = 0.02
@@ -115,8 +115,11 @@ def _factor(matrix):
 
 
 @njit(cache=True, error_model="numpy")
-def _move(pieces, points, work, rng, left, shortest):
-    """One Euler substep of the points; returns its length and the share of covariance cut."""
+def move_group(pieces, points, work, rng, left, limits):
+    """One Euler substep of the points; returns its length and the share of covariance cut.
+
+    `limits` are the longest substep in units of the smallest r2 / K, and the shortest in seconds.
+    """
     tensor, tree, reach, factor, noise = work
     n = noise.size
     fastest = _tensors(pieces, points, tensor)
@@ -126,7 +129,7 @@ def _move(pieces, points, work, rng, left, shortest):
     for k in range(n):
         total += factor[k, k]
     share = _factor(factor) / total
-    dt = min(left, max(GROUP_SUBSTEP / fastest, shortest))
+    dt = min(left, max(limits[0] / fastest, limits[1]))
     for k in range(n):
         noise[k] = math.sqrt(dt) * rng.standard_normal()
     reach[tree[0, 1]] = 0.0  # from here on: displacements, the root of the tree at rest
@@ -144,12 +147,19 @@ def _move(pieces, points, work, rng, left, shortest):
 
 
 @njit(cache=True, error_model="numpy")
+def workspace(n):
+    """Arrays that `move_group` needs for n points."""
+    edges = 2 * (n - 1)
+    tree = np.empty((n - 1, 2), dtype=np.int64)
+    return (np.zeros((n, n, 3)), tree, np.empty((n, 2)), np.empty((edges, edges)), np.empty(edges))
+
+
+@njit(cache=True, error_model="numpy")
 def _groups_walk(pieces, corners, step, rng, position):
     """Positions (n_group, n_member, n_time, 3) about the centroid; returns the mean share of cuts."""
     n = corners.shape[0]
-    edges = 2 * (n - 1)
-    tree = np.empty((n - 1, 2), dtype=np.int64)
-    work = (np.zeros((n, n, 3)), tree, np.empty((n, 2)), np.empty((edges, edges)), np.empty(edges))
+    work = workspace(n)
+    limits = (GROUP_SUBSTEP, step / MOST_SUBSTEPS)
     points = np.empty((n, 2))
     shares, substeps = 0.0, 0
     for g in range(position.shape[0]):
@@ -161,7 +171,7 @@ def _groups_walk(pieces, corners, step, rng, position):
         for t in range(position.shape[2]):
             left = step if t > 0 else 0.0
             while left > 0.0:
-                dt, share = _move(pieces, points, work, rng, left, step / _MOST_SUBSTEPS)
+                dt, share = move_group(pieces, points, work, rng, left, limits)
                 shares += share
                 substeps += 1
                 left -= dt
