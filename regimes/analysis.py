@@ -5,8 +5,13 @@ from html import escape
 
 import numpy as np
 
+from regimes.checks import Check
 from regimes.curves import Curve, DispersionStatistics
+from regimes.curves.ballistic import BallisticCheck
+from regimes.curves.structure import StructureStatistics
+from regimes.curves.triplets import Triplets
 from regimes.inference.record import Inference
+from regimes.inference.spectrum_fit import SpectrumFit
 from regimes.particles import Ratio, SingleParticle
 from regimes.verdict.record import Verdict
 
@@ -127,6 +132,41 @@ class Bands:
 
 
 @dataclass(frozen=True, slots=True)
+class OtherCurves:
+    """Curves beside those that were fitted, and whether the fitted kernel answers for them.
+
+    Parameters
+    ----------
+    checks : tuple of Check
+        Every curve held against its posterior predictive distribution.
+    checks_missing : str
+        Why curves are not checked; empty where they are.
+    structure : StructureStatistics
+        Relative velocities by separation.
+    velocity_ratio : float
+        Variance of relative velocities by differences over two steps over that by one; 1/2 where motion is forgotten
+        from fix to fix, see `resolves_velocities`.
+    spectrum : SpectrumFit or None
+        Slope of the wavenumber spectrum from the structure function, by forward model.
+    spectrum_missing : str
+        Why there is no spectrum; empty where there is.
+    ballistic : BallisticCheck or None
+        Short-time law of the relative dispersion; None where too few steps follow the start.
+    triplets : Triplets or None
+        None where releases hold no triplets or the case does not want them.
+    """
+
+    checks: tuple[Check, ...]
+    checks_missing: str
+    structure: StructureStatistics
+    velocity_ratio: float
+    spectrum: SpectrumFit | None
+    spectrum_missing: str
+    ballistic: BallisticCheck | None
+    triplets: Triplets | None
+
+
+@dataclass(frozen=True, slots=True)
 class Analysis:
     """One run.
 
@@ -152,6 +192,8 @@ class Analysis:
         Why there is no `single`; empty where there is.
     ratios : tuple of Ratio
         `single` held against the pairs and against a deformation radius, as far as that can be done.
+    others : OtherCurves
+        Every other curve, and whether the kernel answers for it.
     """
 
     provenance: Provenance
@@ -166,6 +208,7 @@ class Analysis:
     single: SingleParticle | None
     single_missing: str
     ratios: tuple[Ratio, ...]
+    others: OtherCurves
 
     @property
     def sentence(self) -> str:

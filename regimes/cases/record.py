@@ -108,10 +108,12 @@ class PairRules(Section):
 
 
 class CurveRules(Section):
-    """Separations at which the curves are taken."""
+    """Separations at which the curves are taken, and how they are checked."""
 
     separation_ratio: Annotated[float, Field(gt=1.05, le=3.0)] = 2.0**0.5
     separations_km: Range | None = None
+    repetitions: Annotated[int, Field(ge=99)] = 199
+    triplets: bool = True
 
     @field_validator("separations_km")
     @classmethod

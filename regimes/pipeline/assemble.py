@@ -11,10 +11,10 @@ from regimes.inference.slope_mixture import slope_of_either
 from regimes.pairs import Pairs
 from regimes.pipeline.options import Options
 from regimes.pipeline.origin import provenance
+from regimes.pipeline.other_curves import dissents
 from regimes.pipeline.rates import Rates, rate_table
 from regimes.pipeline.singles import cross_checks
 from regimes.tracks import Tracks
-from regimes.units import DAY
 from regimes.verdict.decide import Evidence, decide
 from regimes.verdict.numbers import by_separation, either_record, sequences, slope_record, transition_scales
 from regimes.verdict.record import Caution, Slope, Supported, Verdict
@@ -22,11 +22,11 @@ from regimes.verdict.rule import CHALLENGE
 from regimes.verdict.words import methods_text, verdict_sentence
 
 
-def put_together(tracks, pairs, options: Options, rates: Rates, fits, alone) -> Analysis:
+def put_together(tracks, pairs, options: Options, rates: Rates, fits, beside) -> Analysis:
     """The analysis from its parts.
 
     `fits` is (leading, second or None, why there is no second, pairs from passage, (joint or None, why there is none)),
-    `alone` what `single_side` gives.
+    `beside` (what `single_side` gives, what `other_curves` gives).
     """
     leading, second, missing, moved, (joint, no_joint) = fits
     rng = np.random.default_rng(options.seed)
@@ -36,9 +36,9 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits, alone) -> 
     record = provenance(tracks, pairs, options.seed)
     passage = dispersion_of(tracks, moved)
     spread = bands(leading, rates, moved, passage, rng)
-    extra = dissent(passage, spread) + joint_cautions(joint, no_joint)
+    (single, missing_single), seen = beside
+    extra = dissents(seen) + joint_cautions(joint, no_joint)
     verdict = _verdict(evidence, rates, _facts(record, rates, options), extra)
-    single, missing_single = alone
     radius = options.single.deformation_radius
     return Analysis(
         provenance=record,
@@ -53,6 +53,7 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits, alone) -> 
         single=single,
         single_missing=missing_single,
         ratios=cross_checks(single, tracks, pairs, verdict.transitions, radius),
+        others=seen,
     )
 
 
@@ -108,31 +109,6 @@ def _verdict(evidence: Evidence, rates: Rates, facts: dict, dissents: tuple[Caut
 
 def dispersion_of(tracks: Tracks, pairs: Pairs) -> DispersionStatistics:
     return dispersion_statistics(tracks, pairs, default_times(pairs, tracks.step))
-
-
-def dissent(passage: DispersionStatistics, spread: Bands) -> tuple[Caution, ...]:
-    """A caution where the mean log separation leaves what the fitted kernel predicts at more than half of the times.
-
-    Leaves: by over two standard errors of the difference, with five pairs in three clusters or more.
-    """
-    curve = passage.mean_log_separation()
-    some = passage.times > 0
-    seen = (passage.weight @ passage.log_count)[some]
-    width = np.hypot(curve.standard_error[some], 0.5 * (spread.mean_log[3] - spread.mean_log[1]))
-    with np.errstate(invalid="ignore"):
-        away = np.abs(curve.value[some] - spread.mean_log[2]) > 2.0 * width
-    usable = (seen >= 5) & (curve.n_cluster[some] >= 3) & np.isfinite(width)
-    if usable.sum() < 4 or np.mean(away[usable]) <= 0.5:
-        return ()
-    days = spread.times[usable & away] / DAY
-    return (
-        Caution(
-            "mean_log_dissents",
-            f"The mean log separation leaves what the fitted kernel predicts, mostly {days[0]:.2g} to {days[-1]:.2g} d "
-            "after the first passage: one kernel without memory does not answer for both curves. Strain that persists "
-            "along a pair or differs between releases, oscillations and shear are the usual causes.",
-        ),
-    )
 
 
 def joint_cautions(joint: Inference | None, missing: str) -> tuple[Caution, ...]:

@@ -75,6 +75,10 @@ class Options:
         Threads, 1 or more.
     single : SingleOptions
         For particles taken one by one.
+    repetitions : int
+        Simulated repetitions behind each predictive check, 99 or more.
+    triplets : bool
+        Whether triangles of particles released together are followed, where there are any.
 
     Raises
     ------
@@ -90,6 +94,8 @@ class Options:
     seed: int = 1
     jobs: int = 1
     single: SingleOptions = field(default_factory=SingleOptions)
+    repetitions: int = 199
+    triplets: bool = True
 
     def __post_init__(self) -> None:
         _refuse(
@@ -102,6 +108,7 @@ class Options:
                 ("slope_range", self.slope_range, _rises(self.slope_range), f"{_RISING}, or None"),
                 ("seed", self.seed, self.seed >= 0, "be 0 or more"),
                 ("jobs", self.jobs, self.jobs >= 1, "be 1 or more"),
+                ("repetitions", self.repetitions, self.repetitions >= 99, "be 99 or more"),
             ),
         )
 

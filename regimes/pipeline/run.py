@@ -13,6 +13,7 @@ from regimes.pipeline.joint import joint_fit
 from regimes.pipeline.opinion import second_opinion
 from regimes.pipeline.options import Options, SingleOptions
 from regimes.pipeline.origin import of_case
+from regimes.pipeline.other_curves import other_curves
 from regimes.pipeline.rates import exit_rates
 from regimes.pipeline.singles import analyse_singles, single_side
 from regimes.pipeline.survey import pairs_of, read_tracks
@@ -95,7 +96,9 @@ def analyse_pairs(
     leading = infer("exit_rate", named, free, rates.spread.total, **how)
     second, missing, separation, moved = second_opinion(tracks, rates, (named, free), how)
     joint = joint_fit(rates, moved, separation, leading, (named, free), how)
-    return put_together(tracks, pairs, options, rates, (leading, second, missing, moved, joint), alone)
+    others = other_curves(tracks, pairs, rates, (leading, moved), options, progress)
+    fits = (leading, second, missing, moved, joint)
+    return put_together(tracks, pairs, options, rates, fits, (alone, others))
 
 
 def _options(case: Case, seed: int, jobs: int) -> Options:
@@ -108,5 +111,7 @@ def _options(case: Case, seed: int, jobs: int) -> Options:
         slope_range=case.report.slope_range,
         seed=seed,
         jobs=jobs,
+        repetitions=case.curves.repetitions,
+        triplets=case.curves.triplets,
         single=SingleOptions(alone.mean, alone.period, alone.mean_flow, alone.deformation_radius),
     )
