@@ -40,7 +40,8 @@ def likelihoods(exponent, rate, days, n_pair, seed, clusters=None):
 
 def peak(evaluate, space):
     """Parameters of the maximum of one free power law."""
-    starts = np.array([[np.mean(space.log_rate), alpha] for alpha in (1.3, 1.7, 2.2, 2.7)])
+    rates = np.mean(space.log_rate) + np.arange(-1.0, 1.1, 0.1)
+    starts = np.stack([g.ravel() for g in np.meshgrid(rates, np.arange(1.1, 3.0, 0.2))], axis=1)  # beyond 3 all is flat
     return climbed(Posterior(evaluate, FREE, space), starts)[0]
 
 
