@@ -1,14 +1,18 @@
 """Kernel worlds for the statistical tests: pairs of known truth, records that end early."""
 
+import tomllib
 from concurrent.futures import ProcessPoolExecutor
 from dataclasses import replace
 from multiprocessing import get_context
+from pathlib import Path
 
 import numpy as np
 
 from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.theory.kernel import Kernel
 from regimes.units import DAY, HOUR
+
+CASES = Path(__file__).resolve().parent.parent / "cases"
 
 
 def lossy_pairs(kernel: Kernel, n_pair: int, days: float, seed: int, start: float = 700.0):
@@ -27,3 +31,9 @@ def in_parallel(function, arguments):
 def kernel(exponents, breaks_km, rate_per_day, reference_km=1.0) -> Kernel:
     """Kernel with K / r^2 = rate at the reference separation."""
     return Kernel(exponents, np.asarray(breaks_km, float) * 1e3, rate_per_day / DAY, reference_km * 1e3)
+
+
+def survey_recipe(seed: int) -> dict:
+    """Recipe of the demo's sea with another seed: what `recipe_from` takes."""
+    recipe = tomllib.loads((CASES / "merrowe-sea" / "recipe.toml").read_text(encoding="utf-8"))
+    return recipe | {"seed": seed}
