@@ -8,6 +8,7 @@ import numpy as np
 from regimes.checks import Check
 from regimes.curves import Curve, DispersionStatistics
 from regimes.curves.ballistic import BallisticCheck
+from regimes.curves.diffusivity import RelativeDiffusivity
 from regimes.curves.structure import StructureStatistics
 from regimes.curves.triplets import Triplets
 from regimes.inference.record import Inference
@@ -115,20 +116,11 @@ class Bands:
         Lower thresholds, finely spaced over the resolved range.
     rate_named, rate_free : (5, m) float arrays [1/s]
         Exponent of the named sequences and of the free-exponent kernels.
-    times : (k,) float array [s]
-        Since the first passage of `passage_separation`.
-    dispersion : (5, k) float array [m2]
-        Relative dispersion predicted from the exit-rate fit.
-    mean_log : (5, k) float array [ln m]
-        Mean of ln r.
     """
 
     separation: np.ndarray
     rate_named: np.ndarray
     rate_free: np.ndarray
-    times: np.ndarray
-    dispersion: np.ndarray
-    mean_log: np.ndarray
 
 
 @dataclass(frozen=True, slots=True)
@@ -150,6 +142,8 @@ class OtherCurves:
         Slope of the wavenumber spectrum from the structure function, by forward model.
     spectrum_missing : str
         Why there is no spectrum; empty where there is.
+    diffusivity : RelativeDiffusivity or None
+        Since the first passage of `Analysis.passage_separation`; None where too few steps follow it.
     ballistic : BallisticCheck or None
         Short-time law of the relative dispersion; None where too few steps follow the start.
     triplets : Triplets or None
@@ -162,6 +156,7 @@ class OtherCurves:
     velocity_ratio: float
     spectrum: SpectrumFit | None
     spectrum_missing: str
+    diffusivity: RelativeDiffusivity | None
     ballistic: BallisticCheck | None
     triplets: Triplets | None
 
@@ -179,7 +174,7 @@ class Analysis:
     dispersion : DispersionStatistics
         Since the start of the pairs.
     passage_dispersion : DispersionStatistics
-        Since the first passage of `passage_separation`; what `Bands.dispersion` is compared with.
+        Since the first passage of `passage_separation`.
     passage_separation : float [m]
         Lowest resolved separation.
     fits : dict of str to Inference

@@ -22,10 +22,10 @@ from regimes.report import files
 from regimes.report.figures import FIGURES, draw, svg
 from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.synthetic.particles import Motion, drifting_particles
-from regimes.theory.fokker_planck import kernel_at, log_grid, moments, separation_masses
 from regimes.theory.kernel import Kernel
 from regimes.verdict import record as vr
 from regimes.verdict.rule import called, stretches
+from tests.other_curves_fixture import demo_others
 
 KM, DAY = 1e3, 86400.0
 QUANTILES = (2.5, 16, 50, 84, 97.5)
@@ -101,19 +101,10 @@ def _rates(kernels, separation):
     return np.percentile(rates, QUANTILES, axis=0)
 
 
-def _bands(inference, start, times):
+def _bands(inference):
     named, free = (_kernels(fits, 120, 7) for fits in (inference.named, inference.free))
     separation = np.geomspace(SPACE.lowest, SPACE.highest / RHO, 40)
-    edges = log_grid(start / 200, 3e6, 160)
-    dispersion, mean_log = [], []
-    for kernel in named[:60]:
-        log_k = kernel_at(edges, kernel.exponents, kernel.breaks, kernel.reference, kernel.rate)
-        masses = separation_masses(edges, log_k, np.array([np.log(start)]), times, 6)
-        log_mean, second, _ = moments(edges, masses)
-        dispersion.append(second[:, 0])
-        mean_log.append(log_mean[:, 0])
-    predicted = [np.percentile(x, QUANTILES, axis=0) for x in (dispersion, mean_log)]
-    return Bands(separation, _rates(named, separation), _rates(free, separation), times, *predicted)
+    return Bands(separation, _rates(named, separation), _rates(free, separation))
 
 
 def _since_passage(tracks, pairs, separation):
@@ -237,11 +228,12 @@ def demo_analysis(n_pair: int = 60) -> Analysis:
         passage_dispersion=dispersion_statistics(tracks, passed, times),
         passage_separation=SPACE.lowest,
         fits=fits,
-        bands=_bands(fits["exit_rate"], SPACE.lowest, times),
+        bands=_bands(fits["exit_rate"]),
         verdict=_verdict(fits),
         single=_single(),
         single_missing="",
         ratios=_RATIOS,
+        others=demo_others(tracks, pairs, passed),
     )
 
 

@@ -7,11 +7,10 @@ import pytest
 
 from regimes.inference.average import Posterior
 from regimes.inference.models import Model
-from regimes.inference.predict import dispersion_bands, fit_p_value, mixed_kernels, rate_band
+from regimes.inference.predict import fit_p_value, mixed_kernels, rate_band
 from regimes.inference.slope import classify, mixed_slope_over, slope_over
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 from regimes.theory.kernel import Kernel
-from regimes.theory.self_similar import moment
 from tests.test_inference import KM, SPACE, at
 
 THRESHOLDS = 1e3 * 2.0 ** (np.arange(13) / 2)
@@ -85,12 +84,6 @@ def test_bands_of_one_kernel_are_its_curves():
     band = rate_band(kernels, np.array([2.0, 4.0]) * KM, 2.0)
     wanted = np.log(2.0) / kernels[0].exit_times(np.array([2.0, 4.0, 8.0]) * KM)
     assert band == pytest.approx(np.tile(wanted, (5, 1)), rel=1e-12)
-    times = np.array([1.0, 4.0]) * 86400
-    square, log = dispersion_bands(kernels[:2], np.full(9, 2 * KM), times, 60 * KM)
-    coefficient = kernels[0].rate * SPACE.reference ** (2 / 3)
-    exact = moment(2, times, coefficient, 4 / 3, 2 * KM)
-    assert square == pytest.approx(np.tile(exact, (5, 1)), rel=0.015)  # grid of 300 cells; measured 0.7 %
-    assert np.all(np.diff(log, axis=1) > 0)
 
 
 def test_predictive_p_value():

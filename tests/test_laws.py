@@ -141,5 +141,7 @@ def test_same_seed_same_numbers(world):
             assert np.array_equal(a.draws, b.draws)
             assert a.log_evidence == b.log_evidence
     assert one.verdict.sentence == two.verdict.sentence
-    assert np.array_equal(one.bands.dispersion, two.bands.dispersion)
-    assert not np.array_equal(one.bands.dispersion, other.bands.dispersion)
+    assert np.array_equal(one.bands.rate_named, two.bands.rate_named)
+    assert not np.array_equal(one.bands.rate_named, other.bands.rate_named)
+    for a, b in zip(one.others.checks, two.others.checks, strict=True):
+        assert np.array_equal(a.band, b.band)

@@ -10,6 +10,7 @@ import subprocess
 import pytest
 
 from regimes.report import write_report
+from regimes.report.figures import FIGURES
 from tests.report_fixture import demo_analysis, with_verdict
 
 CHROMIUM = next(filter(None, map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))), None)
@@ -89,7 +90,7 @@ def test_nothing_is_cut_off_or_scrolls_sideways(seen):
 
 def test_every_figure_is_drawn(seen):
     width, found = seen
-    assert len(found["boxes"]) == 10
+    assert len(found["boxes"]) == len(FIGURES)
     for box in found["boxes"]:
         assert box["width"] > 0.8 * min(width, 500)
         assert 0.5 < box["height"] / box["width"] < 1.2

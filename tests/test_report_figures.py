@@ -133,25 +133,6 @@ def test_late_laws_of_dispersion_have_the_published_slopes(analysis):
         assert (y1 - y0) / (x1 - x0) == pytest.approx(slope, abs=1e-12)  # round-off
 
 
-@pytest.mark.parametrize(
-    ("plot", "values", "unit"),
-    [(figures.plot_passage, "dispersion", 1e-6), (figures.plot_mean_log, "mean_log", None)],
-)
-def test_checks_show_the_predicted_band(analysis, plot, values, unit):
-    rows = getattr(analysis.bands, values)
-    rows = np.exp(rows) / 1000.0 if unit is None else rows * unit
-    ax = plot(analysis)
-    shades = [c for c in ax.collections if isinstance(c, FillBetweenPolyCollection)]
-    assert len(shades) == 2
-    for shade, (low, high) in zip(shades, ((0, 4), (1, 3)), strict=True):
-        corners = shade.get_paths()[0].vertices
-        assert np.isclose(corners[:, 1].max(), rows[high].max(), rtol=1e-12)  # round-off
-        assert np.isclose(corners[:, 1].min(), rows[low].min(), rtol=1e-12)  # round-off
-    median = next(li for li in ax.lines if len(li.get_xdata()) == analysis.bands.times.size)
-    assert np.allclose(median.get_xdata() * SECONDS_A_DAY, analysis.bands.times, rtol=1e-12)  # round-off
-    assert np.allclose(median.get_ydata(), rows[2], rtol=1e-12)  # round-off
-
-
 def test_times_with_few_pairs_are_left_out(analysis):
     counted = analysis.dispersion
     few = counted.count.copy()

@@ -7,7 +7,6 @@ from regimes.inference.average import mixing_weights
 from regimes.inference.models import Space
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 from regimes.theory.exit_times import mean_exit_times
-from regimes.theory.fokker_planck import kernel_at, log_grid, moments, separation_masses
 
 QUANTILES = (0.025, 0.16, 0.5, 0.84, 0.975)
 
@@ -31,34 +30,6 @@ def rate_band(kernels, separation, ratio: float):
             time = mean_exit_times(pair, kernel.exponents, kernel.breaks, kernel.reference)[0]
             rates[i, j] = np.log(ratio) * kernel.rate / time
     return np.quantile(rates, QUANTILES, axis=0)
-
-
-def dispersion_bands(kernels, starts, times, largest: float):
-    """Quantiles (5, k) of relative dispersion [m2] and mean ln r predicted from given starts.
-
-    Parameters
-    ----------
-    kernels : list of Kernel
-    starts : (n,) float array [m]
-        Start separations, equally weighted.
-    times : (k,) float array [s]
-    largest : float [m]
-        Largest separation seen; the grid reaches far beyond.
-
-    Returns
-    -------
-    dispersion, mean_log : (5, k) float arrays
-    """
-    starts = np.quantile(np.log(starts), (np.arange(5) + 0.5) / 5)
-    edges = log_grid(np.exp(starts.min()) / 50.0, 30.0 * largest, 300)
-    square, log = [], []
-    for kernel in kernels:
-        value = kernel_at(edges, kernel.exponents, kernel.breaks, kernel.reference, kernel.rate)
-        mass = separation_masses(edges, value, starts, np.ascontiguousarray(times), 6)
-        mean_log, second, _ = moments(edges, mass)
-        square.append(second.mean(axis=1))
-        log.append(mean_log.mean(axis=1))
-    return np.quantile(square, QUANTILES, axis=0), np.quantile(log, QUANTILES, axis=0)
 
 
 def fit_p_value(likelihood: ExitRateLikelihood, posteriors, space: Space, seed: int) -> float:

@@ -4,7 +4,7 @@ import numpy as np
 
 from regimes.analysis import Analysis, Bands, Provenance
 from regimes.curves import DispersionStatistics, default_times, dispersion_statistics
-from regimes.inference.predict import dispersion_bands, fit_p_value, mixed_kernels, rate_band
+from regimes.inference.predict import fit_p_value, mixed_kernels, rate_band
 from regimes.inference.record import Inference
 from regimes.inference.slope import TOO_FEW, mixed_slope_over
 from regimes.inference.slope_mixture import slope_of_either
@@ -35,7 +35,7 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits, beside) ->
     evidence = _evidence(tracks, rates, (leading, second, missing), slopes, options.seed)
     record = provenance(tracks, pairs, options.seed)
     passage = dispersion_of(tracks, moved)
-    spread = bands(leading, rates, moved, passage, rng)
+    spread = bands(leading, rates, rng)
     (single, missing_single), seen = beside
     extra = dissents(seen) + joint_cautions(joint, no_joint)
     verdict = _verdict(evidence, rates, _facts(record, rates, options), extra)
@@ -150,16 +150,13 @@ def quoted_slopes(rates: Rates, leading: Inference, others, options: Options, rn
     return tuple(out)
 
 
-def bands(leading: Inference, rates: Rates, moved: Pairs, passage, rng) -> Bands:
+def bands(leading: Inference, rates: Rates, rng) -> Bands:
     space = leading.space
     ratio = float(np.exp(rates.everything.log_ratio.mean()))
     grid = np.exp(np.linspace(np.log(space.lowest), np.log(space.highest / ratio), 80))
     named = mixed_kernels(leading.named_posteriors(), space, 400, rng)
     free = mixed_kernels(leading.free_posteriors(), space, 400, rng)
-    times = passage.times[passage.times > 0]
-    largest = float(np.nanmax(np.sqrt(passage.relative_dispersion().value)))
-    square, log = dispersion_bands(named[:: max(1, len(named) // 60)], moved.start_separation, times, largest)
-    return Bands(grid, rate_band(named, grid, ratio), rate_band(free, grid, ratio), times, square, log)
+    return Bands(grid, rate_band(named, grid, ratio), rate_band(free, grid, ratio))
 
 
 def _facts(record: Provenance, rates: Rates, options: Options) -> dict:

@@ -3,11 +3,12 @@
 import numpy as np
 
 from regimes.analysis import OtherCurves
-from regimes.checks import Check, predictive_checks, structure_check
+from regimes.checks import Check, predictive_checks, structure_check, usual_cause
 from regimes.checks.predictive import grid_for
 from regimes.checks.structure import RESOLVED, resolves_velocities
 from regimes.curves import default_times
 from regimes.curves.ballistic import BallisticCheck, ballistic_check
+from regimes.curves.diffusivity import RelativeDiffusivity, relative_diffusivity
 from regimes.curves.structure import StructureStatistics, separation_bins, structure_statistics
 from regimes.curves.triplets import Triplets, triplets
 from regimes.errors import DataError, FitError
@@ -23,15 +24,7 @@ from regimes.units import DAY, KM
 from regimes.verdict.record import Caution
 
 _BELOW = 0.5  # of the lowest resolved separation: where the bins of relative velocities begin
-_CAUSES = {
-    "structure_function": "waves (inertial oscillations, tides), position errors and mean shear change velocities "
-    "more than they separate pairs",
-    "separation_distribution": "pairs of several populations and strain that differs between releases are the usual "
-    "causes",
-    "kurtosis": "a few pairs caught in eddies or fronts are the usual cause",
-    "triplet_area": "convergence, and strain that persists along a release, are the usual causes",
-}
-_USUAL = "strain that persists along a pair or differs between releases, oscillations and shear are the usual causes"
+_TIMES = 16  # of the relative diffusivity: growth between times that are closer is mostly scatter
 
 
 def other_curves(tracks: Tracks, pairs: Pairs, rates: Rates, fits, options: Options, progress) -> OtherCurves:
@@ -53,6 +46,7 @@ def other_curves(tracks: Tracks, pairs: Pairs, rates: Rates, fits, options: Opti
         velocity_ratio=ratio,
         spectrum=spectrum,
         spectrum_missing=no_spectrum,
+        diffusivity=_diffusivity(tracks, moved),
         ballistic=_ballistic(tracks, pairs),
         triplets=_triplets(tracks, pairs, options),
     )
@@ -80,7 +74,7 @@ def _dissent(check: Check) -> Caution:
     return Caution(
         "curve_dissents",
         f"The {name} leaves what the fitted kernel predicts (p = {check.p_value:.1g}{where}): one kernel without "
-        f"memory does not answer for both curves; {_CAUSES.get(check.curve, _USUAL)}.",
+        f"memory does not answer for both curves; {usual_cause(check.curve)}.",
     )
 
 
@@ -112,6 +106,13 @@ def _spectrum(structure: StructureStatistics, ratio: float, seed: int) -> tuple[
         return fit_spectrum(structure, seed), ""
     except (DataError, FitError) as error:
         return None, str(error)
+
+
+def _diffusivity(tracks: Tracks, moved: Pairs) -> RelativeDiffusivity | None:
+    try:
+        return relative_diffusivity(tracks, moved, default_times(moved, tracks.step, _TIMES))
+    except DataError:
+        return None
 
 
 def _ballistic(tracks: Tracks, pairs: Pairs) -> BallisticCheck | None:

@@ -7,7 +7,6 @@ from regimes.report import single
 from regimes.report.digits import count, probability, significant, span
 from regimes.report.words import DECISIONS, DISPLAY
 from regimes.units import KM
-from regimes.verdict.digits import km
 
 TITLES = {
     "exponent": "Exponent against separation",
@@ -15,8 +14,6 @@ TITLES = {
     "slope": "Local spectral slope",
     "transitions": "Transition separations",
     "slopes": "Spectral slope over ranges of separation",
-    "mean-log": "Check: geometric mean separation",
-    "passage": "Check: relative dispersion since first passage",
     "dispersion": "Relative dispersion since the start of the pairs",
 } | single.TITLES
 
@@ -45,10 +42,6 @@ def _who(analysis: Analysis) -> str:
 
 def _resolved(analysis: Analysis) -> str:
     return f"{span(*analysis.verdict.resolved)} km"
-
-
-def _passage(analysis: Analysis) -> str:
-    return f"{km(analysis.passage_separation)} km"
 
 
 def _exponent(analysis: Analysis) -> str:
@@ -95,24 +88,6 @@ def _slopes(_analysis: Analysis) -> str:
         "Spectral slope α implied over ranges of separation, from exit rates (black), from separations at fixed "
         "times (white) and from both together (grey). Mark: median; thick line: 68 %; thin line: 95 %. An arrow "
         "starts at the 95 % bound where only a bound is known. Dotted lines: slopes 5/3, 2 and 3."
-    )
-
-
-def _mean_log(analysis: Analysis) -> str:
-    return (
-        "Geometric mean separation (the exponential of the mean of ln r) since first passage of "
-        f"{_passage(analysis)}: data with 95 % cluster intervals, and what the kernels fitted to the exit "
-        "rates predict (bands, 68 and 95 %). Nothing was fitted here. The mean of ln r has no heavy tail "
-        "and is the sharper test. " + FEW
-    )
-
-
-def _dispersion_passage(analysis: Analysis) -> str:
-    return (
-        f"Relative dispersion (mean squared separation) since first passage of {_passage(analysis)}: data "
-        "with 95 % cluster intervals, and what the kernels fitted to the exit rates predict (bands, 68 "
-        "and 95 %). Nothing was fitted here. Few pairs carry the mean while growth is exponential, so "
-        "that a sample tends to lie low. " + FEW
     )
 
 
@@ -171,8 +146,6 @@ _CAPTIONS: dict[str, Callable[[Analysis], str]] = {
     "slope": _slope,
     "transitions": _transitions,
     "slopes": _slopes,
-    "mean-log": _mean_log,
-    "passage": _dispersion_passage,
     "dispersion": _dispersion,
 }
 _SHOWN: dict[str, Callable[[Analysis], str]] = {
@@ -181,7 +154,5 @@ _SHOWN: dict[str, Callable[[Analysis], str]] = {
     "slope": _see_slope,
     "transitions": _see_transitions,
     "slopes": _see_slopes,
-    "mean-log": _see_check,
-    "passage": _see_check,
     "dispersion": _see_check,
 }

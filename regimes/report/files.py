@@ -15,6 +15,7 @@ from regimes.report.tables import write_curves_csv, write_curves_netcdf, write_t
 from regimes.report.verdict_json import verdict_text
 
 FILES = ("report.html", "verdict.json", "curves.csv", "curves.nc", "posterior.nc", "table.tex")
+EARLIER_FIGURES = ("mean-log", "passage")  # drawn by versions whose reports may still be replaced
 WITHOUT_PAIRS = ("report.html", "verdict.json", "curves.csv")
 
 
@@ -98,7 +99,7 @@ def check_folder(folder: str | Path) -> Path:
         ) from error
     if not found:
         return folder
-    foreign = sorted(found - {*FILES, *figure_files(FIGURES)})
+    foreign = sorted(found - {*FILES, *figure_files((*FIGURES, *EARLIER_FIGURES))})
     if foreign or not _is_report(folder / "verdict.json"):
         what = f"{foreign[0]} in it" if foreign else "no verdict.json of an earlier report in it"
         raise CaseError(

@@ -126,7 +126,6 @@ def _coordinates(analysis: Analysis) -> dict[str, tuple]:
         "band_separation": (
             "band_separation", analysis.bands.separation, length | {"long_name": "lower threshold"}
         ),
-        "band_time": ("band_time", analysis.bands.times, time | {"long_name": "time since first passage"}),
         "percentile": (
             "percentile", [2.5, 16.0, 50.0, 84.0, 97.5], {"units": "percent", "long_name": "percentile"}
         ),
@@ -163,8 +162,6 @@ def _band_variables(analysis: Analysis) -> dict[str, tuple]:
             "s-1",
             "exponent of the free-exponent kernels",
         ),
-        "band_dispersion": (bands.dispersion, "band_time", "m2", "predicted relative dispersion"),
-        "band_mean_log_separation": (bands.mean_log, "band_time", "1", "predicted mean of ln(r / 1 m)"),
     }
     return {
         name: (("percentile", axis), values, {"units": unit, "long_name": words})

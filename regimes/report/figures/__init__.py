@@ -7,7 +7,7 @@ from matplotlib.figure import Figure
 
 from regimes.analysis import Analysis, SinglesOnly
 from regimes.report.figures.by_separation import plot_regimes, plot_slope
-from regimes.report.figures.dispersion import plot_dispersion, plot_mean_log, plot_passage
+from regimes.report.figures.dispersion import plot_dispersion
 from regimes.report.figures.exponent import plot_exponent
 from regimes.report.figures.posteriors import plot_slopes, plot_transitions
 from regimes.report.figures.single import plot_absolute, plot_correlation
@@ -19,8 +19,6 @@ FIGURES: dict[str, Callable[..., Axes]] = {
     "slope": plot_slope,
     "transitions": plot_transitions,
     "slopes": plot_slopes,
-    "mean-log": plot_mean_log,
-    "passage": plot_passage,
     "dispersion": plot_dispersion,
     "correlation": plot_correlation,
     "absolute": plot_absolute,
@@ -37,8 +35,6 @@ __all__ = [
     "plot_correlation",
     "plot_dispersion",
     "plot_exponent",
-    "plot_mean_log",
-    "plot_passage",
     "plot_regimes",
     "plot_slope",
     "plot_slopes",

@@ -1,13 +1,12 @@
-"""Relative dispersion and mean log separation against time."""
+"""Relative dispersion against time."""
 
 import numpy as np
 from matplotlib.axes import Axes
 
 from regimes.analysis import Analysis
 from regimes.curves import Curve, DispersionStatistics
-from regimes.report.figures.style import BLUE, COLOUR, GREEN, INK, LINE, VERMILION, figure_function, log_axis
+from regimes.report.figures.style import COLOUR, GREEN, INK, LINE, VERMILION, figure_function, log_axis
 from regimes.units import DAY, KM
-from regimes.verdict.digits import km
 
 LEAST_PAIRS = 5  # common practice, no source
 NORMAL95 = 1.96
@@ -50,58 +49,6 @@ def plot_dispersion(analysis: Analysis, ax: Axes) -> Axes:
     return ax
 
 
-@figure_function
-def plot_passage(analysis: Analysis, ax: Axes) -> Axes:
-    """Relative dispersion since first passage, with what the kernels of the exit-rate fit predict.
-
-    Parameters
-    ----------
-    analysis : Analysis
-    ax : matplotlib Axes, optional
-        A new figure without it.
-
-    Returns
-    -------
-    matplotlib Axes
-    """
-    _axes(ax, _since(analysis), "relative dispersion (km²)")
-    _band(ax, analysis, analysis.bands.dispersion / KM**2)
-    statistics = analysis.passage_dispersion
-    x, y, low, high = _log_bars(statistics, statistics.relative_dispersion())
-    _data(ax, x, y / KM**2, low / KM**2, high / KM**2)
-    _finish(ax)
-    return ax
-
-
-@figure_function
-def plot_mean_log(analysis: Analysis, ax: Axes) -> Axes:
-    """Geometric mean separation since first passage, with what the kernels of the exit-rate fit predict.
-
-    Parameters
-    ----------
-    analysis : Analysis
-    ax : matplotlib Axes, optional
-        A new figure without it.
-
-    Returns
-    -------
-    matplotlib Axes
-    """
-    _axes(ax, _since(analysis), "geometric mean separation (km)")
-    _band(ax, analysis, np.exp(analysis.bands.mean_log) / KM)
-    statistics = analysis.passage_dispersion
-    curve = statistics.mean_log_separation()
-    show = _enough(statistics) & np.isfinite(curve.value) & (curve.axis > 0)
-    value, margin = curve.value[show], NORMAL95 * np.nan_to_num(curve.standard_error[show])
-    _data(ax, curve.axis[show], *(np.exp(value + k * margin) / KM for k in (0, -1, 1)))
-    _finish(ax)
-    return ax
-
-
-def _since(analysis: Analysis) -> str:
-    return f"time since first passage of {km(analysis.passage_separation)} km (days)"
-
-
 def _axes(ax: Axes, x: str, y: str) -> None:
     ax.set_xscale("log")
     ax.set_yscale("log")
@@ -121,18 +68,6 @@ def _log_bars(statistics: DispersionStatistics, curve: Curve) -> tuple[np.ndarra
     value = curve.value[show]
     factor = np.exp(NORMAL95 * np.nan_to_num(curve.standard_error[show]) / value)
     return curve.axis[show], value, value / factor, value * factor
-
-
-def _band(ax: Axes, analysis: Analysis, rows: np.ndarray) -> None:
-    t = analysis.bands.times / DAY
-    ax.fill_between(t, rows[0], rows[4], color=BLUE, alpha=0.18, lw=0, label="predicted, 95 %")
-    ax.fill_between(t, rows[1], rows[3], color=BLUE, alpha=0.28, lw=0, label="predicted, 68 %")
-    ax.plot(t, rows[2], color=BLUE)
-
-
-def _data(ax: Axes, x: np.ndarray, y: np.ndarray, low: np.ndarray, high: np.ndarray) -> None:
-    bars = np.stack([y - low, high - y])
-    ax.errorbar(x / DAY, y, bars, fmt="o", ms=4.5, color=INK, elinewidth=1.0, label="data, 95 %", zorder=3)
 
 
 def _finish(ax: Axes) -> None:
