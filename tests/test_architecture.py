@@ -25,6 +25,8 @@ WALK = (
     ("checks",),
     ("verdict",),
     ("analysis",),
+    ("fitting",),
+    ("audit",),
     ("report", "pipeline"),
     ("cli",),
 )
@@ -36,8 +38,8 @@ ONLY = {
     "particles": GROUND | {"geodesy", "tracks", "pairs", "curves"},
     "synthetic": GROUND | {"cases", "fixes", "geodesy", "tracks", "pairs", "theory"},
 }
-# Rooms that simulate: the command line, and the checks, which repeat a data set.
-WITH_WORLDS = {"cli", "checks"}
+# Rooms that simulate: the command line, and the checks and the audit, which repeat a data set.
+WITH_WORLDS = {"cli", "checks", "audit"}
 AT_THE_ROOT = {"pyproject.toml", "README.md", "DEVELOPERS.md", "LICENSE", "regimes", "tests", "cases", "reports"}
 
 

@@ -6,8 +6,8 @@ import pytest
 
 from regimes import cli
 from regimes.errors import CaseError, DataError
+from regimes.fitting.quick import quick_fit
 from regimes.pipeline import Options, SingleOptions, analyse_pairs
-from regimes.pipeline.quick import quick_fit
 from tests.test_cli import walks, write_case
 from tests.worlds import kernel, lossy_pairs
 

@@ -70,7 +70,7 @@ def test_the_same_seed_gives_the_same_bytes_and_another_seed_does_not():
 
 @pytest.mark.parametrize("whole", [True, False])
 def test_repetitions_separate_by_the_kernel(whole):
-    """Mean ln r in the exponential regime: ln r0 + 2 K/r2 t (Lundgren 1981, J. Fluid Mech. 111, 27), K/r2 = 0.15 / d."""
+    """Mean ln r in the exponential regime: ln r0 + 2 (K / r2) t (Lundgren 1981, J. Fluid Mech. 111, 27)."""
     tracks, pairs = survey(EXPONENTIAL, 2)
     if not whole:
         pairs = replace(pairs, kind=np.full(pairs.n_pair, CHANCE, np.int8))
@@ -123,7 +123,7 @@ def test_threads_do_not_change_the_answer():
 def test_pairs_too_short_for_a_check_are_refused():
     tracks, pairs = survey(EXPONENTIAL, 4, 5)
     moved = from_passage(tracks, pairs, 1000.0)
-    with pytest.raises(DataError, match="got 15 pairs that last .* must go beyond 2.5 exit times"):
+    with pytest.raises(DataError, match=r"got 15 pairs that last .* must go beyond 2\.5 exit times"):
         grid_for(tracks, replace(moved, length=np.full(moved.n_pair, 5)), 1000.0, 2 * DAY, THRESHOLDS)
 
 

@@ -4,9 +4,9 @@ import numpy as np
 import pytest
 from scipy.stats import binom
 
+from regimes.fitting.rates import exit_rates
 from regimes.inference.slope_mixture import slope_of_either
 from regimes.pipeline import Options
-from regimes.pipeline.rates import exit_rates
 from tests.slope_candidates import CANDIDATES, held, held_words, slope_quantiles
 from tests.worlds import in_parallel, kernel, lossy_pairs
 

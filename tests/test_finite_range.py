@@ -8,12 +8,12 @@ from scipy.integrate import quad
 from scipy.special import j1, logsumexp
 
 from regimes.errors import FitError
+from regimes.fitting.rates import exit_rates
 from regimes.inference.finite_range import finite_range_slope
 from regimes.inference.slope import slope_over
 from regimes.inference.slope_mixture import outer_scale_interval, slope_of_either
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 from regimes.pipeline import Options
-from regimes.pipeline.rates import exit_rates
 from regimes.synthetic import Spectrum, fourier_tracks
 from regimes.theory.finite_range import MEMORY, finite_range_kernel
 from regimes.theory.kernel import Kernel

@@ -9,6 +9,7 @@ from scipy.special import logsumexp
 from regimes.curves.groups import make_groups, place_of_rows
 from regimes.curves.passage import from_passage
 from regimes.errors import FitError
+from regimes.fitting.rates import exit_rates
 from regimes.inference.fit import Posterior, exit_rate_space
 from regimes.inference.importance import climbed
 from regimes.inference.models import Model
@@ -19,7 +20,6 @@ from regimes.pipeline import Options, analyse_pairs
 from regimes.pipeline.assemble import joint_cautions
 from regimes.pipeline.joint import NO_SEPARATION, joint_fit, joint_likelihood
 from regimes.pipeline.opinion import separation_likelihood
-from regimes.pipeline.rates import exit_rates
 from tests.slope_candidates import held, held_words
 from tests.test_verdict import BAD, inference
 from tests.worlds import in_parallel, kernel, lossy_pairs

@@ -5,10 +5,10 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from regimes.fitting.quick import quick_fit
+from regimes.fitting.rates import rate_table
 from regimes.pairs import Pairs
 from regimes.pipeline import Options, analyse_pairs
-from regimes.pipeline.quick import quick_fit
-from regimes.pipeline.rates import rate_table
 from regimes.tracks import Tracks
 from tests.worlds import kernel, lossy_pairs
 

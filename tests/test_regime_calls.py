@@ -5,9 +5,9 @@ from itertools import pairwise
 import numpy as np
 import pytest
 
+from regimes.fitting.quick import quick_fit
 from regimes.inference.average import transitions
 from regimes.pipeline import Options
-from regimes.pipeline.quick import quick_fit
 from regimes.theory.regimes import REGIMES
 from regimes.verdict.rule import PROBABLE, SPAN
 from tests.worlds import in_parallel, kernel, lossy_pairs

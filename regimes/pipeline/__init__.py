@@ -1,7 +1,7 @@
 """The walk from fixes to verdict, whole or step by step."""
 
-from regimes.pipeline.options import Options, SingleOptions
-from regimes.pipeline.quick import QuickFit, quick_fit
+from regimes.fitting.options import Options, SingleOptions
+from regimes.fitting.quick import QuickFit, quick_fit
 from regimes.pipeline.run import analyse, analyse_pairs
 from regimes.pipeline.singles import analyse_singles
 from regimes.pipeline.survey import Survey, check

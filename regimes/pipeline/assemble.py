@@ -4,15 +4,15 @@ import numpy as np
 
 from regimes.analysis import Analysis, Bands, Provenance
 from regimes.curves import DispersionStatistics, default_times, dispersion_statistics
+from regimes.fitting.options import Options
+from regimes.fitting.rates import Rates, rate_table
 from regimes.inference.predict import fit_p_value, mixed_kernels, rate_band
 from regimes.inference.record import Inference
 from regimes.inference.slope import TOO_FEW, mixed_slope_over
 from regimes.inference.slope_mixture import slope_of_either
 from regimes.pairs import Pairs
-from regimes.pipeline.options import Options
 from regimes.pipeline.origin import provenance
 from regimes.pipeline.other_curves import dissents
-from regimes.pipeline.rates import Rates, rate_table
 from regimes.pipeline.singles import cross_checks
 from regimes.tracks import Tracks
 from regimes.verdict.decide import Evidence, decide

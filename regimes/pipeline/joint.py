@@ -6,13 +6,13 @@ import numpy as np
 
 from regimes.curves.groups import place_of_rows
 from regimes.errors import FitError
+from regimes.fitting.rates import Rates
 from regimes.inference.average import probabilities
 from regimes.inference.fit import infer, screen_costly
 from regimes.inference.record import Fit
 from regimes.likelihood.joint import ExitRows, JointLikelihood
 from regimes.likelihood.separation import SeparationLikelihood
 from regimes.pairs import Pairs
-from regimes.pipeline.rates import Rates
 
 WORTH = 0.01  # probability in the exit-rate fit, among its kind, below which a model is left out of the joint fit
 NO_SEPARATION = "there is no fit of the separation distribution"

@@ -5,10 +5,10 @@ import numpy as np
 from regimes.curves import separation_counts
 from regimes.curves.passage import from_passage
 from regimes.errors import DataError, FitError
+from regimes.fitting.rates import Rates, largest_separation
 from regimes.inference.fit import infer, screen_costly
 from regimes.likelihood.separation import SeparationLikelihood, grid_edges, output_times
 from regimes.pairs import Pairs
-from regimes.pipeline.rates import Rates, largest_separation
 from regimes.tracks import Tracks
 
 _START_BINS = np.array([1.0, 1.15, 1.4, 1.8, 3.0, 1e9])  # in units of the separation at which the clock starts

@@ -12,13 +12,13 @@ from regimes.curves.diffusivity import RelativeDiffusivity, relative_diffusivity
 from regimes.curves.structure import StructureStatistics, separation_bins, structure_statistics
 from regimes.curves.triplets import Triplets, triplets
 from regimes.errors import DataError, FitError
+from regimes.fitting.options import Options
+from regimes.fitting.rates import Rates
 from regimes.inference.predict import mixed_kernels
 from regimes.inference.record import Inference
 from regimes.inference.spectrum_fit import SpectrumFit, fit_spectrum
 from regimes.likelihood.structure import structure_likelihood
 from regimes.pairs import Pairs
-from regimes.pipeline.options import Options
-from regimes.pipeline.rates import Rates
 from regimes.tracks import Tracks
 from regimes.units import DAY, KM
 from regimes.verdict.record import Caution

@@ -5,16 +5,16 @@ from dataclasses import replace
 
 from regimes.analysis import Analysis, SinglesOnly
 from regimes.cases import Case
+from regimes.fitting.options import Options, SingleOptions
+from regimes.fitting.rates import exit_rates
 from regimes.inference.fit import exit_rate_space, infer, screen_exit_rates
 from regimes.inference.models import free_models, named_models
 from regimes.pairs import Pairs
 from regimes.pipeline.assemble import put_together
 from regimes.pipeline.joint import joint_fit
 from regimes.pipeline.opinion import second_opinion
-from regimes.pipeline.options import Options, SingleOptions
 from regimes.pipeline.origin import of_case
 from regimes.pipeline.other_curves import other_curves
-from regimes.pipeline.rates import exit_rates
 from regimes.pipeline.singles import analyse_singles, single_side
 from regimes.pipeline.survey import pairs_of, read_tracks
 from regimes.tracks import Tracks

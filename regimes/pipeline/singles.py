@@ -5,6 +5,7 @@ import numpy as np
 from regimes.analysis import SinglesOnly
 from regimes.curves.plateau import late_plateau
 from regimes.errors import DataError
+from regimes.fitting.options import Options, SingleOptions
 from regimes.fixes.flows import read_flow
 from regimes.pairs import Pairs
 from regimes.particles import (
@@ -16,7 +17,6 @@ from regimes.particles import (
     single_particle,
     standard_error,
 )
-from regimes.pipeline.options import Options, SingleOptions
 from regimes.pipeline.origin import provenance
 from regimes.tracks import Tracks
 from regimes.verdict.record import TransitionScale

@@ -4,6 +4,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from regimes.fitting.options import Options
+from regimes.fitting.rates import Rates, exit_rates
 from regimes.inference.average import Posterior, local_exponents, mixed_slopes, probabilities, regime_probability
 from regimes.inference.fit import exit_rate_space
 from regimes.inference.models import free_models, named_models
@@ -11,8 +13,6 @@ from regimes.inference.quadrature import integrate
 from regimes.inference.slope import RangeSlope, posterior_list
 from regimes.inference.slope_mixture import slope_of_either
 from regimes.pairs import Pairs
-from regimes.pipeline.options import Options
-from regimes.pipeline.rates import Rates, exit_rates
 from regimes.tracks import Tracks
 from regimes.verdict.rule import Stretch, called, stretches
 

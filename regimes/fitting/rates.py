@@ -9,10 +9,10 @@ from regimes.curves import ExitStatistics, default_times, dispersion_statistics,
 from regimes.curves.credit import credited_exits, local_growth
 from regimes.curves.resolution import ERROR_MULTIPLE, Resolved, ladder, resolved_range
 from regimes.errors import DataError
+from regimes.fitting.options import Options
 from regimes.likelihood.dispersion import Dispersion, exit_rate_likelihood, exit_scatter, rate_intervals
 from regimes.likelihood.exit_rate import ExitRateLikelihood
 from regimes.pairs import Pairs
-from regimes.pipeline.options import Options
 from regimes.tracks import Tracks
 from regimes.verdict.decide import FEW_CLUSTERS
 
