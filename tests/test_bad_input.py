@@ -70,11 +70,9 @@ def test_one_message_and_nothing_written(what, tmp_path, monkeypatch, capsys):
 def test_pairs_that_never_meet_are_no_pairs(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
     path = write_case(tmp_path / "case", apart())
-    assert cli.main(["check", str(path)]) == 3
-    words = "no two of one release have a valid position at the same time"
-    assert words in capsys.readouterr().err
-    assert cli.main(["run", str(path)]) == 0
-    assert words in capsys.readouterr().out
+    for command in ("check", "run"):
+        assert cli.main([command, str(path)]) == 0
+        assert "no two of one release have a valid position at the same time" in capsys.readouterr().out
 
 
 @pytest.mark.parametrize("how", ["backwards", "shuffled", "twice"])

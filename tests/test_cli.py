@@ -247,12 +247,11 @@ BAD = {
 }
 
 
-NO_PAIR = ("one particle", "no pairs")  # a run tells what particles say one by one
+NO_PAIR = ("one particle", "no pairs")  # particles can still be taken one by one
 
 
-@pytest.mark.parametrize(
-    ("command", "what"), [("check", what) for what in BAD] + [("run", what) for what in BAD if what not in NO_PAIR]
-)
+@pytest.mark.parametrize("command", ["check", "run"])
+@pytest.mark.parametrize("what", [what for what in BAD if what not in NO_PAIR])
 def test_bad_input_gives_one_clear_message(what, command, here, capsys):
     fixes, changes, code, words = BAD[what]
     path = here / "absent.toml" if fixes is None else write_case(here / "case", fixes, **changes)
@@ -275,6 +274,16 @@ def _far_apart(fixes):
     drifts = walks(fixes=fixes)
     drifts["lon"] += drifts.id.str[1:].astype(float)
     return drifts
+
+
+@pytest.mark.parametrize("what", NO_PAIR)
+def test_check_without_a_pair_says_so(what, here, capsys):
+    fixes, changes, _, words = BAD[what]
+    assert cli.main(["check", str(write_case(here / "case", fixes, **changes))]) == 0
+    said = capsys.readouterr()
+    assert "no pair, single particles only: " in said.out
+    assert words in said.out
+    assert said.err == ""
 
 
 @pytest.mark.parametrize("what", NO_PAIR)

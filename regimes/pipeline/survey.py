@@ -11,11 +11,24 @@ from regimes.tracks import Tracks, make_tracks
 
 @dataclass(frozen=True, slots=True)
 class Survey:
-    """What a case holds before any fit."""
+    """What a case holds before any fit.
+
+    Parameters
+    ----------
+    fixes : Fixes
+    tracks : Tracks
+    pairs : Pairs or None
+        None where there is no pair to compare.
+    no_pair : str
+        Why there is none; empty where there are pairs.
+    kind : str
+    max_separation : float [m]
+    """
 
     fixes: Fixes
     tracks: Tracks
-    pairs: Pairs
+    pairs: Pairs | None
+    no_pair: str
     kind: str
     max_separation: float
 
@@ -23,7 +36,8 @@ class Survey:
         """A few lines: fixes, cleaning, tracks, pairs."""
         lines = [f"{len(self.fixes.time)} fixes of {len(self.fixes.labels)} particles from {self.fixes.source.path}"]
         lines += [f"  {c.reason}: {c.count} ({c.note})" for c in self.fixes.cleaning]
-        return "\n".join([*lines, self.tracks.summary(), self.pairs.summary()])
+        pairs = f"no pair, single particles only: {self.no_pair}" if self.pairs is None else self.pairs.summary()
+        return "\n".join([*lines, self.tracks.summary(), pairs])
 
 
 def check(case: Case) -> Survey:
@@ -32,11 +46,10 @@ def check(case: Case) -> Survey:
     Raises
     ------
     CaseError, DataError
-        As `read_fixes`, `make_tracks` and `find_pairs` do.
+        As `read_fixes` and `make_tracks` do.
     """
     fixes, tracks = read_tracks(case)
-    pairs = _find(case.pairs, tracks)
-    return Survey(fixes, tracks, pairs, case.pairs.kind, case.pairs.max_separation)
+    return Survey(fixes, tracks, *pairs_of(case, tracks), case.pairs.kind, case.pairs.max_separation)
 
 
 def read_tracks(case: Case) -> tuple[Fixes, Tracks]:
