@@ -48,6 +48,8 @@ class Provenance:
         Of the pairs.
     cleaning : tuple of (str, int, str)
         What was dropped or changed: reason, count, note.
+    case_sha256 : str
+        Of the choices of the case; empty for data from memory.
     """
 
     case: str
@@ -68,6 +70,7 @@ class Provenance:
     start_p90: float
     median_duration: float
     cleaning: tuple[tuple[str, int, str], ...]
+    case_sha256: str = ""
 
 
 @dataclass(frozen=True, slots=True)

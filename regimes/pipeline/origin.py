@@ -1,5 +1,7 @@
 """Where the numbers of a run come from: what tracks and pairs tell, and what only a case and its file know."""
 
+import hashlib
+import json
 import platform
 from dataclasses import replace
 from importlib.metadata import version
@@ -10,21 +12,27 @@ import numpy as np
 from regimes.analysis import Provenance
 from regimes.cases import Case
 from regimes.fixes import Fixes
+from regimes.fixes.reading import sha256_of
 from regimes.pairs import CHANCE, LAUNCHED, Pairs
 from regimes.tracks import Tracks, default_gap
 
 _LIBRARIES = ("numpy", "scipy", "numba", "emcee")
+_NOT_OF_A_RUN = ("sweep", "plan", "seed")  # the seed stands beside the hash, for it may come from elsewhere
+
+
+def versions() -> dict[str, str]:
+    """Of this package, Python and the libraries that the numbers depend on."""
+    found = {"regimes": version("regimes"), "python": platform.python_version()}
+    return found | {name: version(name) for name in _LIBRARIES}
 
 
 def provenance(tracks: Tracks, pairs: Pairs | None, seed: int) -> Provenance:
     """What can be said of the input without its file; `pairs` is None where there is none."""
-    versions = {"regimes": version("regimes"), "python": platform.python_version()}
-    versions |= {name: version(name) for name in _LIBRARIES}
     nothing = float("nan")
     found = Provenance(
         case="in memory",
         seed=seed,
-        versions=versions,
+        versions=versions(),
         source="memory",
         sha256="",
         n_fixes=int(np.sum(~np.isnan(tracks.position[:, 0]))),
@@ -44,12 +52,26 @@ def provenance(tracks: Tracks, pairs: Pairs | None, seed: int) -> Provenance:
     return found if pairs is None else _with_pairs(found, tracks, pairs)
 
 
+def case_sha256(case: Case) -> str:
+    """Hash of everything in a case that a run depends on, but for the fixes themselves.
+
+    Folders do not count, nor do the sections `sweep` and `plan`, which a run does not read; of a mean flow the content
+    of its file counts.
+    """
+    content = case.model_dump(mode="json", exclude=set(_NOT_OF_A_RUN))
+    content["observations"]["path"] = Path(case.observations.path).name
+    if case.single.mean_flow is not None:
+        content["single"]["mean_flow"] = sha256_of(Path(case.single.mean_flow))
+    return hashlib.sha256(json.dumps(content, sort_keys=True).encode()).hexdigest()
+
+
 def of_case(found: Provenance, case: Case, fixes: Fixes, tracks: Tracks) -> Provenance:
     """The same with what only the case and the file know."""
     gap = case.observations.longest_gap
     return replace(
         found,
         case=case.name,
+        case_sha256=case_sha256(case),
         source=Path(fixes.source.path).name,
         sha256=fixes.source.sha256 or "",
         n_fixes=len(fixes.time),

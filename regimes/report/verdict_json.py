@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 
 from regimes.analysis import Analysis, Provenance, SinglesOnly
+from regimes.report.every_json import every_part
 from regimes.report.single_json import single_part, without_pairs
 from regimes.units import KM
 from regimes.verdict.record import BySeparation, Interval, Slope, TransitionScale, Verdict
@@ -29,7 +30,7 @@ def verdict_document(analysis: Analysis | SinglesOnly) -> dict[str, Any]:
         km; slopes and exponents as in the report.
     """
     said = without_pairs(analysis) if isinstance(analysis, SinglesOnly) else _said(analysis.verdict)
-    return plain(_header(analysis.provenance) | said | single_part(analysis))
+    return plain(_header(analysis.provenance) | said | every_part(analysis) | single_part(analysis))
 
 
 def _header(origin: Provenance) -> dict[str, Any]:
@@ -37,6 +38,7 @@ def _header(origin: Provenance) -> dict[str, Any]:
     return {
         "schema": SCHEMA,
         "case": origin.case,
+        "case_sha256": origin.case_sha256,
         "seed": origin.seed,
         "versions": dict(origin.versions),
         "input": {"source": origin.source, "sha256": origin.sha256} | {name: getattr(origin, name) for name in counts},
