@@ -1,6 +1,6 @@
 """The case file: what to read, which pairs to compare, which models to weigh. Checked once, at the door."""
 
-from regimes.cases.load import case_from, load_case
+from regimes.cases.load import case_from, load_case, variants
 from regimes.cases.record import (
     REGIMES,
     Case,
@@ -12,6 +12,7 @@ from regimes.cases.record import (
     ReportRules,
 )
 from regimes.cases.single import SingleRules
+from regimes.cases.sweep import Sweep
 
 __all__ = [
     "REGIMES",
@@ -23,6 +24,8 @@ __all__ = [
     "PairRules",
     "ReportRules",
     "SingleRules",
+    "Sweep",
     "case_from",
     "load_case",
+    "variants",
 ]

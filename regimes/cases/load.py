@@ -9,6 +9,7 @@ from pydantic import ValidationError
 
 from regimes.cases.problems import describe, headed
 from regimes.cases.record import Case
+from regimes.cases.sweep import label_of
 from regimes.errors import CaseError
 
 _PATHS = (("observations", "path"), ("single", "mean_flow"))
@@ -74,11 +75,48 @@ def case_from(content: Mapping[str, Any], source: str = "case", folder: str | Pa
         content, problems = _resolve(content, Path(folder))
     try:
         case = Case.model_validate(content)
+        problems += [problem for _, found in _attempts(case) if isinstance(found, list) for problem in found]
     except ValidationError as error:
         problems = describe(error, Case) + problems
+    problems = list(dict.fromkeys(problems))
     if problems:
         raise CaseError(headed(source, problems))
     return case
+
+
+def variants(case: Case) -> list[tuple[str, Case]]:
+    """The cases that a sweep asks for, each with the choices that make it; the case itself without a sweep.
+
+    Parameters
+    ----------
+    case : Case
+        As `load_case` and `case_from` give it.
+
+    Returns
+    -------
+    list of (str, Case)
+        The choices in words, empty without a sweep, and the case with them, which has no sweep.
+    """
+    if case.sweep is None:
+        return [("", case)]
+    return [(label, found) for label, found in _attempts(case) if isinstance(found, Case)]
+
+
+def _attempts(case: Case) -> list[tuple[str, Case | list[str]]]:
+    """Each combination of a sweep as a case, or as the problems it has."""
+    out: list[tuple[str, Case | list[str]]] = []
+    for combination in [] if case.sweep is None else case.sweep.combinations():
+        content = case.model_dump(exclude={"sweep"}, exclude_unset=True)
+        label = label_of(combination)
+        content["name"] = f"{case.name} ({label})"
+        for place, value in combination.items():
+            section, key = place.split(".")
+            content[section] = content.get(section, {}) | {key: value}
+        try:
+            out.append((label, Case.model_validate(content)))
+        except ValidationError as error:
+            out.append((label, [f"sweep.{problem}" for problem in describe(error, Case)]))
+    return out
 
 
 def _resolve(content: dict[str, Any], folder: Path) -> tuple[dict[str, Any], list[str]]:

@@ -19,6 +19,7 @@ _WANTED = {
     "string_type": "a text in quotes",
     "string_too_short": "a text of at least one character",
     "tuple_type": "a list",
+    "dict_type": "a table of keys",
     "finite_number": "a finite number",
     "model_type": "a table of keys",
     "model_attributes_type": "a table of keys",

@@ -7,6 +7,7 @@ from pydantic import Field, ValidationInfo, field_validator, model_validator
 from regimes.cases.problems import show
 from regimes.cases.section import Positive, Range, Section, Text, rule
 from regimes.cases.single import SingleRules
+from regimes.cases.sweep import Sweep
 from regimes.units import HOUR, KM
 
 Regime = Literal["ballistic", "exponential", "richardson", "diffusive"]
@@ -172,3 +173,4 @@ class Case(Section):
     models: ModelRules = ModelRules()
     single: SingleRules = SingleRules()
     report: ReportRules = ReportRules()
+    sweep: Sweep | None = None
