@@ -27,13 +27,27 @@ def analysis():
     return demo_analysis()
 
 
-@pytest.mark.parametrize("name", figures.FIGURES)
+PANELS = ("checks", "spectrum", "triplets")
+
+
+@pytest.mark.parametrize("name", [name for name in figures.FIGURES if name not in PANELS])
 def test_every_figure_draws_on_given_axes_and_on_its_own(analysis, name):
     ax = Figure().add_subplot()
     assert figures.FIGURES[name](analysis, ax) is ax
     own = figures.FIGURES[name](analysis)
     assert own is not ax
     assert own.get_xlabel()
+
+
+@pytest.mark.parametrize("name", PANELS)
+def test_figures_of_panels_draw_in_a_given_figure_and_on_their_own(analysis, name):
+    given = Figure().subfigures(1, 2)[1]
+    axes = figures.FIGURES[name](analysis, given)
+    assert all(ax.figure is given for ax in axes)
+    own = figures.FIGURES[name](analysis)
+    assert len(own) == len(axes) >= 2
+    assert all(ax.get_xlabel() or ax.get_ylabel() for ax in own)
+    assert own[-1].get_xlabel()
 
 
 @pytest.mark.parametrize("name", figures.FIGURES)

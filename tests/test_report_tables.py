@@ -11,15 +11,9 @@ import xarray as xr
 
 from regimes.report import digits
 from regimes.report.posterior import write_posterior
-from regimes.report.tables import (
-    COLUMNS,
-    curve_table,
-    end_text,
-    slope_text,
-    tex_table,
-    write_curves_csv,
-    write_curves_netcdf,
-)
+from regimes.report.slopes import end_text, slope_text
+from regimes.report.tables import COLUMNS, curve_table, write_curves_csv, write_curves_netcdf
+from regimes.report.tex import tex_table
 from regimes.verdict.record import Interval, OuterScale, Slope
 from tests.report_fixture import demo_analysis, singles_only, with_verdict
 
@@ -29,25 +23,7 @@ def analysis():
     return demo_analysis()
 
 
-# Digits: two significant digits of the uncertainty, common practice, no source
-
-
-@pytest.mark.parametrize(
-    ("value", "uncertainty", "text"),
-    [
-        (8.0449, 1.7, "8.0"),
-        (77.123, 17.0, "77"),
-        (1234.0, 250.0, "1230"),
-        (0.012342, 0.00051, "0.01234"),
-        (0.5, 0.0996, "0.50"),  # 0.0996 is 0.10 to two digits
-        (-0.0001, 1.0, "0.0"),
-        (3.14159, 0.0, "3.14"),
-        (float("nan"), 1.0, "not determined"),
-        (2.0, float("nan"), "2.00"),
-    ],
-)
-def test_rounded(value, uncertainty, text):
-    assert digits.rounded(value, uncertainty) == text
+# Digits
 
 
 @pytest.mark.parametrize(
@@ -68,12 +44,6 @@ def test_probability_is_never_nought_or_one(value, text):
 def test_count_is_grouped_from_five_digits_on():
     assert digits.count(1234) == "1234"
     assert digits.count(1234567) == "1\u202f234\u202f567"
-
-
-def test_spread_of_intervals():
-    # central 68.27 and 95 % of the normal distribution: one and 1.96 standard deviations, any table of it
-    assert digits.spread(-1.0, 1.0, 68) == pytest.approx(1.0, rel=1e-12)  # exact
-    assert digits.spread(-1.96, 1.96, 95) == pytest.approx(1.0, rel=1e-12)  # exact
 
 
 def test_slope_words():

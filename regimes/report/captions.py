@@ -3,29 +3,36 @@
 from collections.abc import Callable
 
 from regimes.analysis import Analysis, SinglesOnly
-from regimes.report import single
+from regimes.report import every_captions, single
 from regimes.report.digits import count, probability, significant, span
 from regimes.report.words import DECISIONS, DISPLAY
 from regimes.units import KM
 
-TITLES = {
-    "exponent": "Exponent against separation",
-    "regimes": "Which regime holds at each separation",
-    "slope": "Local spectral slope",
-    "transitions": "Transition separations",
-    "slopes": "Spectral slope over ranges of separation",
-    "dispersion": "Relative dispersion since the start of the pairs",
-} | single.TITLES
+_PARTS = (every_captions, single)
+TITLES = (
+    {
+        "exponent": "Exponent against separation",
+        "regimes": "Which regime holds at each separation",
+        "slope": "Local spectral slope",
+        "transitions": "Transition separations",
+        "slopes": "Spectral slope over ranges of separation",
+        "dispersion": "Relative dispersion since the start of the pairs",
+    }
+    | every_captions.TITLES
+    | single.TITLES
+)
 
 
 def caption(name: str, analysis: Analysis | SinglesOnly) -> str:
     """Caption of the figure of that name, to be read without the text around it."""
-    return single.caption(name, analysis) if name in single.TITLES else _CAPTIONS[name](analysis)
+    part = next((part for part in _PARTS if name in part.TITLES), None)
+    return _CAPTIONS[name](analysis) if part is None else part.caption(name, analysis)
 
 
 def description(name: str, analysis: Analysis | SinglesOnly) -> str:
     """What the figure shows, in words, for readers who cannot see it."""
-    said = single.shown(name, analysis) if name in single.TITLES else _SHOWN[name](analysis)
+    part = next((part for part in _PARTS if name in part.TITLES), None)
+    said = _SHOWN[name](analysis) if part is None else part.shown(name, analysis)
     return f"{TITLES[name]}. {said}"
 
 

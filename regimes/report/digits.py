@@ -39,20 +39,6 @@ def significant(value: float, digits: int = SIGNIFICANT) -> str:
     return fixed(value, digits - 1 - exponent)
 
 
-def rounded(value: float, uncertainty: float) -> str:
-    """`value` to two significant digits of `uncertainty`; to three of its own where that is zero."""
-    if not math.isfinite(value):
-        return MISSING
-    if not (math.isfinite(uncertainty) and uncertainty > 0):
-        return significant(value, 3)
-    return fixed(value, decimals(uncertainty))
-
-
-def spread(low: float, high: float, level: int = 68) -> float:
-    """Standard deviation of the normal distribution whose central 68 or 95 % interval this is."""
-    return (high - low) / {68: 2.0, 95: 3.92}[level]
-
-
 def span(low: float, high: float) -> str:
     """A range of separations [m] in km, in the digits of the verdict's sentences: ``"1.2 to 150"``."""
     return f"{km(low)} to {km(high)}"

@@ -11,7 +11,8 @@ from regimes.report.figures import FIGURES, draw, names_of, pdf, svg
 from regimes.report.page import page
 from regimes.report.posterior import write_posterior
 from regimes.report.singles_page import singles_page
-from regimes.report.tables import write_curves_csv, write_curves_netcdf, write_tex
+from regimes.report.tables import write_curves_csv, write_curves_netcdf
+from regimes.report.tex import write_tex
 from regimes.report.verdict_json import verdict_text
 
 FILES = ("report.html", "verdict.json", "curves.csv", "curves.nc", "posterior.nc", "table.tex")

@@ -5,11 +5,12 @@ from typing import Any
 from regimes.analysis import Analysis
 from regimes.report.convergence import compared_rows, convergence_rows, not_shown, opinion_rows
 from regimes.report.digits import count, fixed, probability, span
-from regimes.report.figures import OF_SINGLES
+from regimes.report.every_curve import agreement_fact, every_curve
+from regimes.report.figures import OF_EVERY_CURVE, OF_SINGLES
 from regimes.report.provenance import cleaning_rows, provenance_rows
 from regimes.report.render import figures_content, render
 from regimes.report.singles_page import single_content
-from regimes.report.tables import end_text, slope_text
+from regimes.report.slopes import end_text, slope_text
 from regimes.report.words import CURVES, DECISIONS, DISPLAY, sequence
 from regimes.verdict.digits import km
 from regimes.verdict.record import Slope, TransitionScale
@@ -59,7 +60,8 @@ def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
         "slopes": [_slope(s) for s in verdict.slopes],
         "bayes_factor": fixed(verdict.log_bayes_factor, 1),
         "challenge": fixed(CHALLENGE, 1),
-        "figures": [figure for name, figure in drawn.items() if name not in OF_SINGLES],
+        "figures": [figure for name, figure in drawn.items() if name not in (*OF_EVERY_CURVE, *OF_SINGLES)],
+        "every": every_curve(analysis, drawn),
         "single": single_content(analysis, drawn),
         "opinions": opinion_rows(analysis),
         "curves": [CURVES[name] for name in analysis.fits],
@@ -87,6 +89,7 @@ def _facts(analysis: Analysis) -> list[tuple[str, str, str]]:
         ("clusters", count(origin.n_clusters), together),
         ("resolved separations", f"{span(*verdict.resolved)} km", limits),
         ("predictive check", f"p = {probability(verdict.fit_p_value)}", "of the exit rates"),
+        agreement_fact(analysis.others),
         ("convergence", "good" if verdict.healthy else "not good", "of the sampling"),
     ]
 

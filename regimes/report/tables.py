@@ -1,6 +1,5 @@
-"""Curves and results as tables for other programs and for papers."""
+"""Curves as tables for other programs."""
 
-import re
 from pathlib import Path
 
 import numpy as np
@@ -9,12 +8,8 @@ import xarray as xr
 
 from regimes.analysis import Analysis, SinglesOnly
 from regimes.curves import Curve
-from regimes.report.digits import probability, span
+from regimes.report.digits import span
 from regimes.report.single_tables import single_frames, single_variables
-from regimes.report.words import CURVES, DISPLAY
-from regimes.verdict.digits import km, km_interval
-from regimes.verdict.digits import slope_text as alpha
-from regimes.verdict.record import Slope, TransitionScale
 
 COLUMNS = (
     "curve", "axis_name", "axis_value", "axis_unit", "value", "unit", "standard_error", "lo95", "hi95",
@@ -22,12 +17,6 @@ COLUMNS = (
 )  # fmt: skip
 AXIS_UNIT = {"separation": "m", "time": "s"}
 NORMAL95 = 1.96
-TEX = {
-    "\\": r"\textbackslash{}", "&": r"\&", "%": r"\%", "$": r"\$", "#": r"\#", "_": r"\_", "{": r"\{",
-    "}": r"\}",
-    "~": r"\textasciitilde{}", "^": r"\textasciicircum{}", "\u2192": r"$\rightarrow$", "\u2265": r"$\geq$",
-    "\u2264": r"$\leq$", "<": r"$<$", ">": r"$>$", "\u202f": r"\,",
-}  # fmt: skip
 
 
 def curves_of(analysis: Analysis) -> dict[str, tuple[Curve, np.ndarray]]:
@@ -167,61 +156,3 @@ def _band_variables(analysis: Analysis) -> dict[str, tuple]:
         name: (("percentile", axis), values, {"units": unit, "long_name": words})
         for name, (values, axis, unit, words) in table.items()
     }
-
-
-def write_tex(analysis: Analysis, path: Path) -> None:
-    r"""Results as a LaTeX tabular that needs no package: ``\input{table.tex}``."""
-    path.write_text(tex_table(analysis), encoding="utf-8", newline="\n")
-
-
-def tex_table(analysis: Analysis) -> str:
-    """Text of the LaTeX tabular."""
-    verdict = analysis.verdict
-    lines = [f"% {_tex(analysis.provenance.case)}", r"\begin{tabular}{lll}", r"\hline"]
-    lines += [r"result & separation (km) & value \\", r"\hline"]
-    for s in verdict.supported:
-        lines.append(_row(f"{DISPLAY[s.regime]} regime", span(s.low, s.high), "supported"))
-    lines += [_transition_row(t) for t in verdict.transitions if t.probability > 0.05]
-    lines += [_slope_row(s) for s in verdict.slopes]
-    lines.append(_row("resolved range", span(*verdict.resolved), verdict.decision.replace("_", " ")))
-    return "\n".join([*lines, r"\hline", r"\end{tabular}", ""])
-
-
-def _transition_row(transition: TransitionScale) -> str:
-    scale = transition.scale
-    where = f"{km(scale.median)} ({km(scale.lo95)} to {km(scale.hi95)})"
-    name = f"{DISPLAY[transition.lower]} to {DISPLAY[transition.upper]}"
-    return _row(name, where, f"probability {probability(transition.probability)}")
-
-
-def slope_text(slope: Slope) -> str:
-    """A slope as far as it is known: an estimate with its 95 % interval, a bound, or why there is none."""
-    value = slope.value
-    if slope.kind == "estimate":
-        return f"{alpha(value.median)} ({alpha(value.lo95)} to {alpha(value.hi95)})"
-    if slope.kind == "lower_bound":
-        return f"\u2265 {alpha(value.lo95)}"
-    return f"\u2264 {alpha(value.hi95)}" if slope.kind == "upper_bound" else "none quoted"
-
-
-def end_text(slope: Slope) -> str:
-    """Where the spectrum may end, as far as it is known; empty where nothing is."""
-    median, low, high = slope.outer_scale.median, slope.outer_scale.lo95, slope.outer_scale.hi95
-    if np.isfinite(median):
-        return f"the spectrum may end near {km_interval(median, low, high)}"
-    if np.isfinite(low):
-        return f"if the spectrum ends, then beyond {km(low)} km (95 %)"
-    return f"if the spectrum ends, then below {km(high)} km (95 %)" if np.isfinite(high) else ""
-
-
-def _slope_row(slope: Slope) -> str:
-    return _row(f"spectral slope, {CURVES[slope.curve]}", span(slope.low, slope.high), slope_text(slope))
-
-
-def _row(*cells: str) -> str:
-    return " & ".join(_tex(cell) for cell in cells) + r" \\"
-
-
-def _tex(text: str) -> str:
-    """`text` with everything that LaTeX would take for a command made harmless."""
-    return re.sub("|".join(map(re.escape, TEX)), lambda found: TEX[found.group()], " ".join(text.split()))

@@ -1,5 +1,6 @@
 """Posteriors of single numbers: transition separations and spectral slopes."""
 
+from collections.abc import Sequence
 from textwrap import fill
 
 import numpy as np
@@ -98,18 +99,33 @@ def plot_slopes(analysis: Analysis, ax: Axes) -> Axes:
     -------
     matplotlib Axes
     """
-    slopes = analysis.verdict.slopes
+    landmarks(ax)
+    slope_rows(ax, analysis.verdict.slopes)
+    alpha_axis(ax)
+    return ax
+
+
+def landmarks(ax: Axes, named: bool = True) -> None:
+    """Dotted lines at slopes that theories name, the numbers on top if `named`."""
     for value, words in LANDMARKS:
         ax.axvline(value, color=GREY, lw=0.8, ls=(0, (2, 2)), zorder=0)
-        ax.annotate(words, (value, 1.0), xycoords=("data", "axes fraction"), ha="center", va="bottom", fontsize=9.5)
+        if named:
+            ax.annotate(words, (value, 1.0), xycoords=("data", "axes fraction"), ha="center", va="bottom", fontsize=9.5)
+
+
+def alpha_axis(ax: Axes) -> None:
+    """The horizontal axis of slopes."""
+    ax.set_xlim(0.8, 3.35)
+    ax.set_xticks([1, 1.5, 2, 2.5, 3], ["≤ 1", "1.5", "2", "2.5", "≥ 3"])
+    ax.set_xlabel("spectral slope α")
+
+
+def slope_rows(ax: Axes, slopes: Sequence[Slope]) -> None:
+    """A row for each slope, from the top down, with its range and curve on the left."""
     for row, slope in enumerate(slopes):
         _slope_row(ax, row, slope)
     ax.set_yticks(range(len(slopes)), [_range_words(s) for s in slopes])
     ax.set_ylim(max(len(slopes), 1) - 0.5, -0.6)
-    ax.set_xlim(0.8, 3.35)
-    ax.set_xticks([1, 1.5, 2, 2.5, 3], ["≤ 1", "1.5", "2", "2.5", "≥ 3"])
-    ax.set_xlabel("spectral slope α")
-    return ax
 
 
 def _range_words(slope: Slope) -> str:

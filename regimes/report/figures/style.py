@@ -9,7 +9,7 @@ import matplotlib
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.axis import Axis
-from matplotlib.figure import Figure
+from matplotlib.figure import Figure, SubFigure
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter, NullLocator
 
 from regimes.analysis import Analysis, SinglesOnly
@@ -65,19 +65,42 @@ def figure_function(plot: Callable[..., Axes]) -> Callable[..., Axes]:
     return drawn
 
 
+def panels_function(plot: Callable[..., tuple[Axes, ...]]) -> Callable[..., tuple[Axes, ...]]:
+    """The same for a function that draws several panels: in a figure of its own, or in one that is given."""
+
+    @wraps(plot)
+    def drawn(analysis: Analysis, figure: Figure | SubFigure | None = None) -> tuple[Axes, ...]:
+        with matplotlib.rc_context(STYLE):
+            return plot(analysis, figure)
+
+    return drawn
+
+
+def panels(figure: Figure | SubFigure | None, n: int, columns: int, height: float) -> tuple[Axes, ...]:
+    """Axes in rows of `columns`; a figure of its own has rows `height` inches high."""
+    rows = -(-n // columns)
+    own = Figure(figsize=(SIZE[0], height * rows), layout="constrained") if figure is None else figure
+    return tuple(own.add_subplot(rows, columns, i + 1) for i in range(n))
+
+
 def new_axes() -> Axes:
     """Axes of a new figure that no window knows of."""
     return Figure(figsize=SIZE, layout="constrained").add_subplot()
 
 
-def log_axis(axis: Axis) -> None:
-    """Plain numbers on a logarithmic axis; also at 2 and 5 where fewer than 2.5 decades are shown."""
+def log_axis(axis: Axis, sparse: bool = False) -> None:
+    """Plain numbers on a logarithmic axis; also at 2 and 5 where fewer than 2.5 decades are shown.
+
+    With `sparse`, for small panels, also at 2 and 5 only where fewer than two powers of ten are shown.
+    """
     low, high = axis.get_view_interval()
     decades = np.log10(high / low)
-    steps = (1.0,) if decades > 2.5 else (1.0, 2.0, 5.0)
-    if decades < 0.75:
+    powers = np.floor(np.log10(high)) - np.ceil(np.log10(low)) + 1
+    few = powers < 2 if sparse else decades <= 2.5
+    steps = (1.0, 2.0, 5.0) if few else (1.0,)
+    if decades < (0.4 if sparse else 0.75):
         steps = (1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0)
-    axis.set_major_locator(LogLocator(10.0, subs=steps, numticks=30))
+    axis.set_major_locator(LogLocator(10.0, subs=steps, numticks=5 if sparse and powers > 4 else 30))
     axis.set_major_formatter(FuncFormatter(_plain))
     if decades <= 6:
         axis.set_minor_locator(LogLocator(10.0, subs=np.arange(2.0, 10.0), numticks=100))
