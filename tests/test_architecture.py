@@ -28,6 +28,8 @@ WALK = (
     ("fitting",),
     ("audit",),
     ("report", "pipeline"),
+    ("batch",),
+    ("compare",),
     ("cli",),
 )
 PLACE = {room: i for i, rooms in enumerate(WALK) for room in rooms}

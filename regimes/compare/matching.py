@@ -1,0 +1,139 @@
+"""Which launches of the larger set can stand for each launch of the smaller one."""
+
+from dataclasses import dataclass
+from itertools import permutations
+from math import perm
+
+import numpy as np
+
+from regimes.compare.launches import Launch, places, times
+from regimes.errors import DataError
+from regimes.tracks import Tracks
+from regimes.units import DAY, KM
+
+FACTOR = 1.25  # start separations of a pair that count as the same
+LEAST = 10  # launches to choose among
+_WAYS = 60  # in which members of a launch are put in the places of another
+_YEAR = 365.2425 * DAY
+
+
+@dataclass(frozen=True, slots=True)
+class Choices:
+    """What can stand for one launch.
+
+    Parameters
+    ----------
+    launch : (n,) int array
+        Of the larger set, each once or more.
+    members : (n, k) int array
+        Its members in the order of those they stand for.
+    factor : float
+        Largest ratio of start separations.
+    """
+
+    launch: np.ndarray
+    members: np.ndarray
+    factor: float
+
+    @property
+    def n_launch(self) -> int:
+        """Number of different launches."""
+        return len(np.unique(self.launch))
+
+
+@dataclass(frozen=True, slots=True)
+class Near:
+    """Which launches may stand for one another, beside their separations.
+
+    Parameters
+    ----------
+    place : float or None [m]
+        Farthest apart; None for anywhere.
+    season : float or None [s]
+        Farthest apart in the year; None for any time.
+    """
+
+    place: float | None = None
+    season: float | None = None
+
+
+def choices_of(
+    small: tuple[Tracks, tuple[Launch, ...]], large: tuple[Tracks, tuple[Launch, ...]], near: Near, seed: int
+) -> tuple[Choices, ...]:
+    """For every launch of the smaller set, those of the larger one whose pairs start as far apart.
+
+    Within a factor `FACTOR` in each pair; where fewer than `LEAST` launches are that near, the nearest `LEAST`.
+
+    Raises
+    ------
+    DataError
+        If places of a plane and a globe are to be compared, or nothing may stand for a launch.
+    """
+    allowed = _allowed(small, large, near)
+    rng = np.random.default_rng(seed)
+    by_size: dict[int, list[int]] = {}
+    for i, launch in enumerate(large[1]):
+        by_size.setdefault(launch.size, []).append(i)
+    tables = {m: (np.array(rows), np.array([large[1][i].apart for i in rows])) for m, rows in by_size.items()}
+    return tuple(
+        _choices(launch, tables, allowed[i], rng)
+        for i, launch in enumerate(small[1])
+    )  # fmt: skip
+
+
+def _choices(launch: Launch, tables, allowed: np.ndarray, rng: np.random.Generator) -> Choices:
+    k = launch.size
+    one, two = launch.pairs.T
+    wanted = np.log(np.maximum(launch.apart[one, two], 1.0))
+    found, ways, misses = [], [], []
+    for m, (rows, apart) in tables.items():
+        mine = allowed[rows]
+        if m < k or not np.any(mine):
+            continue
+        way = _ways(m, k, rng)
+        there = np.log(np.maximum(apart[mine][:, way[:, one], way[:, two]], 1.0))
+        miss = np.max(np.abs(there - wanted), axis=2)
+        which, how = np.nonzero(np.isfinite(miss))
+        found.append(rows[mine][which])
+        ways.append(way[how])
+        misses.append(miss[which, how])
+    if not found:
+        return Choices(np.empty(0, int), np.empty((0, k), int), np.inf)
+    launches, members, miss = np.concatenate(found), np.concatenate(ways), np.concatenate(misses)
+    best = np.full(allowed.size, np.inf)
+    np.minimum.at(best, launches, miss)
+    limit = max(np.log(FACTOR), float(np.sort(best)[min(LEAST, int(np.sum(np.isfinite(best)))) - 1]))
+    keep = miss <= limit + 1e-9
+    return Choices(launches[keep], members[keep], float(np.exp(miss[keep].max())))
+
+
+def _ways(m: int, k: int, rng: np.random.Generator) -> np.ndarray:
+    """Ordered choices (n, k) of k among m: all of them, or so many at random."""
+    if perm(m, k) <= _WAYS:
+        return np.array(list(permutations(range(m), k)))
+    return np.argsort(rng.random((_WAYS, m)), axis=1)[:, :k]
+
+
+def _allowed(small, large, near: Near) -> np.ndarray:
+    """(n_small, n_large) bool: near enough in place and season."""
+    allowed = np.ones((len(small[1]), len(large[1])), bool)
+    if near.place is not None:
+        if small[0].planar != large[0].planar:
+            raise DataError(
+                "compare: got --same-place with positions on a plane in one case and on the globe in the other; both "
+                "must be of one kind; leave --same-place out"
+            )
+        here, there = (places(*side) for side in (small, large))
+        allowed &= np.linalg.norm(here[:, None] - there[None], axis=2) <= near.place
+    if near.season is not None:
+        apart = np.abs(times(*small)[:, None] - times(*large)[None]) % _YEAR
+        allowed &= np.minimum(apart, _YEAR - apart) <= near.season
+    lonely = int(np.sum(~np.any(allowed, axis=1)))
+    if lonely:
+        limits = [] if near.place is None else [f"{near.place / KM:g} km"]
+        limits += [] if near.season is None else [f"{near.season / DAY:g} days of the year"]
+        raise DataError(
+            f"compare: got {lonely} of {len(small[1])} groups with no group of the other case within "
+            f"{' and '.join(limits)}; each needs some; widen --same-place or --same-season"
+        )
+    return allowed
