@@ -5,13 +5,12 @@ import os
 import signal
 import sys
 import threading
-import traceback
 from collections.abc import Callable, Sequence
 from functools import partial
 from pathlib import Path
 from tempfile import TemporaryDirectory
 
-from regimes.errors import CaseError, FitError, RegimesError
+from regimes.errors import CaseError, FitError, RegimesError, defect
 
 DONE, INTERNAL, USAGE, INTERRUPTED, PIPE_CLOSED = 0, 1, 2, 130, 141
 ENDINGS = ".csv, .csv.gz, .parquet"
@@ -49,24 +48,13 @@ def main(arguments: Sequence[str] | None = None) -> int:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return PIPE_CLOSED
     except Exception as error:  # noqa: BLE001 - the last resort: a defect becomes one line that can be reported
-        return _say(_defect(error), INTERNAL)
+        return _say(f"regimes: {defect(error)}", INTERNAL)
     return code
 
 
 def _say(message: str, code: int) -> int:
     sys.stderr.write(message + "\n")
     return code
-
-
-def _defect(error: Exception) -> str:
-    """One line that lets a developer find the place."""
-    place = traceback.extract_tb(error.__traceback__)[-1]
-    words = " ".join(str(error).split())
-    return (
-        f"regimes: internal error: {type(error).__name__}: {words} (line {place.lineno} of "
-        f"{Path(place.filename).name}); this is a defect of regimes, not of the data; please report it "
-        "with this line and the case file"
-    )
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -79,13 +67,16 @@ def _parser() -> argparse.ArgumentParser:
     parser.add_argument("--version", action="version", version=_version())
     commands = parser.add_subparsers(required=True, metavar="COMMAND")
 
-    run = commands.add_parser("run", help="analyse a case and write its report")
-    run.add_argument("case", type=Path, metavar="CASE", help="case file (TOML)")
-    run.add_argument("--out", type=Path, metavar="DIR", help="folder of the report (default: reports/NAME)")
+    run = commands.add_parser("run", help="analyse a case, or several side by side, and write their reports")
+    run.add_argument("cases", type=Path, metavar="CASE", nargs="+", help="case file (TOML)")
+    words = "folder of the report (default: reports/NAME); of several cases or a sweep, the folder of all their reports"
+    run.add_argument("--out", type=Path, metavar="DIR", help=words)
     run.add_argument(
         "--seed", type=partial(_whole, least=0), metavar="N", help="random seed (default: that of the case file)"
     )
     run.add_argument("--jobs", type=partial(_whole, least=1), metavar="N", help="threads (default: one for each core)")
+    words = "of several cases or a sweep, also run those whose report is there already (same data, choices, versions)"
+    run.add_argument("--again", action="store_true", help=words)
     run.set_defaults(command=_run)
 
     check = commands.add_parser("check", help="read the data of a case, count what is there, fit nothing")
@@ -129,8 +120,12 @@ def _run(chosen: argparse.Namespace) -> int:
     from regimes.pipeline import analyse
     from regimes.report import check_folder, write_report
 
-    case = load_case(chosen.case)
-    folder = check_folder(chosen.out or default_folder(chosen.case, case.name))
+    if len(chosen.cases) > 1:
+        return _run_many(chosen)
+    case = load_case(chosen.cases[0])
+    if case.sweep is not None:
+        return _run_many(chosen)
+    folder = check_folder(chosen.out or default_folder(chosen.cases[0], case.name))
     with _Watch() as report:
         analysis = analyse(case, progress=report, jobs=chosen.jobs or os.cpu_count() or 1, seed=chosen.seed)
     files = write_report(analysis, folder)
@@ -140,6 +135,54 @@ def _run(chosen: argparse.Namespace) -> int:
         reason = analysis.verdict.health_reason
         return _say(f"regimes: sampling did not converge: {reason}; the report says so", UNHEALTHY)
     return DONE
+
+
+def _run_many(chosen: argparse.Namespace) -> int:
+    from regimes.batch import check_overview, run_all, tasks_of, worst_code, write_overview
+
+    loaded = [_loaded(path) for path in chosen.cases]
+    alone = Path("reports") / f"{loaded[0][1]}-sweep" if len(loaded) == 1 else Path("reports")
+    folder = check_overview(chosen.out or alone)
+    tasks = tasks_of(loaded, folder, chosen.seed)
+    with _Watch(at_once=False) as report:
+        done = []
+
+        def told(outcome) -> None:
+            done.append(outcome)
+            _tell_outcome(outcome)
+            if report is not None:
+                report("runs", len(done), len(tasks))
+
+        if report is not None:
+            report("runs", 0, len(tasks))
+        outcomes = run_all(tasks, chosen.jobs or os.cpu_count() or 1, chosen.again, told)
+    _tell(f"overview: {_short(write_overview(outcomes, folder))}")
+    left = [outcome.task.folder.name for outcome in outcomes if outcome.state == "not run"]
+    if left:
+        return _say(f"interrupted; without a report: {', '.join(left)}; the others are complete", INTERRUPTED)
+    return worst_code(outcomes)
+
+
+def _loaded(path: Path) -> tuple[str, str, object]:
+    """A case file, the name of its folder, and its case or what is wrong with it."""
+    from regimes.cases import load_case
+
+    try:
+        case = load_case(path)
+    except CaseError as error:
+        return str(path), default_folder(path, "case").name, str(error)
+    return str(path), default_folder(path, case.name).name, case
+
+
+def _tell_outcome(outcome) -> None:
+    name = outcome.task.folder.name
+    if not outcome.reported:
+        _say(f"regimes: {name}: {outcome.message}", outcome.code)
+        return
+    kept = " (kept: a report of the same data, choices and versions is there; --again runs it)"
+    _tell(f"{name}{kept if outcome.state == 'kept' else ''}: {outcome.message}")
+    if outcome.code == UNHEALTHY:
+        _say(f"regimes: {name}: sampling did not converge; the report says so", UNHEALTHY)
 
 
 def _check(chosen: argparse.Namespace) -> int:
@@ -200,17 +243,18 @@ class _Watch:
     """While nothing is being written: bars with the time left where stderr is a terminal, and Ctrl-C ends at once.
 
     Threads that sample would otherwise be waited for, which can take a minute. A `stage` that cannot tell how far it
-    is has a bar that only moves.
+    is has a bar that only moves. With `at_once` False, Ctrl-C raises as usual.
     """
 
-    def __init__(self, stage: str = "") -> None:
+    def __init__(self, stage: str = "", at_once: bool = True) -> None:
         self.stage = stage
+        self.at_once = at_once
 
     def __enter__(self) -> Callable[[str, int, int], None] | None:
         self.bars = None
         self.tasks: dict[str, int] = {}
         in_main = threading.current_thread() is threading.main_thread()
-        self.before = signal.signal(signal.SIGINT, self._leave) if in_main else None
+        self.before = signal.signal(signal.SIGINT, self._leave) if in_main and self.at_once else None
         if not sys.stderr.isatty():
             return None
         from rich.console import Console

@@ -1,5 +1,8 @@
 """The errors that a user can meet, each with the exit code of the command line."""
 
+import traceback
+from pathlib import Path
+
 
 class RegimesError(Exception):
     """Base of all errors raised on purpose; the message says what, got, allowed and what to do."""
@@ -27,3 +30,14 @@ class FitError(RegimesError):
     def __init__(self, message: str, partial: object = None):
         super().__init__(message)
         self.partial = partial
+
+
+def defect(error: Exception) -> str:
+    """One line on an error that was not raised on purpose, which lets a developer find the place."""
+    place = traceback.extract_tb(error.__traceback__)[-1]
+    words = " ".join(str(error).split())
+    return (
+        f"internal error: {type(error).__name__}: {words} (line {place.lineno} of "
+        f"{Path(place.filename).name}); this is a defect of regimes, not of the data; please report it "
+        "with this line and the case file"
+    )
