@@ -12,9 +12,11 @@ from regimes.compare.taking import Part, missing_steps, taken
 from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
+from regimes.units import DAY
 
 LEAST_TIMES = 3  # as many launches in the larger set as in the smaller one, or more
 LEAST_EFFECTIVE = 2.0  # the same of those that are drawn, by how often each is
+_LEAST_LENGTH = 0.9
 MOST_SAMPLES = 15_000_000  # of the larger set as a whole, positions; more would fill the memory
 
 
@@ -159,12 +161,12 @@ def _cautions(small: Side, large: Side, counts: tuple[int, int, int], choices: t
     return tuple(out)
 
 
-def shortfall(plan: Plan, virtual: Pairs, observed: Pairs) -> tuple[str, ...]:
-    """A caution where virtual records end much earlier than those that they copy."""
-    have, want = int(virtual.length.sum()), int(observed.length.sum())
-    if have >= 0.9 * want:
+def shortfall(plan: Plan, have: float, want: int) -> tuple[str, ...]:
+    """A caution where virtual records end much earlier than those that they copy; pair steps of both."""
+    if have >= _LEAST_LENGTH * want:
         return ()
+    days = (plan.horizon - 1) * plan.large.tracks.step / DAY
     return (
-        f"Records of {plan.large.name} end early: a virtual deployment has {have / want:.0%} of the pair days that "
-        f"{plan.small.name} has within {plan.horizon * plan.large.tracks.step / 86400:.3g} days.",
+        f"Records of {plan.large.name} end early: within {days:.3g} days a virtual deployment has {have / want:.0%} of "
+        f"the pair days of {plan.small.name}.",
     )
