@@ -4,16 +4,20 @@ import re
 from importlib import resources
 from typing import Any
 
-from jinja2 import Environment, PackageLoader, StrictUndefined
+from jinja2 import ChoiceLoader, Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup, escape
 
 from regimes.analysis import Analysis, SinglesOnly
 from regimes.report.captions import TITLES, caption, description
 
 
-def render(template: str, content: dict[str, Any]) -> str:
-    """A self-contained page: style and figures inside, no script, no network."""
-    environment = Environment(loader=PackageLoader("regimes.report", ""), autoescape=True, undefined=StrictUndefined)
+def render(template: str, content: dict[str, Any], room: str = "regimes.report") -> str:
+    """A self-contained page: style and figures inside, no script, no network.
+
+    Templates are looked for in `room` first, then among those of the report.
+    """
+    loader = ChoiceLoader([PackageLoader(name, "") for name in dict.fromkeys((room, "regimes.report"))])
+    environment = Environment(loader=loader, autoescape=True, undefined=StrictUndefined)
     environment.trim_blocks = environment.lstrip_blocks = True
     environment.filters["typeset"] = typeset
     style = resources.files("regimes.report").joinpath("page.css").read_text(encoding="utf-8")
@@ -33,19 +37,18 @@ def figures_content(analysis: Analysis | SinglesOnly, figures: dict[str, str]) -
             "name": name,
             "number": number,
             "title": TITLES[name],
-            "svg": _inline(svg, name, analysis),
+            "svg": inline(svg, name, description(name, analysis)),
             "caption": caption(name, analysis),
         }
         for number, (name, svg) in enumerate(figures.items(), 1)
     }
 
 
-def _inline(svg: str, name: str, analysis: Analysis | SinglesOnly) -> Markup:
-    """SVG as part of the page: no header, scalable, with a name and a description."""
+def inline(svg: str, name: str, words: str) -> Markup:
+    """SVG as part of the page: no header, scalable, with a name and a description in words."""
     drawing = svg[svg.index("<svg") :]
     drawing = re.sub(r"<metadata>.*?</metadata>\s*", "", drawing, flags=re.DOTALL)
     head, body = drawing.split(">", 1)
     head = re.sub(r'\s(width|height)="[^"]*"', "", head)
-    words = escape(description(name, analysis))
     label = f"{name}-words"
-    return Markup(f'{head} role="img" aria-labelledby="{label}"><title id="{label}">{words}</title>{body}')
+    return Markup(f'{head} role="img" aria-labelledby="{label}"><title id="{label}">{escape(words)}</title>{body}')

@@ -9,14 +9,11 @@ import xarray as xr
 from regimes.analysis import Analysis, SinglesOnly
 from regimes.curves import Curve
 from regimes.report.digits import span
+from regimes.report.every_tables import every_frames, every_variables
+from regimes.report.frames import COLUMNS, curve_frame, variables
 from regimes.report.single_tables import single_frames, single_variables
 
-COLUMNS = (
-    "curve", "axis_name", "axis_value", "axis_unit", "value", "unit", "standard_error", "lo95", "hi95",
-    "n_cluster", "n_pair",
-)  # fmt: skip
-AXIS_UNIT = {"separation": "m", "time": "s"}
-NORMAL95 = 1.96
+_COUNTS = {"n_cluster": "clusters", "n_pair": "pairs"}
 
 
 def curves_of(analysis: Analysis) -> dict[str, tuple[Curve, np.ndarray]]:
@@ -43,23 +40,21 @@ def curve_table(analysis: Analysis) -> pd.DataFrame:
     pandas.DataFrame
         Columns as in `COLUMNS`. Error (half the 68 % interval) and interval of the exponent are those of the pooled
         dispersion; those of every other curve come from the scatter of clusters, the interval plus and minus 1.96
-        standard errors.
+        standard errors. For rows of checks see `every_frames`.
     """
+    return pd.concat(_frames(analysis) + every_frames(analysis), ignore_index=True)
+
+
+def _frames(analysis: Analysis) -> list[pd.DataFrame]:
     frames = []
     for key, (curve, pairs) in curves_of(analysis).items():
-        error = curve.standard_error
-        low, high = curve.value - NORMAL95 * error, curve.value + NORMAL95 * error
-        value = curve.value
+        rows = curve_frame(key, curve, pairs)
         if key == "exponent":
-            value, low, high = analysis.rates.rate, analysis.rates.low95, analysis.rates.high95
-            error = 0.5 * (analysis.rates.high68 - analysis.rates.low68)  # of the same pooled dispersion
-        columns = (
-            key, curve.axis_name, curve.axis, AXIS_UNIT[curve.axis_name], value, curve.unit, error, low, high,
-            curve.n_cluster, pairs,
-        )  # fmt: skip
-        frames.append(pd.DataFrame(dict(zip(COLUMNS, columns, strict=True))))
-    table = pd.concat(frames, ignore_index=True)
-    return table.astype({"n_cluster": int, "n_pair": int})
+            rates = analysis.rates
+            error = 0.5 * (rates.high68 - rates.low68)  # of the same pooled dispersion
+            rows = rows.assign(value=rates.rate, standard_error=error, lo95=rates.low95, hi95=rates.high95)
+        frames.append(rows)
+    return frames
 
 
 def write_curves_csv(analysis: Analysis | SinglesOnly, path: Path) -> None:
@@ -72,25 +67,13 @@ def write_curves_csv(analysis: Analysis | SinglesOnly, path: Path) -> None:
 
 def write_curves_netcdf(analysis: Analysis, path: Path) -> None:
     """`curve_table`, the predicted bands and the curves of single particles as netCDF, with units and long names."""
-    table = curve_table(analysis)
-    variables: dict[str, tuple] = {}
-    for key, (curve, _) in curves_of(analysis).items():
-        rows = table[table.curve == key]
+    found: dict[str, tuple] = {}
+    for rows, (key, (curve, _)) in zip(_frames(analysis), curves_of(analysis).items(), strict=True):
         axis = ("passage_" if key.startswith("passage_") else "") + curve.axis_name
-        unit = "1" if curve.unit == "ln m" else curve.unit.replace("1/s", "s-1")
-        variables[key] = ((axis,), rows.value.to_numpy(), {"units": unit, "long_name": curve.name})
-        for column, words in (
-            ("standard_error", "standard error"),
-            ("lo95", "lower 95 % end"),
-            ("hi95", "upper 95 % end"),
-        ):
-            attributes = {"units": unit, "long_name": f"{curve.name}, {words}"}
-            variables[f"{key}_{column}"] = ((axis,), rows[column].to_numpy(), attributes)
-        for column, words in (("n_cluster", "clusters"), ("n_pair", "pairs")):
-            attributes = {"units": "1", "long_name": f"number of {words} behind {curve.name}"}
-            variables[f"{key}_{column}"] = ((axis,), rows[column].to_numpy(), attributes)
-    variables.update(_rate_variables(analysis) | _band_variables(analysis) | single_variables(analysis.single))
-    xr.Dataset(variables, _coordinates(analysis), _header(analysis)).to_netcdf(path, engine="h5netcdf")
+        found |= variables(rows, axis, curve.name, _COUNTS)
+    found |= _rate_variables(analysis) | _band_variables(analysis)
+    found |= every_variables(analysis) | single_variables(analysis.single)
+    xr.Dataset(found, _coordinates(analysis), _header(analysis)).to_netcdf(path, engine="h5netcdf")
 
 
 def _header(analysis: Analysis) -> dict[str, str]:

@@ -67,7 +67,6 @@ def plot_checks(analysis: Analysis, figure: Figure | SubFigure | None = None) ->
     axes = panels(figure, len(checks), 2, HEIGHT)
     for ax, check in zip(axes, checks, strict=True):
         _panel(ax, check)
-    axes[0].figure.align_ylabels(axes)
     return axes
 
 
@@ -94,7 +93,7 @@ def _panel(ax: Axes, check: Check) -> None:
 def _dress(ax: Axes, check: Check, words: str, label: str) -> None:
     said = "agrees" if check.agrees else "dissents"
     ax.set_title(
-        f"{checked(check.curve)}\n{said}, p = {p_text(check.p_value)}", fontsize=SMALL, loc="left",
+        f"{checked(check.curve)}\n{said}, p = {p_text(check.p_value)}", fontsize=SMALL, loc="left", y=1.03,
         fontweight="normal" if check.agrees else "bold",
     )  # fmt: skip
     ax.set_xlabel(words, fontsize=SMALL, labelpad=1.5)

@@ -33,7 +33,7 @@ def plot_structure(analysis: Analysis, ax: Axes) -> Axes:
     ax.set_ylabel("structure function (m\u00b2/s\u00b2)")
     _band(ax, others)
     total = structure.total()
-    used = np.isin(total.axis, entered(others))
+    used = np.any(np.isclose(total.axis[:, None], entered(others), rtol=1e-9), axis=1)  # sums differ in round-off
     shown = []
     for curve, bins, marker, colour, mfc, label, shift in (
         (structure.longitudinal(), True, "^", VERMILION, "white", "longitudinal", 0.97),

@@ -91,7 +91,8 @@ def new_axes() -> Axes:
 def log_axis(axis: Axis, sparse: bool = False) -> None:
     """Plain numbers on a logarithmic axis; also at 2 and 5 where fewer than 2.5 decades are shown.
 
-    With `sparse`, for small panels, also at 2 and 5 only where fewer than two powers of ten are shown.
+    With `sparse`, for small panels, also at 2 and 5 only where fewer than two powers of ten are shown, and
+    minor ticks over two decades at most.
     """
     low, high = axis.get_view_interval()
     decades = np.log10(high / low)
@@ -102,7 +103,7 @@ def log_axis(axis: Axis, sparse: bool = False) -> None:
         steps = (1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0)
     axis.set_major_locator(LogLocator(10.0, subs=steps, numticks=5 if sparse and powers > 4 else 30))
     axis.set_major_formatter(FuncFormatter(_plain))
-    if decades <= 6:
+    if decades <= (2 if sparse else 6):
         axis.set_minor_locator(LogLocator(10.0, subs=np.arange(2.0, 10.0), numticks=100))
     else:
         axis.set_minor_locator(NullLocator())
