@@ -5,10 +5,8 @@ from dataclasses import replace
 from importlib import resources
 
 import jsonschema
-import matplotlib
 import numpy as np
 import pytest
-import xarray as xr
 from matplotlib.collections import FillBetweenPolyCollection
 
 from regimes.checks import Check
@@ -262,9 +260,7 @@ def test_structure_function_fills_the_bins_that_were_used(analysis):
     inside = (total.axis > 0.99 * used[0]) & (total.axis < 1.01 * used[-1])
     filled, hollow = (bars_of(ax, label)[0] for label in ("total, 95 %", "total, not used"))
     assert np.allclose(filled.get_xdata() * KM, used, rtol=1e-12)  # round-off
-    assert np.allclose(
-        filled.get_ydata(), total.value[inside], rtol=1e-12
-    )  # round-off
+    assert np.allclose(filled.get_ydata(), total.value[inside], rtol=1e-12)  # round-off
     assert filled.get_xdata().size + hollow.get_xdata().size == total.axis.size
     parts = [bars_of(ax, name)[0].get_ydata() for name in ("longitudinal", "transverse")]
     assert np.allclose(sum(parts), total.value, rtol=1e-9)  # round-off of the components
@@ -484,17 +480,6 @@ def test_checks_in_the_table_are_data_and_prediction(analysis):
         assert np.array_equal(data.axis_value[outside], check.where)
 
 
-def test_netcdf_holds_all_percentiles_of_a_prediction(analysis, tmp_path):
-    write_curves_netcdf(analysis, tmp_path / "c.nc")
-    with xr.open_dataset(tmp_path / "c.nc", engine="h5netcdf", decode_times=False) as data:
-        for check in analysis.others.checks:
-            stored = data[f"band_{check.curve}"]
-            assert stored.dims == ("percentile", f"check_{check.curve}_{check.axis_name}")
-            assert np.array_equal(stored.values, check.band)
-        assert data["structure_total"].attrs["units"] == "m2 s-2"
-        assert data["structure_total_n_pair"].attrs["long_name"].startswith("number of samples of pairs")
-
-
 def test_tables_leave_out_what_there_is_not(analysis, tmp_path):
     bare = with_others(analysis, checks=(), diffusivity=None, triplets=None)
     names = set(curve_table(bare).curve)
@@ -502,10 +487,3 @@ def test_tables_leave_out_what_there_is_not(analysis, tmp_path):
     assert all(name.startswith(("checked_", "predicted_", "relative_diffusivity_", "triplet_")) for name in gone)
     assert len(gone) == 2 * 8 + 2 + 3
     write_curves_netcdf(bare, tmp_path / "c.nc")
-
-
-def test_figures_of_every_curve_leave_global_settings_alone(analysis):
-    before = dict(matplotlib.rcParams)
-    for name in figures.OF_EVERY_CURVE:
-        figures.draw(name, analysis)
-    assert dict(matplotlib.rcParams) == before

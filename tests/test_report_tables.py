@@ -96,11 +96,17 @@ def test_dispersion_in_the_table_is_the_mean_over_pairs(analysis):
     assert np.allclose(rows.hi95 - rows.value, 1.96 * rows.standard_error, rtol=1e-9)  # round-off
 
 
-def test_csv_and_netcdf_say_the_same(analysis, tmp_path):
+@pytest.fixture(scope="module")
+def netcdf(analysis, tmp_path_factory):
+    path = tmp_path_factory.mktemp("c") / "c.nc"
+    write_curves_netcdf(analysis, path)
+    return path
+
+
+def test_csv_and_netcdf_say_the_same(analysis, netcdf, tmp_path):
     write_curves_csv(analysis, tmp_path / "c.csv")
-    write_curves_netcdf(analysis, tmp_path / "c.nc")
     table = pd.read_csv(tmp_path / "c.csv")
-    with xr.open_dataset(tmp_path / "c.nc", engine="h5netcdf") as data:
+    with xr.open_dataset(netcdf, engine="h5netcdf") as data:
         for key, rows in table.groupby("curve"):
             for column, name in (("value", key), ("lo95", f"{key}_lo95"), ("standard_error", f"{key}_standard_error")):
                 # eight significant digits are printed
@@ -136,9 +142,8 @@ def test_curves_without_a_pair(single, tmp_path):
     assert len(set(table.curve)) == (9 if single else 0)
 
 
-def test_netcdf_names_every_unit_and_long_name(analysis, tmp_path):
-    write_curves_netcdf(analysis, tmp_path / "c.nc")
-    with xr.open_dataset(tmp_path / "c.nc", engine="h5netcdf", decode_times=False) as data:
+def test_netcdf_names_every_unit_and_long_name(analysis, netcdf):
+    with xr.open_dataset(netcdf, engine="h5netcdf", decode_times=False) as data:
         for name, variable in data.variables.items():
             assert variable.attrs["units"] in {"1", "m", "s", "m2", "s-1", "m2 s-1", "m2 s-2", "percent"}, name
             assert variable.attrs["long_name"], name
@@ -146,6 +151,16 @@ def test_netcdf_names_every_unit_and_long_name(analysis, tmp_path):
         assert data["exponent"].attrs["units"] == "s-1"
         assert data["dispersion"].attrs["units"] == "m2"
         assert np.array_equal(data["exponent_resolved"].values == 1, analysis.rates.resolved)
+
+
+def test_netcdf_holds_all_percentiles_of_a_prediction(analysis, netcdf):
+    with xr.open_dataset(netcdf, engine="h5netcdf", decode_times=False) as data:
+        for check in analysis.others.checks:
+            stored = data[f"band_{check.curve}"]
+            assert stored.dims == ("percentile", f"check_{check.curve}_{check.axis_name}")
+            assert np.array_equal(stored.values, check.band)
+        assert data["structure_total"].attrs["units"] == "m2 s-2"
+        assert data["structure_total_n_pair"].attrs["long_name"].startswith("number of samples of pairs")
 
 
 # LaTeX
