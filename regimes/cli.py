@@ -1,4 +1,4 @@
-"""The command line: ``regimes run``, ``regimes check``, ``regimes simulate``."""
+"""The command line: ``regimes run``, ``regimes check``, ``regimes simulate``, ``regimes compare``."""
 
 import argparse
 import os
@@ -87,6 +87,24 @@ def _parser() -> argparse.ArgumentParser:
     simulate.add_argument("recipe", type=Path, metavar="RECIPE", help="recipe file (TOML)")
     simulate.add_argument("--out", type=_fixes_file, metavar="FILE", required=True, help=f"fixes to write ({ENDINGS})")
     simulate.set_defaults(command=_simulate)
+
+    words = "hold two cases against one another, the larger sampled as the smaller was"
+    comparing = commands.add_parser("compare", help=words)
+    comparing.add_argument("observed", type=Path, metavar="OBSERVED", help="case file of the observations (TOML)")
+    comparing.add_argument("model", type=Path, metavar="MODEL", help="case file of the model run (TOML)")
+    words = "folder of the comparison (default: reports/OBSERVED-against-MODEL)"
+    comparing.add_argument("--out", type=Path, metavar="DIR", help=words)
+    words = "virtual deployments (default: 199)"
+    comparing.add_argument("--deployments", type=partial(_whole, least=99), metavar="M", default=199, help=words)
+    words = "random seed (default: that of the observed case)"
+    comparing.add_argument("--seed", type=partial(_whole, least=0), metavar="N", help=words)
+    words = "threads (default: one for each core)"
+    comparing.add_argument("--jobs", type=partial(_whole, least=1), metavar="N", help=words)
+    words = "only groups that start within so many km of one another stand for one another"
+    comparing.add_argument("--same-place", type=_positive, metavar="KM", help=words)
+    words = "only groups that start within so many days of the year of one another stand for one another"
+    comparing.add_argument("--same-season", type=_positive, metavar="DAYS", help=words)
+    comparing.set_defaults(command=_compare)
     return parser
 
 
@@ -112,6 +130,16 @@ def _whole(text: str, least: int) -> int:
         number = least - 1
     if number < least:
         raise argparse.ArgumentTypeError(f"got {text!r}; must be a whole number of {least} or more")
+    return number
+
+
+def _positive(text: str) -> float:
+    try:
+        number = float(text)
+    except ValueError:
+        number = 0.0
+    if not 0.0 < number < float("inf"):
+        raise argparse.ArgumentTypeError(f"got {text!r}; must be a number > 0")
     return number
 
 
@@ -213,6 +241,28 @@ def _simulate(chosen: argparse.Namespace) -> int:
             "must be a file in a folder that exists; choose another"
         ) from error
     _tell(f"fixes: {_short(out)}")
+    return DONE
+
+
+def _compare(chosen: argparse.Namespace) -> int:
+    from regimes.cases import load_case
+    from regimes.compare import CompareOptions, Near, check_comparison_folder, compare, fit_options, write_comparison
+    from regimes.units import DAY, KM
+
+    observed, model = load_case(chosen.observed), load_case(chosen.model)
+    names = [
+        default_folder(path, case.name).name for path, case in ((chosen.observed, observed), (chosen.model, model))
+    ]
+    folder = check_comparison_folder(chosen.out or Path("reports") / "-against-".join(names))
+    place = None if chosen.same_place is None else chosen.same_place * KM
+    season = None if chosen.same_season is None else chosen.same_season * DAY
+    seed = observed.seed if chosen.seed is None else chosen.seed
+    fit = fit_options(observed, seed, chosen.jobs or os.cpu_count() or 1)
+    with _Watch() as report:
+        found = compare(observed, model, CompareOptions(chosen.deployments, Near(place, season), fit), report)
+    files = write_comparison(found, folder)
+    _tell(found.sentence)
+    _tell(f"comparison: {_short(files['comparison.html'])}")
     return DONE
 
 

@@ -5,6 +5,7 @@ import numpy as np
 from regimes.compare.fitted import Fitted
 from regimes.compare.ranks import LEVEL, CurveRank, Ranks
 from regimes.report.digits import significant
+from regimes.report.words import p_text
 from regimes.units import DAY
 from regimes.verdict.digits import km
 
@@ -35,13 +36,6 @@ def sentence(ranks: Ranks, fitted: Fitted, unmatched_p: float) -> str:
         f"Consistent: sampled alike, no curve tells the two cases apart (p = {p} over all curves); {seen} would have "
         "been seen in four of five cases." + _explained(unmatched_p)
     )
-
-
-def p_text(value: float) -> str:
-    """A p-value to two digits, never 0."""
-    if not np.isfinite(value):
-        return "not determined"
-    return f"{value:.2g}" if value >= 1e-4 else "under 0.0001"
 
 
 def place(curve: CurveRank) -> str:
