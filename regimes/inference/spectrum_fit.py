@@ -117,7 +117,7 @@ class SpectrumFit:
         return f"{value} at wavelengths of {short:.3g} to {long:.3g} km"
 
 
-def fit_spectrum(statistics: StructureStatistics, seed: int, longest: int = 12000) -> SpectrumFit:
+def fit_spectrum(statistics: StructureStatistics, seed: int, longest: int = 24000) -> SpectrumFit:
     """Fit broken power-law spectra to the total structure function.
 
     Parameters
