@@ -244,7 +244,7 @@ def test_one_problem(folder, old, new, problem):
         ),
         (
             "[reprot]",
-            "reprot: unknown key; known: name, seed, observations, pairs, curves, models, single, report; "
+            "reprot: unknown key; known: name, seed, observations, pairs, curves, models, single, report, sweep, plan; "
             "did you mean report?",
         ),
     ],

@@ -34,6 +34,17 @@ def load_case(path: str | Path) -> Case:
         If the file cannot be read, is no TOML, or asks for what is not possible; all problems at once.
     """
     path = Path(path)
+    return case_from(read_toml(path), source=str(path), folder=path.parent)
+
+
+def read_toml(path: Path) -> dict[str, Any]:
+    """Sections and keys of a case file.
+
+    Raises
+    ------
+    CaseError
+        If the file cannot be read or is no TOML.
+    """
     try:
         text = path.read_text(encoding="utf-8-sig")
     except FileNotFoundError:
@@ -41,10 +52,9 @@ def load_case(path: str | Path) -> Case:
     except (OSError, UnicodeDecodeError) as error:
         raise CaseError(f"{path}: cannot be read ({error}); must be a text file in UTF-8") from error
     try:
-        content = tomllib.loads(text)
+        return tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         raise CaseError(f"{path}: no valid TOML: {error}; correct the line") from error
-    return case_from(content, source=str(path), folder=path.parent)
 
 
 def case_from(content: Mapping[str, Any], source: str = "case", folder: str | Path | None = None) -> Case:

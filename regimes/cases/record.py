@@ -1,17 +1,16 @@
 """The case: frozen models of the sections of a case file."""
 
-from typing import Annotated, Literal, get_args
+from typing import Annotated, Literal
 
 from pydantic import Field, ValidationInfo, field_validator, model_validator
 
+from regimes.cases.kernel import REGIMES, Regime
+from regimes.cases.plan import PlanRules
 from regimes.cases.problems import show
 from regimes.cases.section import Positive, Range, Section, Text, rule
 from regimes.cases.single import SingleRules
 from regimes.cases.sweep import Sweep
 from regimes.units import HOUR, KM
-
-Regime = Literal["ballistic", "exponential", "richardson", "diffusive"]
-REGIMES: tuple[Regime, ...] = get_args(Regime)
 
 
 def _rising(limits: tuple[float, float] | None) -> tuple[float, float] | None:
@@ -174,3 +173,4 @@ class Case(Section):
     single: SingleRules = SingleRules()
     report: ReportRules = ReportRules()
     sweep: Sweep | None = None
+    plan: PlanRules | None = None

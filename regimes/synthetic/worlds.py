@@ -1,11 +1,12 @@
 """The worlds that a recipe may ask for."""
 
 from itertools import pairwise
-from typing import Annotated, Literal
+from typing import Annotated
 
 import numpy as np
 from pydantic import Field, model_validator
 
+from regimes.cases.kernel import KernelRules, check_pieces
 from regimes.synthetic.sections import Lengths, NotNegative, Numbers, Positive, Section, Share, rule
 from regimes.synthetic.shear_diffusion import ShearDiffusion
 from regimes.synthetic.spectrum import Spectrum
@@ -13,31 +14,9 @@ from regimes.theory.kernel import Kernel
 from regimes.theory.regimes import REGIMES
 from regimes.units import DAY, KM
 
-RegimeName = Literal["ballistic", "exponential", "richardson", "diffusive"]
 
-
-def _check_pieces(n_piece: int, key: str, ends: tuple[float, ...]) -> None:
-    if n_piece != len(ends) + 1:
-        raise rule(f"{n_piece} pieces", f"be one more than {key}, which has {len(ends)}")
-    if any(low >= high for low, high in pairwise(ends)):
-        raise rule(list(ends), f"rise ({key})")
-
-
-class KernelWorld(Section):
+class KernelWorld(KernelRules):
     """A flow without memory whose pairs separate by a kernel; named `regimes` or free `exponents`."""
-
-    regimes: Annotated[tuple[RegimeName, ...], Field(strict=False)] = ()
-    exponents: Annotated[tuple[Annotated[float, Field(ge=0, le=2)], ...], Field(strict=False)] = ()
-    transitions_km: Lengths = ()
-    rate_per_d: Positive
-    reference_km: Positive
-
-    @model_validator(mode="after")
-    def _pieces(self) -> "KernelWorld":
-        if bool(self.regimes) == bool(self.exponents):
-            raise rule("both or neither", "give either regimes or exponents")
-        _check_pieces(len(self.regimes or self.exponents), "transitions_km", self.transitions_km)
-        return self
 
     @property
     def kernel(self) -> Kernel:
@@ -65,7 +44,7 @@ class FourierWorld(Section):
 
     @model_validator(mode="after")
     def _pieces(self) -> "FourierWorld":
-        _check_pieces(len(self.spectral_slopes), "break_wavelengths_km", self.break_wavelengths_km)
+        check_pieces(len(self.spectral_slopes), "break_wavelengths_km", self.break_wavelengths_km)
         ends = (self.shortest_km, *self.break_wavelengths_km, self.longest_km)
         if any(low >= high for low, high in pairwise(ends)):
             raise rule(list(ends), "rise from shortest_km over break_wavelengths_km to longest_km")
