@@ -65,7 +65,7 @@ def sampling_interval(subject: Subject) -> Finding:
             _cap(subject, share, reached),
             _counted_otherwise(subject),
             _trial(subject, allowed, fits),
-            _advice(subject, reached, changes),
+            _advice(subject, share, reached, changes),
         )
     )
     measure = "largest share of exits within one sampling interval"
@@ -170,9 +170,9 @@ def _trial(subject: Subject, allowed, fits) -> str:
     return f"{first} is another one with {worst} alone: {upheld(fits[same.index(False)])}."
 
 
-def _advice(subject: Subject, reached, changes: bool) -> str:
+def _advice(subject: Subject, share: float, reached, changes: bool) -> str:
     if reached is None:
-        return "No fewer fixes should be used, and no more are needed."
+        return "Nothing need be done." if share < SHARE else "More frequent fixes would make sure."
     if reached[1] <= subject.resolved[0]:
         return "Those separations are already left out; only more frequent fixes would resolve them."
     if changes:
