@@ -11,6 +11,8 @@ import pytest
 
 from regimes.report import write_report
 from regimes.report.figures import FIGURES
+from regimes.report.figures.checks import HEIGHT
+from regimes.report.figures.style import SIZE
 from tests.report_fixture import demo_analysis, with_verdict
 
 CHROMIUM = next(filter(None, map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))), None)
@@ -28,7 +30,8 @@ window.addEventListener("load", () => {
   const boxes = Array.from(document.querySelectorAll("figure > svg"), s => {
     const box = s.getBoundingClientRect();
     const drawn = s.querySelectorAll("path, use").length;
-    return {width: box.width, height: box.height, right: box.right, drawn};
+    const name = s.getAttribute("aria-labelledby");
+    return {name, width: box.width, height: box.height, right: box.right, drawn};
   });
   const outside = Array.from(document.querySelectorAll("main *")).filter(e => !e.closest("svg, .scroll")
     && e.getBoundingClientRect().right > page.clientWidth + 0.5).map(e => e.outerHTML.slice(0, 80));
@@ -93,7 +96,11 @@ def test_every_figure_is_drawn(seen):
     assert len(found["boxes"]) == len(FIGURES)
     for box in found["boxes"]:
         assert box["width"] > 0.8 * min(width, 500)
-        assert 0.5 < box["height"] / box["width"] < 1.2
+        shape = box["height"] / box["width"]
+        if box["name"] == "checks-words":  # eight panels in four rows, each as drawn
+            assert shape == pytest.approx(4 * HEIGHT / SIZE[0], rel=0.01)
+        else:
+            assert 0.5 < shape < 1.2
         assert box["right"] <= found["width"]
         assert box["drawn"] > 20
 

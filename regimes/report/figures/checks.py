@@ -14,7 +14,7 @@ from regimes.report.words import checked, p_text
 from regimes.units import DAY, KM
 
 HEIGHT = 1.72  # inches of a row of panels
-SMALL = 9.0
+SMALL = 9.5
 
 
 @dataclass(frozen=True, slots=True)

@@ -41,7 +41,7 @@ def plot_spectrum(analysis: Analysis, figure: Figure | SubFigure | None = None) 
     top.set_yticks([])
     top.set_ylabel("probability density")
     _comparison(top, fit)
-    top.legend(loc="upper left", borderaxespad=0.2, labelspacing=0.3, fontsize=9.0, frameon=True, edgecolor="none")
+    top.legend(loc="upper left", borderaxespad=0.2, labelspacing=0.3, frameon=True, edgecolor="none")
     landmarks(bottom, named=False)
     slope_rows(bottom, [s for s in analysis.verdict.slopes if s.curve == "exit_rate"])
     for ax in (top, bottom):
