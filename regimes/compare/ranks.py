@@ -167,20 +167,23 @@ def _distribution(seen: Measured, drawn: list[Measured], grid: Grid, scale: floa
         own.append(distance(seen.samples[k], pool))
         rows.append([distance(m.samples[k], pool) for m in drawn])
     value, rows = np.array(own), np.array(rows).T
-    if not (np.all(np.isfinite(value)) and np.all(np.isfinite(rows))):
+    good = np.isfinite(value) & (np.mean(np.isfinite(rows), axis=0) >= _SEEN)
+    rows = rows[:, good]
+    if not np.any(good) or not np.all(np.any(np.isfinite(rows), axis=1)):
         return None
-    typical = np.median(rows, axis=0)
-    theirs = np.max(rows / typical, axis=1)
+    value = value[good]
+    typical = np.nanmedian(rows, axis=0)
+    theirs = np.nanmax(rows / typical, axis=1)
     away = value / typical / scale
     tests = np.concatenate([[np.max(away)], theirs])
-    band = np.quantile(scale * rows, QUANTILES, axis=0)
+    band = np.nanquantile(scale * rows, QUANTILES, axis=0)
     band[0] = 0.0  # no distance is too small
     name = "separation_distribution"
     axis_name, axis = grid.axis(name)
-    rank = np.mean(rows < value, axis=0)
+    rank = np.sum(rows < value, axis=0) / np.sum(np.isfinite(rows), axis=0)
     critical = float(np.quantile(theirs, 1.0 - LEVEL))
     curve = CurveRank(
-        name, axis_name, axis, value, band, rank, away, away > critical, critical, _share(tests), UNITS[name]
+        name, axis_name, axis[good], value, band, rank, away, away > critical, critical, _share(tests), UNITS[name]
     )
     return curve, tests
 
