@@ -14,6 +14,7 @@ from regimes.curves.triplets import Triplets
 from regimes.inference.record import Inference
 from regimes.inference.spectrum_fit import SpectrumFit
 from regimes.particles import Ratio, SingleParticle
+from regimes.verdict.finding import Finding
 from regimes.verdict.record import Verdict
 
 
@@ -192,6 +193,8 @@ class Analysis:
         `single` held against the pairs and against a deformation radius, as far as that can be done.
     others : OtherCurves
         Every other curve, and whether the kernel answers for it.
+    audit : tuple of Finding
+        What could fake the result, one for each threat.
     """
 
     provenance: Provenance
@@ -207,6 +210,7 @@ class Analysis:
     single_missing: str
     ratios: tuple[Ratio, ...]
     others: OtherCurves
+    audit: tuple[Finding, ...]
 
     @property
     def sentence(self) -> str:

@@ -83,6 +83,12 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("case", type=Path, metavar="CASE", help="case file (TOML)")
     check.set_defaults(command=_check)
 
+    audit = commands.add_parser("audit", help="size on the data of a case what could fake its result, without sampling")
+    audit.add_argument("case", type=Path, metavar="CASE", help="case file (TOML)")
+    words = "also write the findings (.json)"
+    audit.add_argument("--out", type=_json_file, metavar="FILE", help=words)
+    audit.set_defaults(command=_audit)
+
     simulate = commands.add_parser("simulate", help="make fixes with known truth")
     simulate.add_argument("recipe", type=Path, metavar="RECIPE", help="recipe file (TOML)")
     simulate.add_argument("--out", type=_fixes_file, metavar="FILE", required=True, help=f"fixes to write ({ENDINGS})")
@@ -120,6 +126,12 @@ def _version() -> str:
 def _fixes_file(text: str) -> Path:
     if not text.lower().endswith(tuple(ENDINGS.split(", "))):
         raise argparse.ArgumentTypeError(f"got {text!r}; must end in one of {ENDINGS}")
+    return Path(text)
+
+
+def _json_file(text: str) -> Path:
+    if not text.lower().endswith(".json"):
+        raise argparse.ArgumentTypeError(f"got {text!r}; must end in .json")
     return Path(text)
 
 
@@ -221,6 +233,20 @@ def _check(chosen: argparse.Namespace) -> int:
     with _Watch("reading fixes"):
         survey = check(case)
     _tell(survey.summary())
+    return DONE
+
+
+def _audit(chosen: argparse.Namespace) -> int:
+    from regimes.cases import load_case
+    from regimes.pipeline import audit_case
+    from regimes.report import findings_text, write_findings
+
+    case = load_case(chosen.case)
+    with _Watch() as report:
+        found = audit_case(case, report)
+    _tell(findings_text(found))
+    if chosen.out is not None:
+        _tell(f"findings: {_short(write_findings(found, chosen.out))}")
     return DONE
 
 

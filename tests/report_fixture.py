@@ -24,6 +24,7 @@ from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.synthetic.particles import Motion, drifting_particles
 from regimes.theory.kernel import Kernel
 from regimes.verdict import record as vr
+from regimes.verdict.finding import THREATS, Finding
 from regimes.verdict.rule import called, stretches
 from tests.other_curves_fixture import demo_others
 
@@ -234,7 +235,20 @@ def demo_analysis(n_pair: int = 60) -> Analysis:
         single_missing="",
         ratios=_RATIOS,
         others=demo_others(tracks, pairs, passed),
+        audit=demo_audit(),
     )
+
+
+def demo_audit() -> tuple[Finding, ...]:
+    """One finding for each threat; two of them flagged, one of which changes the verdict."""
+    shown = {"oscillation": (True, 3.1, False), "range": (True, 0.6, True), "pairs": (False, np.nan, False)}
+    found = []
+    for threat in THREATS:
+        flag, size, changes = shown.get(threat, (False, 0.2, False))
+        where = (2 * KM, 9 * KM) if flag else None
+        text = f"What {threat} does here is said in one or two sentences. The verdict is looked at again."
+        found.append(Finding(threat, flag, size, "size in some unit", where, changes, text))
+    return tuple(found)
 
 
 def _single() -> SingleParticle:

@@ -1,46 +1,5 @@
-"""One threat to a verdict, sized on the data at hand."""
+"""One threat to a verdict, sized on the data at hand: the record that every module of the audit returns."""
 
-from dataclasses import dataclass
+from regimes.verdict.finding import THREATS, Finding
 
-THREATS = (
-    "position_error",
-    "sampling_interval",
-    "oscillation",
-    "shear",
-    "pairs",
-    "independence",
-    "record_ends",
-    "range",
-    "convergence",
-)
-
-
-@dataclass(frozen=True, slots=True)
-class Finding:
-    """What one threat does to this data set.
-
-    Parameters
-    ----------
-    threat : str
-        One of `THREATS`.
-    flag : bool
-        Whether the effect is larger than a clean survey of this size shows.
-    size : float
-        How large; `measure` says of what. NaN where it could not be measured.
-    measure : str
-        What `size` is, with its unit.
-    separations : (float, float) or None [m]
-        Where the threat acts; None where it does not act at separations of its own, or nowhere.
-    verdict_changes : bool
-        Whether the verdict is another one once the threat is removed or allowed for.
-    text : str
-        What it is, how large here, whether the verdict changes, what to do: whole sentences for the report.
-    """
-
-    threat: str
-    flag: bool
-    size: float
-    measure: str
-    separations: tuple[float, float] | None
-    verdict_changes: bool
-    text: str
+__all__ = ["THREATS", "Finding"]

@@ -7,7 +7,7 @@ import numpy as np
 
 from regimes.compare.ranks import CurveRank
 from regimes.compare.record import Comparison, Input
-from regimes.report.verdict_json import plain
+from regimes.report.plain import plain
 from regimes.units import DAY, KM
 
 SCHEMA = 1

@@ -2,7 +2,7 @@
 
 from regimes.fitting.options import Options, SingleOptions
 from regimes.fitting.quick import QuickFit, quick_fit
-from regimes.pipeline.run import analyse, analyse_pairs
+from regimes.pipeline.run import analyse, analyse_pairs, audit_case
 from regimes.pipeline.singles import analyse_singles
 from regimes.pipeline.survey import Survey, check
 
@@ -14,6 +14,7 @@ __all__ = [
     "analyse",
     "analyse_pairs",
     "analyse_singles",
+    "audit_case",
     "check",
     "quick_fit",
 ]

@@ -1,5 +1,7 @@
 """From fits to the analysis: numbers, decision, words, bands."""
 
+from dataclasses import replace
+
 import numpy as np
 
 from regimes.analysis import Analysis, Bands, Provenance
@@ -26,17 +28,17 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits, beside) ->
     """The analysis from its parts.
 
     `fits` is (leading, second or None, why there is no second, pairs from passage, (joint or None, why there is none)),
-    `beside` (what `single_side` gives, what `other_curves` gives).
+    `beside` (what `single_side` gives, what `other_curves` gives, the findings of the audit).
     """
     leading, second, missing, moved, (joint, no_joint) = fits
     rng = np.random.default_rng(options.seed)
     others = {name: fit for name, fit in (("separation", second), ("joint", joint)) if fit is not None}
     slopes = quoted_slopes(rates, leading, others, options, rng)
-    evidence = _evidence(tracks, rates, (leading, second, missing), slopes, options.seed)
+    (single, missing_single), seen, audit = beside
+    evidence = replace(_evidence(tracks, rates, (leading, second, missing), slopes, options.seed), audit=audit)
     record = provenance(tracks, pairs, options.seed)
     passage = dispersion_of(tracks, moved)
     spread = bands(leading, rates, rng)
-    (single, missing_single), seen = beside
     extra = dissents(seen) + joint_cautions(joint, no_joint)
     verdict = _verdict(evidence, rates, _facts(record, rates, options), extra)
     radius = options.single.deformation_radius
@@ -54,6 +56,7 @@ def put_together(tracks, pairs, options: Options, rates: Rates, fits, beside) ->
         single_missing=missing_single,
         ratios=cross_checks(single, tracks, pairs, verdict.transitions, radius),
         others=seen,
+        audit=audit,
     )
 
 

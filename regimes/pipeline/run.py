@@ -4,7 +4,9 @@ from collections.abc import Callable
 from dataclasses import replace
 
 from regimes.analysis import Analysis, SinglesOnly
+from regimes.audit import audit, subject_of
 from regimes.cases import Case
+from regimes.errors import DataError
 from regimes.fitting.options import Options, SingleOptions
 from regimes.fitting.rates import exit_rates
 from regimes.inference.fit import exit_rate_space, infer, screen_exit_rates
@@ -18,6 +20,7 @@ from regimes.pipeline.other_curves import other_curves
 from regimes.pipeline.singles import analyse_singles, single_side
 from regimes.pipeline.survey import pairs_of, read_tracks
 from regimes.tracks import Tracks
+from regimes.verdict.finding import Finding
 
 Progress = Callable[[str, int, int], None]
 
@@ -60,6 +63,35 @@ def analyse(
     return replace(found, provenance=of_case(found.provenance, case, fixes, tracks))
 
 
+def audit_case(case: Case, progress: Progress | None = None, seed: int | None = None) -> tuple[Finding, ...]:
+    """What could fake the result of a case: the audit alone, on the fit by quadrature, without sampling.
+
+    Parameters
+    ----------
+    case : Case
+    progress : callable, optional
+        Called with (stage, done, total).
+    seed : int, optional
+        In place of the case's own.
+
+    Returns
+    -------
+    tuple of Finding
+
+    Raises
+    ------
+    CaseError
+    DataError
+        Also if there is no pair.
+    """
+    options = _options(case, case.seed if seed is None else seed, 1)
+    _, tracks = read_tracks(case)
+    pairs, no_pair = pairs_of(case, tracks)
+    if pairs is None:
+        raise DataError(no_pair)
+    return audit(subject_of(tracks, pairs, options), progress)
+
+
 def analyse_pairs(
     tracks: Tracks, pairs: Pairs, options: Options | None = None, progress: Progress | None = None
 ) -> Analysis:
@@ -97,8 +129,9 @@ def analyse_pairs(
     second, missing, separation, moved = second_opinion(tracks, rates, (named, free), how)
     joint = joint_fit(rates, moved, separation, leading, (named, free), how)
     others = other_curves(tracks, pairs, rates, (leading, moved), options, progress)
+    findings = audit(subject_of(tracks, pairs, options), progress)
     fits = (leading, second, missing, moved, joint)
-    return put_together(tracks, pairs, options, rates, fits, (alone, others))
+    return put_together(tracks, pairs, options, rates, fits, (alone, others, findings))
 
 
 def _options(case: Case, seed: int, jobs: int) -> Options:

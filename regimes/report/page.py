@@ -3,6 +3,7 @@
 from typing import Any
 
 from regimes.analysis import Analysis
+from regimes.report.audit import audit_fact, audit_rows
 from regimes.report.convergence import compared_rows, convergence_rows, not_shown, opinion_rows
 from regimes.report.digits import count, fixed, probability, span
 from regimes.report.every_curve import agreement_fact, every_curve
@@ -62,6 +63,7 @@ def _content(analysis: Analysis, figures: dict[str, str]) -> dict[str, Any]:
         "challenge": fixed(CHALLENGE, 1),
         "figures": [figure for name, figure in drawn.items() if name not in (*OF_EVERY_CURVE, *OF_SINGLES)],
         "every": every_curve(analysis, drawn),
+        "audit": audit_rows(analysis),
         "single": single_content(analysis, drawn),
         "opinions": opinion_rows(analysis),
         "curves": [CURVES[name] for name in analysis.fits],
@@ -90,6 +92,7 @@ def _facts(analysis: Analysis) -> list[tuple[str, str, str]]:
         ("resolved separations", f"{span(*verdict.resolved)} km", limits),
         ("predictive check", f"p = {probability(verdict.fit_p_value)}", "of the exit rates"),
         agreement_fact(analysis.others),
+        audit_fact(analysis),
         ("convergence", "good" if verdict.healthy else "not good", "of the sampling"),
     ]
 

@@ -1,13 +1,12 @@
 """The verdict as a plain document for other programs; `verdict.schema.json` describes it."""
 
 import json
-import math
 from typing import Any
 
-import numpy as np
-
 from regimes.analysis import Analysis, Provenance, SinglesOnly
+from regimes.report.audit import audit_part
 from regimes.report.every_json import every_part
+from regimes.report.plain import plain
 from regimes.report.single_json import single_part, without_pairs
 from regimes.units import KM
 from regimes.verdict.record import BySeparation, Interval, Slope, TransitionScale, Verdict
@@ -30,7 +29,8 @@ def verdict_document(analysis: Analysis | SinglesOnly) -> dict[str, Any]:
         km; slopes and exponents as in the report.
     """
     said = without_pairs(analysis) if isinstance(analysis, SinglesOnly) else _said(analysis.verdict)
-    return plain(_header(analysis.provenance) | said | every_part(analysis) | single_part(analysis))
+    audited = {"audit": audit_part(analysis)}
+    return plain(_header(analysis.provenance) | said | every_part(analysis) | audited | single_part(analysis))
 
 
 def _header(origin: Provenance) -> dict[str, Any]:
@@ -76,29 +76,6 @@ def _said(verdict: Verdict) -> dict[str, Any]:
 def verdict_text(analysis: Analysis | SinglesOnly) -> str:
     """`verdict_document` as JSON text."""
     return json.dumps(verdict_document(analysis), indent=1, allow_nan=False, ensure_ascii=False) + "\n"
-
-
-def plain(value: Any) -> Any:
-    """The same in types that JSON knows; numbers that are not finite become None.
-
-    Raises
-    ------
-    TypeError
-        For a type that has no plain form.
-    """
-    if value is None or isinstance(value, str):
-        return value
-    if isinstance(value, bool | np.bool_):
-        return bool(value)
-    if isinstance(value, int | np.integer):
-        return int(value)
-    if isinstance(value, float | np.floating):
-        return float(f"{value:.6g}") if math.isfinite(value) else None
-    if isinstance(value, dict):
-        return {key: plain(item) for key, item in value.items()}
-    if isinstance(value, list | tuple | np.ndarray):
-        return [plain(item) for item in value]
-    raise TypeError(f"verdict document: got a {type(value).__name__}; must be made of plain types")
 
 
 def _by_separation(by: BySeparation) -> dict[str, Any]:

@@ -8,6 +8,7 @@ from regimes.inference.record import Inference
 from regimes.theory.regimes import REGIMES
 from regimes.units import KM
 from regimes.verdict.digits import bayes_factor, km, listed, p_value, percent, rounded_down
+from regimes.verdict.finding import THREAT_WORDS, Finding
 from regimes.verdict.record import BySeparation, Caution, Slope
 from regimes.verdict.rule import CHALLENGE, PROBABLE, SPAN, Stretch, called, stretches
 
@@ -43,6 +44,8 @@ class Evidence:
         Why there is no second opinion; empty otherwise.
     releases_differ : bool
         Whether the scores of a cluster go together across separations, beyond chance.
+    audit : tuple of Finding
+        What could fake the result.
     """
 
     exit_rate: Inference
@@ -58,6 +61,7 @@ class Evidence:
     zero_fraction: float
     second_missing: str
     releases_differ: bool = False
+    audit: tuple[Finding, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,7 +102,7 @@ def decide(evidence: Evidence) -> Decision:
                 ", and under the kernels with free exponents too: the curve is not a power law in two or three pieces"
             )
         return Decision("none_fits", (text,), (), cautions)
-    stops = [*against]
+    stops = [*against, *_unsafe(evidence.audit)]
     if evidence.within_release:
         stops.append(
             f"only {rounded_down(evidence.clusters, 1)} independent clusters: how much releases differ from one "
@@ -125,6 +129,15 @@ def contradictions(found, second: BySeparation | None) -> list[str]:
                 f"{km(stretch.high)} km and the distribution of separations contradicts it there"
             )
     return said
+
+
+def _unsafe(audit: tuple[Finding, ...]) -> list[str]:
+    """Threats that are there and whose removal changes the verdict."""
+    return [
+        f"{THREAT_WORDS[f.threat]} may have made this result: the verdict is another one once it is allowed for (audit)"
+        for f in audit
+        if f.flag and f.verdict_changes
+    ]
 
 
 def _why_nothing(leading: BySeparation, mask) -> list[str]:
@@ -206,6 +219,13 @@ def _of_the_fits(evidence: Evidence, against: list[str]) -> list[Caution]:
     out += [Caution("second_opinion_differs", text[0].upper() + text[1:] + ".") for text in against]
     # The joint slope has the range of the separations' own: one caution will do.
     short = [s for s in evidence.slopes if s.kind == "estimate" and s.high / s.low < 10.0 and s.curve != "joint"]
+    out += [
+        Caution(
+            f"audit_{f.threat}", f"The audit raises a flag for {THREAT_WORDS[f.threat]}; its row says what it does."
+        )
+        for f in evidence.audit
+        if f.flag
+    ]
     out += [_short_range(s) for s in short]
     if evidence.exit_rate.challenge > np.log(3.0):
         out.append(
