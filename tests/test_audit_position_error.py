@@ -18,7 +18,7 @@ TRUE = 150.0  # m, in the surveys below
 
 @pytest.fixture(scope="module")
 def noisy():
-    return stated(audited(small(5, records={"position_error_m": TRUE})), 10.0)
+    return audited(small(5, records={"position_error_m": TRUE}), stated_error=10.0)
 
 
 def with_errors(tracks: Tracks, error: float, memory: float, seed: int = 3) -> Tracks:

@@ -1,0 +1,65 @@
+"""How often each row of the audit raises its flag: surveys with its contamination, and clean ones."""
+
+from dataclasses import dataclass
+
+import numpy as np
+import pytest
+
+from regimes.audit.oscillation import oscillation
+from regimes.audit.position_error import position_error
+from regimes.audit.sampling_interval import sampling_interval
+from regimes.audit.subject import verdict_changes
+from regimes.errors import DataError
+from regimes.units import HOUR
+from tests.audit_worlds import audited, recipe
+from tests.worlds import in_parallel
+
+SEEDS = range(1000, 1040)
+ROWS = {"position_error": position_error, "sampling_interval": sampling_interval, "oscillation": oscillation}
+# Changes for recipe(), keyword arguments of audited(): the strength at which the verdict flips in most.
+RECIPES = {
+    "position_error": ({"records": {"position_error_m": 800.0}}, {"stated_error": 10.0}),
+    "sampling_interval": ({"records": {"fix_interval_h": 24.0}}, {"step": 24 * HOUR}),
+    "oscillation": ({"oscillation": {"speed_m_s": 0.2}}, {}),
+}
+pytestmark = [pytest.mark.slow, pytest.mark.calibration]
+
+
+@dataclass(frozen=True, slots=True)
+class Trial:
+    """Flags of one seed, whether the verdict differs between its two surveys, and what the row itself says of that."""
+
+    contaminated: bool
+    clean: bool
+    flips: bool
+    told: bool
+
+
+def trial(arguments) -> Trial | None:
+    """One seed of one threat; None where the contaminated survey resolves nothing."""
+    threat, seed = arguments
+    changes, how = RECIPES[threat]
+    before = audited(recipe(seed))
+    try:
+        after = audited(recipe(seed, **changes), **how)
+    except DataError:
+        return None
+    one, two = (ROWS[threat](subject) for subject in (after, before))
+    return Trial(one.flag, two.flag, verdict_changes(before.fit, after.fit), one.verdict_changes)
+
+
+@pytest.mark.parametrize("threat", RECIPES)
+def test_flags_are_raised_where_they_should_be(threat):
+    """Bars: 95 % of contaminated surveys and 5 % of clean ones, within two binomial standard errors."""
+    found = [t for t in in_parallel(trial, [(threat, seed) for seed in SEEDS]) if t is not None]
+    n = len(found)
+    share = {name: float(np.mean([getattr(t, name) for t in found])) for name in Trial.__slots__}
+    text = (
+        f"{threat}: flagged {share['contaminated']:.0%} of contaminated ({RECIPES[threat][0]}), {share['clean']:.0%} "
+        f"of clean, verdict changed {share['flips']:.0%} (as the row tells it {share['told']:.0%}), {n} surveys of each"
+    )
+    print(text)
+    margin = 2.0 * np.sqrt(0.95 * 0.05 / n)
+    assert n >= 0.9 * len(SEEDS), text
+    assert share["contaminated"] >= 0.95 - margin, text
+    assert share["clean"] <= 0.05 + margin, text
