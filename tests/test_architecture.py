@@ -12,7 +12,7 @@ PACKAGE = ROOT / "regimes"
 
 # Rooms from first to last; a room imports only from rooms before it, or from its own modules.
 WALK = (
-    ("errors", "units", "arrays"),
+    ("errors", "units", "arrays", "interrupts"),
     ("cases",),
     ("fixes",),
     ("geodesy",),
@@ -26,7 +26,7 @@ WALK = (
     ("verdict",),
     ("analysis",),
     ("fitting",),
-    ("audit",),
+    ("audit", "plan"),
     ("report", "pipeline"),
     ("batch",),
     ("compare",),
@@ -40,8 +40,8 @@ ONLY = {
     "particles": GROUND | {"geodesy", "tracks", "pairs", "curves"},
     "synthetic": GROUND | {"cases", "fixes", "geodesy", "tracks", "pairs", "theory"},
 }
-# Rooms that simulate: the command line, and the checks and the audit, which repeat a data set.
-WITH_WORLDS = {"cli", "checks", "audit"}
+# Rooms that simulate: the command line, the checks and the audit, which repeat a data set, and plans of new ones.
+WITH_WORLDS = {"cli", "checks", "audit", "plan"}
 AT_THE_ROOT = {"pyproject.toml", "README.md", "DEVELOPERS.md", "LICENSE", "regimes", "tests", "cases", "reports"}
 
 

@@ -1,10 +1,7 @@
 """Runs side by side, each in a process of its own: one that fails or dies leaves the others alone."""
 
 import multiprocessing
-import signal
-import threading
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from multiprocessing import connection
 from multiprocessing.process import BaseProcess
@@ -13,6 +10,7 @@ from regimes.batch.earlier import kept
 from regimes.batch.outcome import Outcome
 from regimes.batch.task import Task
 from regimes.batch.worker import work
+from regimes.interrupts import deaf
 
 PATIENCE = 60.0  # s for a report that is being written when the runs are interrupted
 NOT_RUN = "interrupted before its report was written"
@@ -80,23 +78,10 @@ def _start(task: Task, threads: int) -> _Run:
     spawn = multiprocessing.get_context("spawn")  # a copy of a process with threads may hang
     receive, send = spawn.Pipe(duplex=False)
     process = spawn.Process(target=work, args=(task, threads, send), daemon=True)
-    with _deaf():
+    with deaf():
         process.start()
     send.close()
     return _Run(task, process, receive)
-
-
-@contextmanager
-def _deaf() -> Iterator[None]:
-    """Without Ctrl-C, which a process that is started meanwhile then does not hear either."""
-    if threading.current_thread() is not threading.main_thread():
-        yield
-        return
-    before = signal.signal(signal.SIGINT, signal.SIG_IGN)
-    try:
-        yield
-    finally:
-        signal.signal(signal.SIGINT, before)
 
 
 def _ended(run: _Run) -> Outcome:

@@ -2,6 +2,7 @@
 
 from regimes.fitting.options import Options, SingleOptions
 from regimes.fitting.quick import QuickFit, quick_fit
+from regimes.pipeline.planning import plan_survey
 from regimes.pipeline.run import analyse, analyse_pairs, audit_case
 from regimes.pipeline.singles import analyse_singles
 from regimes.pipeline.survey import Survey, check
@@ -16,5 +17,6 @@ __all__ = [
     "analyse_singles",
     "audit_case",
     "check",
+    "plan_survey",
     "quick_fit",
 ]

@@ -49,7 +49,7 @@ def analyse(
     ------
     CaseError, DataError, FitError
     """
-    options = _options(case, case.seed if seed is None else seed, jobs)
+    options = options_of(case, case.seed if seed is None else seed, jobs)
     if progress is not None:
         progress("reading fixes", 0, 1)
     fixes, tracks = read_tracks(case)
@@ -84,7 +84,7 @@ def audit_case(case: Case, progress: Progress | None = None, seed: int | None = 
     DataError
         Also if there is no pair.
     """
-    options = _options(case, case.seed if seed is None else seed, 1)
+    options = options_of(case, case.seed if seed is None else seed, 1)
     _, tracks = read_tracks(case)
     pairs, no_pair = pairs_of(case, tracks)
     if pairs is None:
@@ -134,7 +134,8 @@ def analyse_pairs(
     return put_together(tracks, pairs, options, rates, fits, (alone, others, findings))
 
 
-def _options(case: Case, seed: int, jobs: int) -> Options:
+def options_of(case: Case, seed: int, jobs: int) -> Options:
+    """The choices of a case."""
     alone = case.single
     return Options(
         ratio=case.curves.separation_ratio,
