@@ -84,7 +84,7 @@ def test_matching_by_start_separation(large):
     both = side_of("both", tracks, find_pairs(tracks, max_separation=4 * KM))[0]
     observed = some(wide, np.arange(8))
     plan = plan_of(observed, both, Near(), 1)
-    assert {len(np.unique(c.launch)) for c in plan.choices} == {60}
+    assert {c.distinct.size for c in plan.choices} == {60}
     assert plan.effective == pytest.approx(60, rel=0.15)  # Monte Carlo of 1600 draws
     assert plan.cautions == ()
     for seed in range(3):
@@ -121,7 +121,7 @@ def test_season_chooses_among_launches(large):
     plan = plan_of(observed, large, Near(season=2 * DAY), 1)
     begin = np.array([u.begin for u in plan.reservoir]) * large.tracks.step
     for launch, choices in zip(plan.launches, plan.choices, strict=True):
-        apart = np.abs(begin[np.unique(choices.launch)] - launch.begin * large.tracks.step)
+        apart = np.abs(begin[choices.distinct] - launch.begin * large.tracks.step)
         assert apart.max() <= 2 * DAY
     assert 40 < plan.effective < 60
 

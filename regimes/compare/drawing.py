@@ -14,18 +14,18 @@ def draw_launches(choices: tuple[Choices, ...], rng: np.random.Generator) -> np.
 
     Launches with the fewest choices go first; where they run out all the same, the draw starts again.
     """
-    order = np.argsort([c.n_launch for c in choices], kind="stable")
+    order = np.argsort([c.distinct.size for c in choices], kind="stable")
     for _ in range(_TRIES):
-        used: set[int] = set()
+        used = np.zeros(1 + max(int(c.distinct[-1]) for c in choices), bool)
         out = np.full(len(choices), -1)
         for i in order:
             c = choices[i]
-            free = np.setdiff1d(c.launch, list(used))
+            free = np.flatnonzero(~used[c.distinct])
             if free.size == 0:
                 break
-            launch = int(rng.choice(free))
-            used.add(launch)
-            out[i] = rng.choice(np.flatnonzero(c.launch == launch))
+            which = free[rng.integers(free.size)]
+            used[c.distinct[which]] = True
+            out[i] = rng.integers(c.start[which], c.start[which + 1])
         if np.all(out >= 0):
             return out
     raise DataError(

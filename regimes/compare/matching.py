@@ -24,21 +24,29 @@ class Choices:
     Parameters
     ----------
     launch : (n,) int array
-        Of the larger set, each once or more.
+        Of the larger set, each once or more, in order.
     members : (n, k) int array
         Its members in the order of those they stand for.
     factor : float
         Largest ratio of start separations.
+    distinct : (d,) int array
+        The launches, each once.
+    start : (d + 1,) int array
+        Launch i of `distinct` has the rows ``start[i]:start[i + 1]``.
     """
 
     launch: np.ndarray
     members: np.ndarray
     factor: float
+    distinct: np.ndarray
+    start: np.ndarray
 
-    @property
-    def n_launch(self) -> int:
-        """Number of different launches."""
-        return len(np.unique(self.launch))
+    @classmethod
+    def of(cls, launch: np.ndarray, members: np.ndarray, factor: float) -> "Choices":
+        """From launches in any order."""
+        order = np.argsort(launch, kind="stable")
+        distinct, first = np.unique(launch[order], return_index=True)
+        return cls(launch[order], members[order], factor, distinct, np.append(first, launch.size))
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,13 +106,13 @@ def _choices(launch: Launch, tables, allowed: np.ndarray, rng: np.random.Generat
         ways.append(way[how])
         misses.append(miss[which, how])
     if not found:
-        return Choices(np.empty(0, int), np.empty((0, k), int), np.inf)
+        return Choices.of(np.empty(0, int), np.empty((0, k), int), np.inf)
     launches, members, miss = np.concatenate(found), np.concatenate(ways), np.concatenate(misses)
     best = np.full(allowed.size, np.inf)
     np.minimum.at(best, launches, miss)
     limit = max(np.log(FACTOR), float(np.sort(best)[min(LEAST, int(np.sum(np.isfinite(best)))) - 1]))
     keep = miss <= limit + 1e-9
-    return Choices(launches[keep], members[keep], float(np.exp(miss[keep].max())))
+    return Choices.of(launches[keep], members[keep], float(np.exp(miss[keep].max())))
 
 
 def _ways(m: int, k: int, rng: np.random.Generator) -> np.ndarray:
