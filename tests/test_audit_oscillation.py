@@ -6,10 +6,11 @@ import numpy as np
 import pytest
 
 from regimes.audit import Finding
-from regimes.audit.band_stop import oscillating_part
+from regimes.audit.band_stop import oscillating_part, without_oscillation
 from regimes.audit.lines import TIDES, lines
 from regimes.audit.oscillation import oscillation
 from regimes.audit.rotary import inertial_frequency, windows
+from regimes.audit.vectors import separation_vectors
 from regimes.geodesy import to_cartesian
 from regimes.units import DAY, HOUR
 from tests.audit_small import clean, odd, on_plane, small
@@ -112,6 +113,18 @@ def test_inertial_waves_are_flagged_named_and_placed(waves):
     strongest = max(lines(waves.tracks, waves.pairs), key=lambda line: line.excess)
     assert strongest.name == "inertial"
     assert strongest.high < 64e3  # waves of 10 km differ most within some wavelengths
+
+
+def test_tracks_and_separations_lose_the_same():
+    """Two routes: with no gaps in the tracks of a pair, the fit is linear, so that both leave the same separation."""
+    content = small(5, records={"gap_probability": 0.0})
+    subject = audited(on_plane(content))
+    vectors = separation_vectors(subject.tracks, subject.pairs)
+    part = oscillating_part(vectors.place, vectors.offset[:-1], HOUR, 23 * HOUR)
+    tracks = without_oscillation(subject.tracks, 23 * HOUR)
+    left = separation_vectors(tracks, subject.pairs).place
+    expected = vectors.place - part + part[vectors.offset[:-1]][vectors.pair]
+    np.testing.assert_allclose(left, expected, atol=1e-3)  # round-off of positions of 1e6 m
 
 
 def test_waves_of_a_tide_are_told_as_a_tide():

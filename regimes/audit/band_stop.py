@@ -1,7 +1,11 @@
 """Oscillations of one period fitted sample by sample, so that they can be taken away."""
 
+from dataclasses import replace
+
 import numpy as np
 from scipy.signal import oaconvolve
+
+from regimes.tracks import Tracks
 
 HALF_WIDTH = 1.5  # periods on each side of a sample
 _LEAST = 0.4  # share of the weights that must lie on known samples; an end has one half
@@ -59,6 +63,20 @@ def oscillating_part(values: np.ndarray, first: np.ndarray, step: float, period:
         good = np.linalg.cond(normal) < 1e8 if rows.size else np.zeros(0, bool)
         out[rows[good]] = np.linalg.solve(normal[good], right[rows[good]])[:, 3]
     return out
+
+
+def without_oscillation(tracks: Tracks, period: float) -> Tracks:
+    """Tracks without their oscillating part, each starting where it did; for more pairs than vectors fit in memory.
+
+    Less exact than the same with separation vectors beside gaps, where two tracks are fitted from different samples.
+    """
+    part = oscillating_part(tracks.position, tracks.offset[:-1], tracks.step, period)
+    return replace(tracks, position=tracks.position - moved(part, tracks.offset))
+
+
+def moved(part: np.ndarray, offset: np.ndarray) -> np.ndarray:
+    """How far the part has moved each series since its first row."""
+    return part - np.repeat(np.nan_to_num(part[offset[:-1]]), np.diff(offset), axis=0)
 
 
 def _sums(values: np.ndarray, kernel: np.ndarray) -> np.ndarray:

@@ -4,16 +4,18 @@ from dataclasses import replace
 
 import numpy as np
 
-from regimes.audit.band_stop import oscillating_part
+from regimes.audit.band_stop import moved, oscillating_part, without_oscillation
 from regimes.audit.lines import FINEST, Line, lines
 from regimes.audit.record import Finding
 from regimes.audit.subject import Subject, verdict_changes
 from regimes.audit.vectors import Vectors, as_pairs, separation_vectors
 from regimes.audit.words import length, upheld
 from regimes.fitting.quick import QuickFit
+from regimes.pairs import Pairs
 from regimes.units import DAY, HOUR
 
 _NEAR = 2.0 / 3.0  # share of the exponent that an oscillation can feign, from which one is suspect
+_MOST_SAMPLES = 4_000_000  # of separation vectors
 
 
 def oscillation(subject: Subject) -> Finding:
@@ -51,9 +53,14 @@ def oscillation(subject: Subject) -> Finding:
         text = f"{why} The verdict is not tested against them."
         return Finding("oscillation", False, float("nan"), measure, None, False, text)
     target = strongest if clear else found[0]  # the inertial line stands first
-    vectors = separation_vectors(subject.tracks, subject.pairs)
+    some = _some(subject.pairs)
+    vectors = separation_vectors(subject.tracks, some)
     part = oscillating_part(vectors.place, vectors.offset[:-1], subject.tracks.step, target.period)
-    after = subject.refit(*_without(subject, vectors, part))
+    if some.n_pair == subject.pairs.n_pair:
+        left = replace(vectors, place=vectors.place - moved(part, vectors.offset))
+        after = subject.refit(*as_pairs(subject.tracks, subject.pairs, left))
+    else:
+        after = subject.refit(without_oscillation(subject.tracks, target.period))
     changes = verdict_changes(subject.fit, after)
     reach = _reach(clear, strongest, subject)
     text = " ".join(
@@ -67,10 +74,10 @@ def oscillation(subject: Subject) -> Finding:
     return Finding("oscillation", bool(clear), strongest.excess, measure, reach, changes, text)
 
 
-def _without(subject: Subject, vectors: Vectors, part: np.ndarray):
-    """Tracks and pairs without a part of their separations, started where they did."""
-    begin = np.nan_to_num(part[vectors.offset[:-1]])[vectors.pair]
-    return as_pairs(subject.tracks, subject.pairs, replace(vectors, place=vectors.place - (part - begin)))
+def _some(pairs: Pairs) -> Pairs:
+    """All pairs, or every so many where their samples are too many."""
+    every = -(-int(np.sum(pairs.length)) // _MOST_SAMPLES)
+    return pairs if every <= 1 else pairs.select(np.arange(0, pairs.n_pair, every))
 
 
 def _reach(clear: list[Line], strongest: Line, subject: Subject) -> tuple[float, float] | None:

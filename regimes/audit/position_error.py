@@ -1,8 +1,10 @@
 """Errors of position: larger than stated, and what they do to small separations."""
 
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
+from scipy.signal import lfilter
 
 from regimes.audit.error_estimate import ErrorEstimate, estimate_error
 from regimes.audit.record import Finding
@@ -69,10 +71,9 @@ def _noisier(tracks: Tracks, error: float, memory: float, seed: int) -> Tracks:
     noise = rng.standard_normal(tracks.position.shape)
     if memory > 0:
         kept = np.exp(-tracks.step / memory)
-        begins = np.zeros(len(noise), bool)
-        begins[tracks.offset[:-1]] = True
-        for i in np.flatnonzero(~begins):
-            noise[i] = kept * noise[i - 1] + np.sqrt(1.0 - kept**2) * noise[i]
+        for a, b in pairwise(tracks.offset):
+            noise[a + 1 : b] *= np.sqrt(1.0 - kept**2)
+            noise[a:b] = lfilter([1.0], [1.0, -kept], noise[a:b], axis=0)
     if tracks.planar:
         noise[:, 2] = 0.0
     else:
