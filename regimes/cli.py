@@ -89,6 +89,13 @@ def _parser() -> argparse.ArgumentParser:
     audit.add_argument("--out", type=_json_file, metavar="FILE", help=words)
     audit.set_defaults(command=_audit)
 
+    plan = commands.add_parser("plan", help="simulate the designs of a plan and find the smallest that reaches its aim")
+    plan.add_argument("case", type=Path, metavar="CASE", help="case file (TOML) with a section [plan]")
+    plan.add_argument("--out", type=Path, metavar="DIR", help="folder of the plan (default: reports/NAME-plan)")
+    words = "processes (default: one for each core)"
+    plan.add_argument("--jobs", type=partial(_whole, least=1), metavar="N", help=words)
+    plan.set_defaults(command=_plan)
+
     simulate = commands.add_parser("simulate", help="make fixes with known truth")
     simulate.add_argument("recipe", type=Path, metavar="RECIPE", help="recipe file (TOML)")
     simulate.add_argument("--out", type=_fixes_file, metavar="FILE", required=True, help=f"fixes to write ({ENDINGS})")
@@ -247,6 +254,35 @@ def _audit(chosen: argparse.Namespace) -> int:
     _tell(findings_text(found))
     if chosen.out is not None:
         _tell(f"findings: {_short(write_findings(found, chosen.out))}")
+    return DONE
+
+
+def _plan(chosen: argparse.Namespace) -> int:
+    from regimes.cases import load_plan
+    from regimes.pipeline import plan_survey
+    from regimes.report import check_plan_folder, plan_sentence, write_plan
+
+    planned, case = load_plan(chosen.case)
+    folder = default_folder(chosen.case, planned.name)
+    folder = check_plan_folder(chosen.out or folder.with_name(f"{folder.name}-plan"))
+    count = [0, 0]
+    with _Watch(at_once=False) as report:
+
+        def told(stage: str, done: int, total: int) -> None:
+            count[:] = done, total
+            if report is not None:
+                report(stage, done, total)
+
+        try:
+            plan = plan_survey(planned, case, folder, chosen.jobs or os.cpu_count() or 1, told)
+        except KeyboardInterrupt:
+            words = "{} of {} campaigns are kept; the same command goes on from there".format(*count)
+            return _say(f"interrupted; {words}", INTERRUPTED)
+    page = write_plan(plan, folder)
+    if plan.kept:
+        _tell(f"{plan.kept} campaigns were there already")
+    _tell(plan_sentence(plan))
+    _tell(f"plan: {_short(page)}")
     return DONE
 
 

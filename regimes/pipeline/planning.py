@@ -10,11 +10,21 @@ from regimes.pipeline.origin import case_sha256, versions
 from regimes.pipeline.run import Progress as Told
 from regimes.pipeline.run import options_of
 from regimes.pipeline.survey import pairs_of, read_tracks
-from regimes.plan import Plan, Progress, drawn_truth, given_truth, points_of, progress_key, simulate_plan, target_of
+from regimes.plan import (
+    FILE,
+    Plan,
+    Progress,
+    drawn_truth,
+    given_truth,
+    points_of,
+    progress_key,
+    simulate_plan,
+    target_of,
+)
 
 
 def plan_survey(
-    planned: Planned, case: Case | None, kept: Path | None = None, jobs: int = 1, told: Told | None = None
+    planned: Planned, case: Case | None, folder: Path | None = None, jobs: int = 1, told: Told | None = None
 ) -> Plan:
     """Simulate the campaigns of a plan and tell which design reaches its aim.
 
@@ -23,8 +33,8 @@ def plan_survey(
     planned : Planned
     case : Case or None
         Whose data the kernel is drawn from; None where the plan has one.
-    kept : Path, optional
-        File of finished campaigns, which an interrupted plan goes on from.
+    folder : Path, optional
+        Where finished campaigns are kept, for an interrupted plan to go on from.
     jobs : int
         Processes.
     told : callable, optional
@@ -53,7 +63,7 @@ def plan_survey(
         data, choices = sha256_of(Path(case.observations.path)), case_sha256(case)
         truth = drawn_truth(_fit(case), target, planned.seed)
     key = progress_key(planned, {"versions": versions(), "input": data, "case": choices})
-    progress = Progress(kept, key)
+    progress = Progress(None if folder is None else folder / FILE, key)
     before = sum(progress.find(p.key, i) is not None for p in points_of(plan) for i in range(plan.campaigns))
     summaries = simulate_plan(planned, truth, progress, jobs, told)
     return Plan(planned, target, versions(), data, choices, truth.probability, summaries, before)

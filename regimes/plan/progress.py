@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from regimes.cases import Planned
+from regimes.errors import CaseError
 from regimes.plan.judge import Judged
 
 FILE = "plan-progress.json"
@@ -44,14 +45,27 @@ class Progress:
         self._done.setdefault(point, {})[str(number)] = campaign
 
     def save(self) -> None:
-        """Write the file, complete or not at all."""
+        """Write the file, complete or not at all.
+
+        Raises
+        ------
+        CaseError
+            If it cannot be written.
+        """
         if self.path is None:
             return
         campaigns = {p: {n: _plain(c) for n, c in sorted(done.items())} for p, done in sorted(self._done.items())}
         content = {"schema": 1, "key": self.key, "campaigns": campaigns}
         part = self.path.with_name(f".{self.path.name}")
-        part.write_text(json.dumps(content, allow_nan=False), encoding="utf-8")
-        os.replace(part, self.path)
+        try:
+            self.path.parent.mkdir(parents=True, exist_ok=True)
+            part.write_text(json.dumps(content, allow_nan=False), encoding="utf-8")
+            os.replace(part, self.path)
+        except OSError as error:
+            raise CaseError(
+                f"progress of the plan: got {self.path}, which cannot be written ({error.strerror or error}); must be "
+                "in a folder where files may be created; choose another"
+            ) from error
 
 
 def progress_key(planned: Planned, source: dict[str, Any]) -> str:
