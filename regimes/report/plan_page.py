@@ -5,7 +5,7 @@ from typing import Any
 
 from regimes.plan import Plan, Summary
 from regimes.plan.summary import Mean, Share
-from regimes.report.digits import decimals, fixed
+from regimes.report.digits import fixed
 from regimes.report.plan_words import aim_words, design_words, kernel_words, percents, plan_sentence
 from regimes.report.render import inline, render
 from regimes.units import HOUR, KM
@@ -91,8 +91,7 @@ def _share(share: Share) -> str:
 def _mean(mean: Mean) -> str:
     if math.isnan(mean.value):
         return "none"
-    places = decimals(mean.error) if mean.error > 0 else 2
-    return f"{fixed(mean.value, places)} ± {fixed(mean.error, places)}"
+    return f"{fixed(mean.value, 2)} ± {fixed(mean.error, 2)}"
 
 
 def _ratio(mean: Mean) -> str:

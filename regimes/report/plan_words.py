@@ -70,4 +70,4 @@ def kernel_words(plan: Plan) -> str:
     text = names[0]
     for at, name in zip(rules.transitions_km, names[1:], strict=True):
         text += f" to {at:g} km, then {name}"
-    return f"{text}; 2 K / r^{{2}} = {rules.rate_per_d:g} per day at {rules.reference_km:g} km"
+    return f"{text}; 2 K / r² = {rules.rate_per_d:g} per day at {rules.reference_km:g} km"

@@ -27,6 +27,7 @@ from regimes.units import HOUR, KM
 
 _LOOKS = tuple(zip((BLUE, VERMILION, GREEN, ORANGE, PURPLE, SKY, BLACK), "osD^vP*", strict=True))
 _APART = 0.02  # ln of the factor by which lines of different intervals are shifted, so that bars stay apart
+_MOST_TICKS = 7
 
 Values = Callable[[Summary], tuple[float, float, float]]
 
@@ -52,11 +53,11 @@ def _shares(plan: Plan, name: str, words: str) -> Axes:
     if name == "told":
         ax.axhline(plan.target.probability, color=GREY, lw=1.2, ls=(0, (4, 2)), zorder=1)
         ax.annotate(
-            "aim", (1.0, plan.target.probability), xycoords=("axes fraction", "data"), xytext=(-2, -3),
-            textcoords="offset points", ha="right", va="top", fontsize=9.5, color=INK,
+            "aim", (0.0, plan.target.probability), xycoords=("axes fraction", "data"), xytext=(3, -3),
+            textcoords="offset points", ha="left", va="top", fontsize=9.5, color=INK,
         )  # fmt: skip
     ax.set_ylim(-0.03, 1.03)
-    return _finished(ax, words)
+    return _finished(ax, plan, words)
 
 
 def _plain(plan: Plan, values: Values, words: str, log: bool = False) -> Axes:
@@ -68,7 +69,7 @@ def _plain(plan: Plan, values: Values, words: str, log: bool = False) -> Axes:
         log_axis(ax.yaxis)
     else:
         ax.set_ylim(bottom=0.0)
-    return _finished(ax, words)
+    return _finished(ax, plan, words)
 
 
 def _resolved(plan: Plan) -> Axes:
@@ -79,7 +80,7 @@ def _resolved(plan: Plan) -> Axes:
     for end in (plan.target.low, plan.target.high):
         ax.axhline(end / KM, color=GREY, lw=1.2, ls=(0, (4, 2)), zorder=1)
     log_axis(ax.yaxis)
-    return _finished(ax, "resolved from, to (km)")
+    return _finished(ax, plan, "resolved from, to (km)")
 
 
 def _lines(ax: Axes, plan: Plan, values: Values, named: bool = True) -> None:
@@ -97,12 +98,14 @@ def _lines(ax: Axes, plan: Plan, values: Values, named: bool = True) -> None:
         )  # fmt: skip
 
 
-def _finished(ax: Axes, words: str) -> Axes:
+def _finished(ax: Axes, plan: Plan, words: str) -> Axes:
     ax.set_xscale("log")
-    low, high = ax.get_xlim()
-    if high < 4.0 * low:
-        ax.set_xlim(low / 1.5, high * 1.5)
+    releases = sorted({s.point.releases for s in plan.summaries})
+    ax.set_xlim(releases[0] / 1.3, releases[-1] * 1.3)
     log_axis(ax.xaxis)
+    if len(releases) <= _MOST_TICKS:
+        ax.set_xticks(releases, [str(n) for n in releases])
+        ax.set_xticks([], minor=True)
     ax.set_xlabel("releases")
     ax.set_ylabel(words)
     place = {"loc": "lower left", "bbox_to_anchor": (0.0, 1.0), "borderaxespad": 0.0}
