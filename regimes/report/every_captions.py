@@ -57,7 +57,7 @@ def _structure(analysis: Analysis) -> str:
     text = (
         "Mean squared relative velocity of pairs against separation, total and along and across the separation, with "
         "95 % cluster intervals of the logarithm; from differences over one and two steps, corrected for averaging "
-        "over them. Dashed, where errors were stated: what position errors add to the total. "
+        "over them. Dashed, if not far below: what position errors add to the total. "
     )
     if others.spectrum is not None:
         text += (

@@ -4,12 +4,10 @@ import numpy as np
 from matplotlib.axes import Axes
 
 from regimes.analysis import Analysis
-from regimes.curves import Curve, DispersionStatistics
+from regimes.report.figures.bars import errorbars, log_bars, seen
 from regimes.report.figures.style import COLOUR, GREEN, INK, LINE, VERMILION, figure_function, log_axis
 from regimes.units import DAY, KM
 
-LEAST_PAIRS = 5  # common practice, no source
-NORMAL95 = 1.96
 LAWS = {
     "richardson": (3.0, "Richardson $t^{3}$", "bottom"),
     "ballistic": (2.0, "ballistic $t^{2}$", "center"),
@@ -38,12 +36,11 @@ def plot_dispersion(analysis: Analysis, ax: Axes) -> Axes:
         (statistics.north(), "s", GREEN, "north", 1.03),
         (statistics.relative_dispersion(), "o", INK, "total, 95 %", 1.0),
     ):
-        x, y, low, high = _log_bars(statistics, curve)
-        style = {"ms": 4.2, "mfc": colour if marker == "o" else "white", "mec": colour}
-        ax.errorbar(
-            x * shift / DAY, y / KM**2, np.stack([y - low, high - y]) / KM**2, fmt=marker, color=colour,
-            elinewidth=0.9, label=label, **style,
-        )  # fmt: skip
+        show = seen(curve)
+        value = curve.value[show] / KM**2
+        bars = log_bars(value, curve.standard_error[show] / KM**2)
+        looks = {"marker": marker, "colour": colour, "mfc": colour if marker == "o" else "white", "label": label}
+        errorbars(ax, curve.axis[show] * shift / DAY, value, bars, looks)
     _finish(ax)
     _laws(ax)
     return ax
@@ -54,20 +51,6 @@ def _axes(ax: Axes, x: str, y: str) -> None:
     ax.set_yscale("log")
     ax.set_xlabel(x)
     ax.set_ylabel(y)
-
-
-def _enough(statistics: DispersionStatistics) -> np.ndarray:
-    """Times at which enough pairs are left to be worth a point (all, where there never were more)."""
-    pairs = statistics.weight @ statistics.count
-    return pairs >= min(LEAST_PAIRS, pairs.max())
-
-
-def _log_bars(statistics: DispersionStatistics, curve: Curve) -> tuple[np.ndarray, ...]:
-    """Axis, value and 95 % ends, from the error of the logarithm; no bar where there is no error."""
-    show = _enough(statistics) & np.isfinite(curve.value) & (curve.value > 0) & (curve.axis > 0)
-    value = curve.value[show]
-    factor = np.exp(NORMAL95 * np.nan_to_num(curve.standard_error[show]) / value)
-    return curve.axis[show], value, value / factor, value * factor
 
 
 def _finish(ax: Axes) -> None:

@@ -7,6 +7,7 @@ from regimes.analysis import Analysis, SinglesOnly
 from regimes.curves import Curve
 from regimes.particles import SingleParticle
 from regimes.particles.scales import Correlation
+from regimes.report.figures.bars import errorbars, log_bars, seen
 from regimes.report.figures.style import (
     BLUE,
     COLOUR,
@@ -21,9 +22,7 @@ from regimes.report.figures.style import (
 )
 from regimes.units import DAY, KM
 
-NORMAL95 = 1.96
 REACH = 3.0  # beyond the crossing of Taylor's limits, each is drawn over this factor in time
-LEAST_PARTICLES = 5  # common practice, no source
 
 
 @figure_function
@@ -98,10 +97,8 @@ def plot_absolute(analysis: Analysis | SinglesOnly, ax: Axes) -> Axes:
         (moved.total, "o", INK, "total, 95 %", 1.0),
     ):
         x, y, bars = _points(curve, last_shown(single))
-        ax.errorbar(
-            x * shift / DAY, y / KM**2, bars / KM**2, fmt=marker, color=colour, elinewidth=0.9, ms=4.2,
-            mfc=colour if marker == "o" else "white", mec=colour, label=label,
-        )  # fmt: skip
+        looks = {"marker": marker, "colour": colour, "mfc": colour if marker == "o" else "white", "label": label}
+        errorbars(ax, x * shift / DAY, y / KM**2, bars / KM**2, looks)
     time = moved.total.axis[(moved.total.axis > 0) & (moved.total.axis <= last_shown(single))]
     kappa, variance = single.diffusivity.mean.value, single.velocity.value**2
     if kappa > 0.0:
@@ -128,12 +125,9 @@ def last_shown(single: SingleParticle) -> float:
 
 def _points(curve: Curve, last: float) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Times, values and bars of the logarithm's 95 % interval; times that few particles reach are left out."""
-    seen = curve.weight @ curve.denominator
-    show = (seen >= min(LEAST_PARTICLES, seen.max())) & np.isfinite(curve.value) & (curve.value > 0)
-    show &= (curve.axis > 0) & (curve.axis <= last)
+    show = seen(curve) & (curve.axis <= last)
     value = curve.value[show]
-    factor = np.exp(NORMAL95 * np.nan_to_num(curve.standard_error[show]) / value)
-    return curve.axis[show], value, np.stack([value - value / factor, value * factor - value])
+    return curve.axis[show], value, log_bars(value, curve.standard_error[show])
 
 
 def _limit(ax: Axes, time: np.ndarray, limit, regime: str, words: str) -> None:

@@ -43,9 +43,9 @@ def plot_structure(analysis: Analysis, ax: Axes) -> Axes:
     ):
         looks = {"marker": marker, "colour": colour, "mfc": mfc, "label": label}
         shown.append(_points(ax, curve, seen(curve) & bins, shift, looks))
-    if structure.noise_floor() > 0:
-        ax.axhline(structure.noise_floor(), color=GREY, lw=1.0, ls=(0, (4, 2)), label="position errors", zorder=0)
     widen(ax, shown, headroom=0.15)
+    if structure.noise_floor() > ax.get_ylim()[0]:
+        ax.axhline(structure.noise_floor(), color=GREY, lw=1.0, ls=(0, (4, 2)), label="position errors", zorder=0)
     log_axis(ax.xaxis)
     log_axis(ax.yaxis)
     ax.legend(loc="upper left", borderaxespad=0.2, labelspacing=0.3)
