@@ -47,7 +47,7 @@ def p_values(arguments):
 
 
 def dissenting(n: int) -> tuple[dict[str, int], dict[str, int], int]:
-    """Of n clean surveys (random-Fourier flow, memory and all): dissents and checks of every curve, surveys with any."""
+    """Of n clean surveys (random-Fourier flow, with memory): dissents and checks of a curve, surveys with any."""
     found = in_parallel(p_values, [(survey_recipe(1000 + s), False) for s in range(n)])
     curves = sorted({name for one in found for name in one})
     dissents = {c: sum(one[c] < DISSENT for one in found if c in one) for c in curves}
