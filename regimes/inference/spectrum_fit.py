@@ -9,7 +9,7 @@ from regimes.curves.structure import StructureStatistics
 from regimes.inference.evidence import bridge
 from regimes.inference.health import Health, worst
 from regimes.inference.sampler import sample
-from regimes.inference.slope import classify
+from regimes.inference.slope import classify, judged
 from regimes.inference.spectrum_models import SpectrumModel, SpectrumPosterior, SpectrumSpace, make_space
 from regimes.inference.spectrum_range import constrained_wavenumbers, divergent_share
 from regimes.likelihood.structure import StructureLikelihood, structure_likelihood, usable_bins
@@ -109,10 +109,11 @@ class SpectrumFit:
             return f"no spectral slope: {self.reason}"
         low, _, middle, _, high = self.quantiles
         short, long = self.wavelengths / 1e3
+        between = judged(*self.wavelengths, self.alpha).draws  # of a bound: draws between the saturated ends
         value = {
             "estimate": f"spectral slope {middle:.2f} (95 %: {low:.2f} to {high:.2f})",
-            "lower_bound": f"spectral slope at least {np.quantile(self.alpha, 0.05):.2f} (95 %)",
-            "upper_bound": f"spectral slope at most {np.quantile(self.alpha, 0.95):.2f} (95 %)",
+            "lower_bound": f"spectral slope at least {np.quantile(between, 0.05):.2f} (95 %)",
+            "upper_bound": f"spectral slope at most {np.quantile(between, 0.95):.2f} (95 %)",
         }[self.kind]
         return f"{value} at wavelengths of {short:.3g} to {long:.3g} km"
 
