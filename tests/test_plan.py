@@ -502,9 +502,8 @@ def test_predicted_probability_is_that_of_fresh_campaigns(tmp_path):
             before, after = getattr(summary, name), share([getattr(f, name) for f in found])
             both = (100 * before.value + 200 * after.value) / 300
             error = max(np.sqrt(both * (1 - both) * (1 / 100 + 1 / 200)), 1 / 200)
-            print(
-                f"{n} releases, {name}: predicted {before}, fresh {after}, {(before.value - after.value) / error:.1f} se"
-            )
+            off = (before.value - after.value) / error
+            print(f"{n} releases, {name}: predicted {before}, fresh {after}, {off:.1f} standard errors")
             assert before.value == pytest.approx(after.value, abs=4 * error)
 
 
