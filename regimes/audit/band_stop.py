@@ -50,7 +50,7 @@ def oscillating_part(values: np.ndarray, first: np.ndarray, step: float, period:
     mask[place[known]] = 1.0
     filled = np.zeros((mask.size, values.shape[1]))
     filled[place[known]] = values[known]
-    # Convolution turns its kernel round: sums over x(t + s) need the kernel at -s.
+    # Convolution turns the lags round, which leaves the span of the basis, and so A, as they are.
     share = _sums(mask, weight)[place] / weight.sum()
     products = {(i, j): _sums(mask, weight * basis[i] * basis[j])[place] for i in range(5) for j in range(i + 1)}
     right = np.stack([_sums(filled, weight * row)[place] for row in basis], axis=1)
@@ -80,7 +80,6 @@ def moved(part: np.ndarray, offset: np.ndarray) -> np.ndarray:
 
 
 def _sums(values: np.ndarray, kernel: np.ndarray) -> np.ndarray:
-    turned = kernel[::-1]
     if values.ndim == 2:
-        return oaconvolve(values, turned[:, None], mode="same", axes=0)
-    return oaconvolve(values, turned, mode="same")
+        return oaconvolve(values, kernel[:, None], mode="same", axes=0)
+    return oaconvolve(values, kernel, mode="same")
