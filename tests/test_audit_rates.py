@@ -5,9 +5,12 @@ from dataclasses import dataclass
 import numpy as np
 import pytest
 
+from regimes.audit.convergence import convergence
 from regimes.audit.oscillation import oscillation
+from regimes.audit.pairs import pairs
 from regimes.audit.position_error import position_error
 from regimes.audit.sampling_interval import sampling_interval
+from regimes.audit.shear import shear
 from regimes.audit.subject import verdict_changes
 from regimes.errors import DataError
 from regimes.units import HOUR
@@ -15,12 +18,22 @@ from tests.audit_worlds import audited, recipe
 from tests.worlds import in_parallel
 
 SEEDS = range(1000, 1040)
-ROWS = {"position_error": position_error, "sampling_interval": sampling_interval, "oscillation": oscillation}
+ROWS = {
+    "position_error": position_error,
+    "sampling_interval": sampling_interval,
+    "oscillation": oscillation,
+    "shear": shear,
+    "pairs": pairs,
+    "convergence": convergence,
+}
 # Changes for recipe(), keyword arguments of audited(): the strength at which the verdict flips in most.
 RECIPES = {
     "position_error": ({"records": {"position_error_m": 800.0}}, {"stated_error": 10.0}),
     "sampling_interval": ({"records": {"fix_interval_h": 24.0}}, {"step": 24 * HOUR}),
     "oscillation": ({"oscillation": {"speed_m_s": 0.2}}, {}),
+    "shear": ({"shear": {"rate_per_d": 0.12}}, {}),
+    "pairs": ({"faults": {"grounded": 40}}, {}),
+    "convergence": ({"convergence": {"rate_per_d": 1.0, "lasts_d": 30.0}}, {}),
 }
 pytestmark = [pytest.mark.slow, pytest.mark.calibration]
 

@@ -7,7 +7,7 @@ import numpy as np
 from regimes.audit.areas import Areas, early_areas
 from regimes.audit.record import Finding
 from regimes.audit.subject import Subject, verdict_changes
-from regimes.audit.vectors import Vectors, as_pairs, separation_vectors
+from regimes.audit.vectors import Vectors, as_pairs, fewer, separation_vectors
 from regimes.audit.words import length, upheld
 from regimes.fitting.quick import QuickFit
 from regimes.inference.fit import exit_rate_space
@@ -21,6 +21,7 @@ LEVEL = 0.01  # one-sided p-value of areas that do not shrink
 _CLOSE = 0.5  # of the start separation
 _GROWN = 3.0  # times of growth by e over which pairs are watched for closing in
 _REPETITIONS = 20
+_MOST_SAMPLES = 50_000  # that are repeated
 
 
 def convergence(subject: Subject) -> Finding:
@@ -50,7 +51,7 @@ def convergence(subject: Subject) -> Finding:
     first = rates.likelihood
     growth = float(np.log(first.thresholds[1] / first.thresholds[0]) * first.exits[0] / first.risk[0])
     exponent = 0.5 * float(subject.fit.exponent_low[0] + subject.fit.exponent_high[0])
-    vectors = separation_vectors(subject.tracks, rates.pairs)
+    vectors = separation_vectors(subject.tracks, _beginnings(rates.pairs, growth * subject.tracks.step))
     found = early_areas(vectors, subject.tracks.step, growth, exponent, subject.tracks.position_error)
     flag = bool(found.p_value < LEVEL)
     before, after = _refits(subject, growth) if flag else (subject.fit, subject.fit)
@@ -61,6 +62,11 @@ def convergence(subject: Subject) -> Finding:
     return Finding(
         "convergence", flag, found.rate * DAY, "apparent divergence at the start, 1/day", acts, changes, text
     )
+
+
+def _beginnings(pairs: Pairs, growth: float) -> Pairs:
+    """The pairs for one time of growth by e at most; `growth` per step."""
+    return replace(pairs, length=np.minimum(pairs.length, max(3, round(1.0 / growth))))
 
 
 def _refits(subject: Subject, growth: float) -> tuple[QuickFit, QuickFit | None]:
@@ -101,7 +107,7 @@ def _closing(subject: Subject, growth: float) -> str:
     """The pairs that close in, beside what kernels of the fit predict."""
     tracks, fit = subject.tracks, subject.fit
     steps = max(2, round(_GROWN / (growth * tracks.step)))
-    short = replace(subject.pairs, length=np.minimum(subject.pairs.length, steps))
+    short = fewer(replace(subject.pairs, length=np.minimum(subject.pairs.length, steps)), _MOST_SAMPLES)
     vectors = separation_vectors(tracks, short)
     rng = np.random.default_rng(subject.options.seed)
     space = exit_rate_space(fit.rates.likelihood)

@@ -1,5 +1,7 @@
 """Pairs that are not what they should be: not drifting, launched with a velocity, or met by chance."""
 
+from dataclasses import replace
+
 import numpy as np
 
 from regimes.audit.record import Finding
@@ -45,7 +47,7 @@ def pairs(subject: Subject) -> Finding:
     found = suspects(
         subject.tracks, subject.pairs, vectors, rate * float(np.diff(np.log(fit.rates.likelihood.thresholds))[0])
     )
-    start, start_p = _start(subject, separation_vectors(subject.tracks, fit.rates.pairs))
+    start, start_p = _start(subject, _beginnings(subject))
     kinds = _kinds(subject)
     cleaned = _without(subject, found)
     launched = _launched(subject) if kinds is not None and kinds.p_value < LEVEL else fit
@@ -63,6 +65,11 @@ def pairs(subject: Subject) -> Finding:
     return Finding(
         "pairs", bool(flag), float(found.number), "particles aground or on board and pairs tied", None, changes, text
     )
+
+
+def _beginnings(subject: Subject) -> Vectors:
+    pairs = subject.fit.rates.pairs
+    return separation_vectors(subject.tracks, replace(pairs, length=np.minimum(pairs.length, 3)))
 
 
 def _growth(fit: QuickFit) -> float:

@@ -7,7 +7,7 @@ import numpy as np
 from regimes.audit.anisotropy import Alignment, alignment, fitted_shear, without_shear
 from regimes.audit.record import Finding
 from regimes.audit.subject import Subject, supported, verdict_changes
-from regimes.audit.vectors import Vectors, as_pairs, separation_vectors
+from regimes.audit.vectors import Vectors, as_pairs, fewer, separation_vectors
 from regimes.audit.words import length, upheld
 from regimes.fitting.quick import QuickFit
 from regimes.inference.fit import exit_rate_space
@@ -52,29 +52,28 @@ def shear(subject: Subject) -> Finding:
     """
     rates = subject.fit.rates
     low, high = subject.resolved
-    vectors = separation_vectors(subject.tracks, subject.pairs)
-    independent = vectors if rates.pairs is subject.pairs else separation_vectors(subject.tracks, rates.pairs)
+    some = fewer(subject.pairs)
+    vectors = separation_vectors(subject.tracks, some)
+    independent = separation_vectors(subject.tracks, fewer(rates.pairs)) if rates.within_release else vectors
     found = alignment(independent, low, high)
     rival = shear_evidence(rates.likelihood, exit_rate_space(rates.likelihood))
     factor = rival.log_evidence - max(post.log_evidence for post in subject.fit.named)
     aligned = bool(found.p_value < LEVEL)
     flag = aligned or bool(factor > CHALLENGE)
     fitted = fitted_shear(vectors, subject.tracks.step)
-    after = _refit(subject, vectors, fitted) if aligned and np.isfinite(fitted[0]) else subject.fit
-    changes = verdict_changes(subject.fit, after)
+    before, after = subject.fit, subject.fit
+    if aligned and np.isfinite(fitted[0]):
+        before = before if some.n_pair == subject.pairs.n_pair else subject.refit(pairs=some) or before
+        after = subject.refit(*as_pairs(subject.tracks, some, without_shear(vectors, subject.tracks.step, *fitted)))
+    changes = verdict_changes(before, after)
     text = " ".join(
         (
             _size(found, _shape(vectors, subject.tracks.step, found.axis_deg)),
             _rival(factor),
-            _verdict(subject, after, (aligned, flag, changes), fitted),
+            _verdict((before, after), (aligned, flag, changes), fitted),
         )
     )
     return Finding("shear", flag, found.share, "alignment of separations, 0 to 1", _where(found), changes, text)
-
-
-def _refit(subject: Subject, vectors: Vectors, fitted: tuple[float, float]) -> QuickFit | None:
-    without = without_shear(vectors, subject.tracks.step, *fitted)
-    return subject.refit(*as_pairs(subject.tracks, subject.pairs, without))
 
 
 def _where(found: Alignment) -> tuple[float, float] | None:
@@ -131,7 +130,8 @@ def _rival(factor: float) -> str:
     return f"Constant diffusivity and a linear shear {how} (ln Bayes factor {factor:+.1f})."
 
 
-def _verdict(subject: Subject, after: QuickFit | None, raised: tuple[bool, bool, bool], shear: tuple) -> str:
+def _verdict(fits: tuple[QuickFit, QuickFit | None], raised: tuple[bool, bool, bool], shear: tuple) -> str:
+    before, after = fits
     aligned, flag, changes = raised
     if not flag:
         return "The verdict stands as far as shear goes."
@@ -140,9 +140,9 @@ def _verdict(subject: Subject, after: QuickFit | None, raised: tuple[bool, bool,
     rate, direction = shear
     text = f"With a shear of {abs(rate) * DAY:.2g} per day along {direction:.0f} degrees taken out, "
     if changes:
-        text += f"{upheld(after)} is upheld instead of {upheld(subject.fit)}: the verdict does not survive."
+        text += f"{upheld(after)} is upheld instead of {upheld(before)}: the verdict does not survive."
     else:
         text += f"{upheld(after)} is upheld: the verdict stands."
-    if any(s.regime == "richardson" for s in supported(subject.fit)):
+    if any(s.regime == "richardson" for s in supported(before)):
         text += " Richardson's law supposes that no direction is preferred; do not quote it from such data."
     return text + " Take out a known mean flow first, or analyse regions of one mean gradient apart."

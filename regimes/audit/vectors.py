@@ -11,6 +11,8 @@ from regimes.geodesy import separation
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
 
+MOST_SAMPLES = 3_000_000  # of pairs that are looked at; 60 pairs of 90 days each hour have 130 000
+
 
 @dataclass(frozen=True, slots=True)
 class Vectors:
@@ -70,6 +72,11 @@ def separation_vectors(tracks: Tracks, pairs: Pairs) -> Vectors:
     one, two = (np.repeat(spans[:, k], spans[:, 2]) + into for k in (0, 1))
     _, east, north = separation(tracks.position[one], tracks.position[two], tracks.planar)
     return Vectors(np.stack([east, north], axis=1), offset, table, weight)
+
+
+def fewer(pairs: Pairs, most: int = MOST_SAMPLES) -> Pairs:
+    """The pairs themselves, or every so many-th of them where they have more samples than `most`."""
+    return pairs.select(slice(None, None, max(1, -(-int(pairs.length.sum()) // most))))
 
 
 def as_pairs(tracks: Tracks, pairs: Pairs, vectors: Vectors) -> tuple[Tracks, Pairs]:
