@@ -12,7 +12,7 @@ from regimes.units import HOUR
 START = datetime(2031, 3, 2, 6, tzinfo=UTC)
 
 
-def survey(seed: int, number: int = 12, place: bool = False, **records) -> tuple[Tracks, Pairs]:
+def survey(seed: int, number: int = 12, place: bool = False, spread_km: float = 0.0, **records) -> tuple[Tracks, Pairs]:
     """Triplets followed for 20 days every 2 hours, on a plane or the globe; `records` change how they are watched."""
     content = {
         "name": "test",
@@ -21,8 +21,7 @@ def survey(seed: int, number: int = 12, place: bool = False, **records) -> tuple
         "releases": {"number": number, "particles": 3, "start_separation_km": 0.4, "first": START},
         "records": {"duration_d": 20.0, "fix_interval_h": 2.0, "position_error_m": 10.0} | records,
     }
-    if place:
-        content["place"] = {"longitude": 30.0, "latitude": -20.0}
+    content["place"] = {"spread_km": spread_km} | ({"longitude": 30.0, "latitude": -20.0} if place else {})
     tracks = make_tracks(simulate(recipe_from(content)), 2 * HOUR, 6 * HOUR)
     return tracks, find_pairs(tracks, "launched", 1000.0, 6 * HOUR)
 
