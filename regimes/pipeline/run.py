@@ -89,7 +89,7 @@ def audit_case(case: Case, progress: Progress | None = None, seed: int | None = 
     pairs, no_pair = pairs_of(case, tracks)
     if pairs is None:
         raise DataError(no_pair)
-    return audit(subject_of(tracks, pairs, options), progress)
+    return audit(subject_of(tracks, pairs, options), progress, options.jobs)
 
 
 def analyse_pairs(
@@ -129,7 +129,7 @@ def analyse_pairs(
     second, missing, separation, moved = second_opinion(tracks, rates, (named, free), how)
     joint = joint_fit(rates, moved, separation, leading, (named, free), how)
     others = other_curves(tracks, pairs, rates, (leading, moved), options, progress)
-    findings = audit(subject_of(tracks, pairs, options), progress)
+    findings = audit(subject_of(tracks, pairs, options), progress, options.jobs)
     fits = (leading, second, missing, moved, joint)
     return put_together(tracks, pairs, options, rates, fits, (alone, others, findings))
 
