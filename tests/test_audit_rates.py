@@ -6,9 +6,12 @@ import numpy as np
 import pytest
 
 from regimes.audit.convergence import convergence
+from regimes.audit.independence import independence
 from regimes.audit.oscillation import oscillation
 from regimes.audit.pairs import pairs
 from regimes.audit.position_error import position_error
+from regimes.audit.range import range_width
+from regimes.audit.record_ends import record_ends
 from regimes.audit.sampling_interval import sampling_interval
 from regimes.audit.shear import shear
 from regimes.audit.subject import verdict_changes
@@ -25,7 +28,27 @@ ROWS = {
     "shear": shear,
     "pairs": pairs,
     "convergence": convergence,
+    "independence": independence,
+    "record_ends": record_ends,
+    "range": range_width,
 }
+
+
+def sea(longest_km: float) -> dict:
+    """A sea of slope 5/3 up to a wavelength, pairs from 2 km; short waves are as strong whatever that wavelength."""
+    return {
+        "fourier": {
+            "spectral_slopes": [5.0 / 3.0],
+            "break_wavelengths_km": [],
+            "shortest_km": 1.0,
+            "longest_km": longest_km,
+            "speed_m_s": 0.5 * (longest_km / 3000.0) ** (1.0 / 3.0),
+        },
+        "releases": {"start_separation_km": 2.0},
+        "records": {"duration_d": 60.0},
+    }
+
+
 # Changes for recipe(), keyword arguments of audited(): the strength at which the verdict flips in most.
 RECIPES = {
     "position_error": ({"records": {"position_error_m": 800.0}}, {"stated_error": 10.0}),
@@ -34,7 +57,12 @@ RECIPES = {
     "shear": ({"shear": {"rate_per_d": 0.12}}, {}),
     "pairs": ({"faults": {"grounded": 40}}, {}),  # 40 of 60 aground, and it seldom flips
     "convergence": ({"convergence": {"rate_per_d": 1.0, "lasts_d": 30.0}}, {}),  # half of the verdicts flip
+    "independence": ({"releases": {"number": 7, "particles": 9}}, {"launches": 3}),
+    "record_ends": ({"records": {"loss_per_d_apart": 0.5, "apart_km": 5.0}}, {}),
+    "range": (sea(60.0), {"max_separation": 3000.0}),
 }
+# The clean survey is the demo's sea but for one: a range can only be narrow beside one that is wide.
+TWINS = {"range": (sea(3000.0), {"max_separation": 3000.0})}
 pytestmark = [pytest.mark.slow, pytest.mark.calibration]
 
 
@@ -52,7 +80,8 @@ def trial(arguments) -> Trial | None:
     """One seed of one threat; None where the contaminated survey resolves nothing."""
     threat, seed = arguments
     changes, how = RECIPES[threat]
-    before = audited(recipe(seed))
+    twin, watched = TWINS.get(threat, ({}, {}))
+    before = audited(recipe(seed, **twin), **watched)
     try:
         after = audited(recipe(seed, **changes), **how)
     except DataError:
