@@ -9,6 +9,7 @@ from regimes.audit.rotary import Windows, inertial_frequency, windows
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
 from regimes.units import DAY, HOUR
+from regimes.verdict.decide import FEW_CLUSTERS
 
 TIDES = {"M2": 12.4206 * HOUR, "S2": 12.0 * HOUR, "K1": 23.9345 * HOUR, "O1": 25.8193 * HOUR}  # periods, astronomy
 SHORTEST = 8.0 * DAY  # of a window
@@ -18,7 +19,6 @@ FINEST = 2.0 * NEXT  # steps in the shortest period that can be told with its ne
 SLOWEST = 30.0 * DAY  # inertial period, near the equator, beyond which it is not looked for
 _FACTOR = 4.0  # of separation that is pooled
 _UNLIKELY = 0.01  # probability that a survey without lines shows one
-_LEAST_CLUSTERS = 4
 _LEAST_EXCESS = np.log(1.5)  # a smaller one may be the curvature of a spectrum without lines
 
 
@@ -73,8 +73,10 @@ def lines(tracks: Tracks, pairs: Pairs) -> tuple[Line, ...]:
     Notes
     -----
     A line is clear if its excess is above ln 1.5 and its t statistic beyond a one-sided 1 % divided by the number of
-    lines and ranges. Turbulence turns both ways alike, so that inertial motion shows even where the
-    motion of particles through the waves spreads its frequency. A power-law spectrum gives tides no excess.
+    lines and ranges, with as many degrees of freedom as there are effective clusters (Kish, by windows) less one;
+    ranges with fewer than six of them are left out. Turbulence turns both ways alike, so that inertial motion shows
+    even where the motion of particles through the waves spreads its frequency. A power-law spectrum gives tides no
+    excess.
 
     References
     ----------
@@ -130,12 +132,13 @@ def _by_separation(line: tuple[str, float], x: np.ndarray, bins: np.ndarray, fou
     for b in np.unique(bins):
         here = (bins == b) & np.isfinite(x)
         number, cluster = np.unique(found.cluster[here], return_inverse=True)
-        if number.size < _LEAST_CLUSTERS:
-            continue
         size = np.bincount(cluster)
+        effective = float(size.sum() ** 2 / np.sum(size**2)) if size.size else 0.0
+        if effective < FEW_CLUSTERS:
+            continue
         mean = float(x[here].mean())
         scores = np.bincount(cluster, x[here] - mean) / size.sum()
         error = float(np.sqrt(np.sum(scores**2) * number.size / (number.size - 1)))
-        clear = mean > max(_LEAST_EXCESS, float(student.isf(_UNLIKELY / count, number.size - 1)) * error)
+        clear = mean > max(_LEAST_EXCESS, float(student.isf(_UNLIKELY / count, effective - 1.0)) * error)
         out.append(Line(*line, float(_FACTOR**b), float(_FACTOR ** (b + 1)), mean, error, bool(clear)))
     return out

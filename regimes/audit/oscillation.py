@@ -42,7 +42,8 @@ def oscillation(subject: Subject) -> Finding:
     exponent: a particle moved by U cos(omega t) is back after each period, so that first passages beyond the
     excursion 2 U / omega are not helped by it. With no clear line the inertial frequency, or M2 on a plane, is removed.
     """
-    found = lines(subject.tracks, subject.pairs)
+    units = subject.fit.rates.pairs  # clusters, or particles where clusters are too few
+    found = lines(subject.tracks, replace(subject.pairs, cluster=units.cluster, n_cluster=units.n_cluster))
     clear = [line for line in found if line.clear]
     strongest = max(clear or found, key=lambda line: line.excess, default=None)
     measure = "ln of the power at the strongest line over its background"
