@@ -17,6 +17,7 @@ from regimes.inference.predict import mixed_kernels
 from regimes.likelihood.structure import StructureLikelihood, structure_likelihood
 from regimes.pairs import CHANCE
 from regimes.pipeline import Options, quick_fit
+from regimes.pipeline.singles import with_releases
 from regimes.synthetic.fourier_flow import fourier_tracks
 from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.synthetic.kernel_groups import release_tracks
@@ -42,10 +43,10 @@ def survey(truth, seed, n=15):
     return release_tracks(truth, (n, 3), 700.0, 3 * HOUR, 240, seed)
 
 
-def checked(tracks, pairs, kernels, seed=1, jobs=1):
+def checked(tracks, pairs, kernels, seed=1, jobs=1, shared=1.0):
     moved = from_passage(tracks, pairs, 1000.0)
     grid = grid_for(tracks, moved, 1000.0, 2 * DAY, THRESHOLDS)
-    return {c.curve: c for c in predictive_checks(tracks, pairs, kernels, grid, (seed, jobs, None))}
+    return {c.curve: c for c in predictive_checks(tracks, pairs, kernels, grid, shared, (seed, jobs, None))}
 
 
 def test_a_design_keeps_starts_lengths_gaps_and_clusters():
@@ -111,6 +112,34 @@ def test_the_kernel_that_made_the_data_agrees_and_another_one_dissents():
     other = checked(tracks, pairs, [RICHARDSON] * 99)
     assert other["mean_log_separation"].p_value == pytest.approx(0.01)  # the least that 99 repetitions can say
     assert other["mean_log_separation"].where.size > 0
+
+
+def test_releases_of_six_are_repeated_as_a_whole_and_agree():
+    tracks, pairs = release_tracks(EXPONENTIAL, (8, 6), 700.0, 3 * HOUR, 240, 2)
+    assert design_of(tracks, pairs).whole
+    found = checked(tracks, pairs, [EXPONENTIAL] * 99)
+    assert "triplet_area" in found
+    assert min(c.p_value for c in found.values()) > 0.01
+
+
+def test_pairs_repeated_one_by_one_have_no_triplets_and_wider_predictions():
+    tracks, pairs = survey(EXPONENTIAL, 4, 6)
+    chance = replace(pairs, kind=np.full(pairs.n_pair, CHANCE, np.int8))
+    narrow, wide = (checked(tracks, chance, [EXPONENTIAL] * 60, shared=shared) for shared in (1.0, 4.0))
+    assert "triplet_area" not in narrow
+    for name in ("mean_log_separation", "relative_diffusivity"):
+        widths = [np.ptp(c[name].band, axis=0) for c in (narrow, wide)]
+        assert np.allclose(widths[1], 2.0 * widths[0], rtol=1e-6)
+        assert wide[name].p_value >= narrow[name].p_value
+
+
+def test_a_pair_that_starts_late_does_not_change_how_its_release_is_repeated():
+    tracks, pairs = survey(EXPONENTIAL, 1, 4)
+    late = np.arange(pairs.n_pair) == 0
+    begun = replace(pairs, begin=pairs.begin + 20 * late, length=pairs.length - 20 * late)
+    design = design_of(tracks, begun)
+    assert design.whole
+    assert design.pairs.begin[:3].tolist() == [20, 20, 20]
 
 
 def test_threads_do_not_change_the_answer():
@@ -183,3 +212,10 @@ def test_structure_of_a_flow_agrees_with_a_kernel_of_its_slope():
     kernels = mixed_kernels(fit.free, exit_rate_space(fit.rates.likelihood), 50, np.random.default_rng(1))
     assert structure_check(likelihood, kernels, 1).agrees
     assert not structure_check(likelihood, [replace(k, rate=k.rate / 4.0) for k in kernels], 1).agrees
+
+
+def test_without_named_releases_the_clusters_of_the_pairs_take_their_place():
+    tracks, pairs = survey(EXPONENTIAL, 1, 4)
+    nameless = replace(tracks, release=np.full(tracks.n_track, -1))
+    assert np.array_equal(with_releases(nameless, pairs).release, pairs.cluster)
+    assert with_releases(tracks, pairs) is tracks

@@ -42,7 +42,7 @@ def p_values(arguments):
         moved = from_passage(tracks, rates.pairs, rates.resolved.low)
         first = float(rates.likelihood.risk[0] / rates.likelihood.exits[0])
         grid = grid_for(tracks, moved, rates.resolved.low, first, rates.likelihood.thresholds)
-        checks += predictive_checks(tracks, pairs, kernels, grid, (seed, 1, None))
+        checks += predictive_checks(tracks, pairs, kernels, grid, 1.0, (seed, 1, None))
     return {check.curve: check.p_value for check in checks}
 
 

@@ -83,7 +83,7 @@ def test_methods_text():
     }
     text = methods_text(facts, inference(), decide(evidence()), "Supported: x.", (1 * KM, 16 * KM))
     assert text == (
-        "Separations of 60 launched pairs of 41 particles in 20 clusters (18 effective; pairs start within 0.70 km, "
+        "Separations of 60 launched pairs of 41 particles in 20 clusters (18.6 effective; pairs start within 0.70 km, "
         "median record 41 d, 1 h sampling) were reduced to exit rates between thresholds of ratio 1.41 from 1.0 to 16 "
         "km, counting time at risk and crediting unfinished passages. Sequences of named regimes and kernels with free "
         "exponents were compared by their evidence under a quasi-likelihood whose dispersion (2.7) comes from the "

@@ -112,7 +112,7 @@ class CurveRules(Section):
 
     separation_ratio: Annotated[float, Field(gt=1.05, le=3.0)] = 2.0**0.5
     separations_km: Range | None = None
-    repetitions: Annotated[int, Field(ge=99)] = 199
+    repetitions: Annotated[int, Field(ge=199)] = 199
     triplets: bool = True
 
     @field_validator("separations_km")

@@ -1,7 +1,9 @@
 """Posterior predictive distribution of every curve: the same releases again under kernels drawn from the fit."""
 
+import math
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
 
 import numpy as np
 
@@ -28,6 +30,7 @@ def predictive_checks(
     pairs: Pairs,
     kernels: list[Kernel],
     grid: Grid,
+    shared: float,
     how: tuple[int, int, Progress | None],
 ) -> tuple[Check, ...]:
     r"""Hold every curve against its posterior predictive distribution.
@@ -43,6 +46,9 @@ def predictive_checks(
     kernels : list of Kernel
         Drawn from the posterior of the fit, one for each repetition.
     grid : Grid
+    shared : float
+        Variance of what clusters show over that of independent pairs, 1 or more. It widens the repetitions of designs
+        that can only be repeated pair by pair; releases that are repeated as a whole have it already.
     how : (int, int, callable or None)
         Seed; threads, on which the result does not depend; progress, called with (stage, done, total).
 
@@ -61,7 +67,9 @@ def predictive_checks(
     Number of clusters, starts, lengths, gaps, sampling and position errors are those of the data, so are the
     biases of small and unfinished samples. Skewed curves are compared in their logarithm. The distribution of
     separations is compared by its Kolmogorov-Smirnov distance from all repetitions together, at three times.
-    The kernel was fitted to the same data, which makes p-values a little too large, never too small.
+    The kernel was fitted to the same data, which makes p-values a little too large. Chance pairs and releases of more
+    than ten particles are repeated pair by pair, their triplets not at all: repetitions are then moved away from their
+    mean by the root of `shared`.
 
     References
     ----------
@@ -69,9 +77,12 @@ def predictive_checks(
     """
     seen = measure(tracks, pairs, grid)
     design = design_of(tracks, pairs)
-    drawn = _repetitions(design, kernels, grid, how)
-    found = [_compare(name, seen, drawn, grid) for name in seen.curves]
-    return tuple(check for check in (*found, _distribution(seen, drawn, grid)) if check is not None)
+    if not design.whole:
+        seen = replace(seen, curves={k: v for k, v in seen.curves.items() if k != "triplet_area"})
+    drawn = _repetitions(design, kernels, replace(grid, areas=grid.areas and design.whole), how)
+    wider = 1.0 if design.whole else math.sqrt(max(shared, 1.0))
+    found = [_compare(name, seen, drawn, grid, wider) for name in seen.curves]
+    return tuple(check for check in (*found, _distribution(seen, drawn, grid, wider)) if check is not None)
 
 
 def grid_for(tracks: Tracks, moved: Pairs, passage: float, first: float, thresholds: np.ndarray) -> Grid:
@@ -128,7 +139,7 @@ def _repetitions(design: Design, kernels: list[Kernel], grid: Grid, how) -> list
     return [m for m in found if m is not None]
 
 
-def _compare(name: str, seen: Measured, drawn: list[Measured], grid: Grid) -> Check | None:
+def _compare(name: str, seen: Measured, drawn: list[Measured], grid: Grid, wider: float) -> Check | None:
     value = seen.curves[name]
     if not all(name in m.curves for m in drawn):
         return None
@@ -137,33 +148,36 @@ def _compare(name: str, seen: Measured, drawn: list[Measured], grid: Grid) -> Ch
     if not np.any(good):
         return None
     value, rows = value[good], rows[:, good]
-    middle, spread = np.nanmean(rows, axis=0), np.nanstd(rows, axis=0, ddof=1)
+    rows = rows[np.all(np.isfinite(rows), axis=1)]
+    rows = rows.mean(axis=0) + wider * (rows - rows.mean(axis=0))
+    middle, spread = rows.mean(axis=0), rows.std(axis=0, ddof=1)
     varies = spread > 0
     if not np.any(varies):
         return None
-    away = np.nanmax(np.abs(rows - middle)[:, varies] / spread[varies], axis=1)
+    away = np.max(np.abs(rows - middle)[:, varies] / spread[varies], axis=1)
     own = np.max(np.abs(value - middle)[varies] / spread[varies])
     axis_name, axis = axis_of(name, grid)
-    band = np.nanquantile(rows, QUANTILES, axis=0)
+    band = np.quantile(rows, QUANTILES, axis=0)
     return Check(
         name, axis_name, axis[good], in_units(name, value), in_units(name, band), _share(away, own), UNITS[name]
     )
 
 
-def _distribution(seen: Measured, drawn: list[Measured], grid: Grid) -> Check | None:
+def _distribution(seen: Measured, drawn: list[Measured], grid: Grid, wider: float) -> Check | None:
     places = sample_places(grid.times.size)
     own, others = [], []
     for k in range(places.size):
         pool = np.sort(np.concatenate([m.samples[k] for m in drawn]))
         own.append(_distance(seen.samples[k], pool))
         others.append([_distance(m.samples[k], pool) for m in drawn])
-    value, rows = np.array(own), np.array(others).T
-    if not np.all(np.isfinite(value)):
+    value, rows = np.array(own), wider * np.array(others).T
+    rows = rows[np.all(np.isfinite(rows), axis=1)]
+    if not np.all(np.isfinite(value)) or len(rows) < _LEAST_SEEN * len(drawn):
         return None
-    scale = np.nanmedian(rows, axis=0)
-    away = np.nanmax(rows / scale, axis=1)
+    scale = np.median(rows, axis=0)
+    away = np.max(rows / scale, axis=1)
     p = _share(away, float(np.max(value / scale)))
-    band = np.nanquantile(rows, QUANTILES, axis=0)
+    band = np.quantile(rows, QUANTILES, axis=0)
     band[0] = 0.0  # no distance is too small
     return Check("separation_distribution", "time", grid.times[places], value, band, p, "1")
 

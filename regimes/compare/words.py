@@ -26,7 +26,12 @@ def sentence(ranks: Ranks, fitted: Fitted, unmatched_p: float) -> str:
     decision, p = decide(ranks), p_text(ranks.p_value)
     if decision == "different":
         return f"Different: sampled alike, the two cases disagree (p = {p} over all curves)" + _where(ranks, fitted)
-    seen = f"a factor of {significant(ranks.factor)} in all exponents" if np.isfinite(ranks.factor) else "nothing"
+    seen = f"a factor of {significant(ranks.factor)} in all exponents"
+    if decision == "undecided" and not np.isfinite(ranks.factor):
+        return (
+            f"Undecided: sampled alike, no curve tells the two cases apart (p = {p} over all curves), but data of this "
+            "size are not sure to show a difference of any size." + _explained(unmatched_p)
+        )
     if decision == "undecided":
         return (
             f"Undecided: sampled alike, no curve tells the two cases apart (p = {p} over all curves), but it takes "

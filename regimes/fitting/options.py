@@ -76,7 +76,7 @@ class Options:
     single : SingleOptions
         For particles taken one by one.
     repetitions : int
-        Simulated repetitions behind each predictive check, 99 or more.
+        Simulated repetitions behind each predictive check, 199 or more.
     triplets : bool
         Whether triangles of particles released together are followed, where there are any.
 
@@ -108,7 +108,7 @@ class Options:
                 ("slope_range", self.slope_range, _rises(self.slope_range), f"{_RISING}, or None"),
                 ("seed", self.seed, self.seed >= 0, "be 0 or more"),
                 ("jobs", self.jobs, self.jobs >= 1, "be 1 or more"),
-                ("repetitions", self.repetitions, self.repetitions >= 99, "be 99 or more"),
+                ("repetitions", self.repetitions, self.repetitions >= 199, "be 199 or more"),
             ),
         )
 

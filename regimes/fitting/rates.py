@@ -34,6 +34,8 @@ class Rates:
         Its `clusters` counts the clusters of the pairs as found.
     scatter : (n,) float array
         Relative dispersion of all intervals, from the theory of exit times.
+    independent : float
+        Dispersion that independent pairs would have.
     pairs : Pairs
         With the clusters that were used as independent.
     within_release : bool
@@ -46,6 +48,7 @@ class Rates:
     likelihood: ExitRateLikelihood
     spread: Dispersion
     scatter: np.ndarray
+    independent: float
     pairs: Pairs
     within_release: bool
 
@@ -74,10 +77,11 @@ def exit_rates(tracks: Tracks, pairs: Pairs, options: Options) -> Rates:
     resolved = resolved_range(everything, credited, starts, tracks.position_error)
     cut = resolved.intervals
     scatter = exit_scatter(local_growth(everything, credited), everything.log_ratio)
-    scatter = scatter / np.average(scatter[cut], weights=everything.weight @ everything.exits[:, cut])
+    independent = float(np.average(scatter[cut], weights=everything.weight @ everything.exits[:, cut]))
+    scatter = scatter / independent
     likelihood, spread = exit_rate_likelihood(everything.select(cut), credited[:, cut], scatter[cut])
     spread = replace(spread, clusters=clusters)
-    return Rates(everything, credited, resolved, likelihood, spread, scatter, pairs, within_release)
+    return Rates(everything, credited, resolved, likelihood, spread, scatter, independent, pairs, within_release)
 
 
 def largest_separation(tracks: Tracks, pairs: Pairs) -> float:

@@ -81,9 +81,10 @@ def _dissent(check: Check) -> Caution:
 def _checks(tracks, pairs, rates: Rates, drawn, options: Options, progress) -> tuple[tuple[Check, ...], str]:
     kernels, moved = drawn
     first = float(rates.likelihood.risk[0] / rates.likelihood.exits[0])
+    shared = rates.spread.total / rates.independent
     try:
         grid = grid_for(tracks, moved, rates.resolved.low, first, rates.likelihood.thresholds)
-        return predictive_checks(tracks, pairs, kernels, grid, (options.seed, options.jobs, progress)), ""
+        return predictive_checks(tracks, pairs, kernels, grid, shared, (options.seed, options.jobs, progress)), ""
     except DataError as error:
         return (), str(error)
 

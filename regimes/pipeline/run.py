@@ -17,7 +17,7 @@ from regimes.pipeline.joint import joint_fit
 from regimes.pipeline.opinion import second_opinion
 from regimes.pipeline.origin import of_case
 from regimes.pipeline.other_curves import other_curves
-from regimes.pipeline.singles import analyse_singles, single_side
+from regimes.pipeline.singles import analyse_singles, single_side, with_releases
 from regimes.pipeline.survey import pairs_of, read_tracks
 from regimes.tracks import Tracks
 from regimes.verdict.finding import Finding
@@ -117,6 +117,7 @@ def analyse_pairs(
         If a fit cannot be started.
     """
     options = options or Options()
+    tracks = with_releases(tracks, pairs)
     rates = exit_rates(tracks, pairs, options)
     alone = single_side(tracks, options.single, options.seed)
     seed, jobs = options.seed, options.jobs

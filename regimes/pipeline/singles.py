@@ -1,5 +1,7 @@
 """The single-particle side of a run: what particles say one by one, or why they say nothing."""
 
+from dataclasses import replace
+
 import numpy as np
 
 from regimes.analysis import SinglesOnly
@@ -32,6 +34,11 @@ def single_side(tracks: Tracks, chosen: SingleOptions, seed: int) -> tuple[Singl
         return single_particle(tracks, chosen.mean, chosen.period, flow, seed=seed), ""
     except DataError as error:
         return None, str(error).removeprefix("single particles: ")
+
+
+def with_releases(tracks: Tracks, pairs: Pairs) -> Tracks:
+    """Tracks whose releases, where none is named, are the clusters that the pairs make."""
+    return tracks if np.any(tracks.release >= 0) else replace(tracks, release=pairs.cluster)
 
 
 def cross_checks(

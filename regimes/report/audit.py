@@ -1,6 +1,7 @@
 """The audit in the report and in the verdict document."""
 
 import json
+import math
 import textwrap
 from pathlib import Path
 from typing import Any
@@ -38,13 +39,22 @@ def audit_rows(analysis: Analysis) -> list[dict[str, Any]]:
         {
             "threat": THREAT_WORDS[f.threat],
             "flag": f.flag,
-            "size": f"{significant(f.size)}, {f.measure}" if f.size == f.size else "not measured",
+            "size": f"{significant(f.size)}, {f.measure}" if not math.isnan(f.size) else "not measured",
             "where": "" if f.separations is None else f"{span(*f.separations)} km",
-            "changes": "another one" if f.verdict_changes else "the same",
+            "changes": _without(f, analysis),
             "text": f.text,
         }
         for f in analysis.audit
     ]
+
+
+def _without(finding: Finding, analysis: Analysis) -> str:
+    """The verdict without the threat, in words that do not claim a test that there was not."""
+    if finding.verdict_changes:
+        return "another one"
+    if math.isnan(finding.size):
+        return "not tested"
+    return "the same" if analysis.verdict.supported else "nothing supported either way"
 
 
 def audit_fact(analysis: Analysis) -> tuple[str, str, str]:

@@ -54,7 +54,8 @@ def agreement(others: OtherCurves) -> str:
         number = f"All {total} other curves agree" if total > 1 else "The only other curve checked agrees"
     else:
         number = f"{len(agree) or 'None'} of {total} other curves agree" + ("s" if len(agree) == 1 else "")
-    said = f"{number} with the kernels fitted to the exit rates"
+    lowest = min(others.checks, key=lambda check: check.p_value)
+    said = f"{number} with the kernels fitted to the exit rates (lowest p = {p_text(lowest.p_value)})"
     said += f": {listed(agree)}. " if agree else ". "
     if against:
         said += f"{'These dissent' if len(against) > 1 else 'One dissents'}: {listed(against)}. "
@@ -94,6 +95,8 @@ def ballistic_sentence(found: BallisticCheck | None) -> str:
         f"Pairs start {significant(start / KM)} km apart; their first relative velocity is {speed} (root mean squares, "
         "position errors taken out). "
     )
+    if square <= 2.0 * float(found.structure.standard_error[0]):
+        return f"{said}How long they keep it cannot be told."
     held, first, last = found.holds_until, float(found.dispersion.axis[0]), float(found.dispersion.axis[-1])
     if math.isnan(held):
         return f"{said}One cluster says nothing of how long they keep it."

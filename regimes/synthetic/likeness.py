@@ -13,8 +13,8 @@ from regimes.synthetic.kernel_groups import MOST_SUBSTEPS, move_group, workspace
 from regimes.theory.kernel import Kernel
 from regimes.tracks import Tracks
 
-MOST_MEMBERS = 4  # of a release that is simulated as a whole; larger ones pair by pair
-_APART = 0.05  # of the median length: starts within a release that count as one
+MOST_MEMBERS = 10  # of a release that is simulated as a whole; larger ones pair by pair
+_APART = 0.2  # of the median length: starts within a release that count as one, the earlier ones cut
 _SUBSTEP = 0.006  # growth of mean squared separation 2.4 % too low in the exponential regime
 
 
@@ -45,9 +45,9 @@ class Design:
 def design_of(tracks: Tracks, pairs: Pairs) -> Design:
     """What is to be repeated of a data set.
 
-    Releases of up to four particles that start together are kept whole, so that their pairs share particles as
+    Releases of up to ten particles that start together are kept whole, so that their pairs share particles as
     the data do. Otherwise (chance pairs, larger releases) every pair becomes two particles of its own, in the
-    cluster it had.
+    cluster it had: pairs are then independent, which those of the data are not.
 
     Parameters
     ----------

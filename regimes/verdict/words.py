@@ -82,8 +82,8 @@ def methods_text(facts: dict, fit: Inference, decision: Decision, sentence: str,
     unit = "release" if facts["kind"] == "launched" else "cluster"
     return (
         f"Separations of {facts['n_pairs']} {_kind(facts['kind'])}pairs of {facts['n_particles']} particles in {shape} "
-        f"({rounded_down(facts['clusters'], 0)} effective; pairs start within {km(facts['max_separation'])} km, "
-        f"median record {days:.0f} d, {facts['step'] / HOUR:.3g} h sampling) were reduced to exit rates between "
+        f"({rounded_down(facts['clusters'], 1)} effective; pairs start within {km(facts['max_separation'])} km, "
+        f"median record {days:.2g} d, {facts['step'] / HOUR:.3g} h sampling) were reduced to exit rates between "
         f"thresholds of ratio {facts['ratio']:.3g} from {km(resolved[0])} to {km(resolved[1])} km, counting time at "
         "risk and crediting unfinished passages. Sequences of named regimes and kernels with free exponents were "
         "compared by "
