@@ -12,8 +12,9 @@ from regimes.compare.unmatched import unmatched_p
 from regimes.compare.words import TELLS, decide, place
 from tests.compare_worlds import FASTER_BELOW_10, kernel_side, some
 
-GRID = Grid(1000.0 * 2.0 ** np.arange(11), 86400.0 * np.arange(1.0, 11.0), np.empty(0))
-NAMES = ("exponent", "relative_dispersion", "mean_log_separation", "kurtosis")
+DAYS = 86400.0 * np.arange(1.0, 11.0)
+GRID = Grid(1000.0 * 2.0 ** np.arange(11), DAYS, DAYS, np.empty(0))
+NAMES = ("exponent", "relative_dispersion", "mean_log_growth", "kurtosis")
 
 
 def made(rng, n=1, shift=0.0):
@@ -71,7 +72,10 @@ def test_order_and_unit_do_not_matter(drawn):
     assert shuffled.p_value == first.p_value
 
     def longer(m):
-        curves = {name: v + (np.log(7.0) if name != "kurtosis" else 0.0) for name, v in m.curves.items()}
+        curves = {
+            name: v + (np.log(7.0) if name in ("exponent", "relative_dispersion") else 0.0)
+            for name, v in m.curves.items()
+        }
         return Measured(curves, tuple(7.0 * s for s in m.samples))
 
     scaled = rank_curves(longer(seen), [longer(m) for m in drawn], GRID, 1.3)

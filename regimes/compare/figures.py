@@ -23,7 +23,10 @@ from regimes.report.figures.style import (
 from regimes.report.words import p_text
 from regimes.units import DAY, KM
 
-SHOWN = SCALES | {"exponent": Scale("1/day", lambda v: v * DAY)}
+SHOWN = SCALES | {
+    "exponent": Scale("1/day", lambda v: v * DAY),
+    "mean_log_growth": Scale("factor", np.exp),
+}
 _REACH = 30.0  # a band is cut where it lies so many times below its middle
 
 
