@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from regimes.audit.law import growth, law_holds, longest_factor, middle_slope
-from regimes.audit.range import Room, range_width
+from regimes.audit.range import range_width
+from regimes.audit.room import Room, rooms_of
 from regimes.audit.subject import subject_of
 from regimes.fitting import Options
 from regimes.theory.kernel import Kernel
@@ -82,10 +83,17 @@ def test_a_room_shows_its_law_over_a_factor_three():
     assert not replace(room, factor=2.9).shows
 
 
+def test_rooms_end_at_transitions_and_at_the_resolved_range():
+    kernel = Kernel([2.0, 4.0 / 3.0, 0.0], [1e4, 1e6], 1e-6, 1e3)
+    found = rooms_of(kernel, ("exponential", "richardson", "diffusive"), (2e3, 5e5), 1e3)
+    assert [(r.regime, r.low, r.high) for r in found] == [("exponential", 2e3, 1e4), ("richardson", 1e4, 5e5)]
+    assert found[1].decades == pytest.approx(np.log10(50.0))
+
+
 def test_an_endless_exponential_range_is_not_flagged():
     found = range_width(subject_of(*survey(1), Options()))
     assert not found.flag
-    assert found.size >= 3.0
+    assert 0.5 <= found.size <= 1.0
     assert "pairs grow 19-fold" in found.text
     assert "Under the fitted kernel" in found.text
 

@@ -1,50 +1,22 @@
 """Threat: a range of separations too narrow for the law that is read from it."""
 
-from dataclasses import dataclass
-
 import numpy as np
 
 from regimes.audit.improbable import best_kernel
-from regimes.audit.law import Growth, growth, law_holds, longest_factor, middle_slope
+from regimes.audit.law import middle_slope
 from regimes.audit.record import Finding
+from regimes.audit.room import Room, rooms_of
 from regimes.audit.subject import Subject, supported
+from regimes.inference.average import mixing_weights
 from regimes.inference.slope import RangeSlope
 from regimes.theory.kernel import Kernel
 from regimes.theory.regimes import REGIMES
 from regimes.verdict.digits import km, listed
-from regimes.verdict.rule import SPAN, Stretch
+from regimes.verdict.rule import Stretch
 
+LEAST = 0.5  # share of kernels under which a law must show: more likely than not
+_KERNELS = 60
 _LEAST_BAND = 2.5  # ratio of the ends of a range from which a structure function is computed
-
-
-@dataclass(frozen=True, slots=True)
-class Room:
-    """How much room one regime has.
-
-    Parameters
-    ----------
-    regime : str
-    low, high : float [m]
-        Ends of its piece of the kernel, inside the resolved range.
-    decades : float
-        From the start separation, or from `low` if that is larger, to `high`.
-    factor : float
-        Over which the root-mean-square separation grows while relative dispersion is within a sixth of the law.
-    power : float
-        Largest d ln D2 / d ln t inside the piece; NaN where dispersion does not reach it.
-    """
-
-    regime: str
-    low: float
-    high: float
-    decades: float
-    factor: float
-    power: float
-
-    @property
-    def shows(self) -> bool:
-        """Whether the law holds over a factor 3 of separation, as much as the rule asks of a regime."""
-        return self.factor >= SPAN
 
 
 def range_width(subject: Subject) -> Finding:
@@ -53,14 +25,14 @@ def range_width(subject: Subject) -> Finding:
     .. math:: \left| \frac{d \ln D^2 / d \ln t}{2 / (2 - a)} - 1 \right| \le \frac{1}{6}
 
     while the root-mean-square separation grows by a factor 3; for the exponential regime d ln D2 / dt over
-    8 K / r^2 in place of the ratio. D2(t) comes from the Fokker-Planck equation of the most probable sequence, from the
-    median start separation. A sixth is t^2.5 of Richardson's t^3, which in an endless range is reached when pairs
-    have grown 19-fold.
+    8 K / r^2 in place of the ratio. D2(t) comes from the Fokker-Planck equation, from the median start separation. A
+    sixth is t^2.5 of Richardson's t^3, which in an endless range is reached when pairs have grown 19-fold.
 
-    Flag: a supported regime whose law would not show; where nothing is supported, no regime of the most probable
-    sequence but the diffusive one whose law would show. `size` is the largest factor among those judged. The verdict
-    changes where a supported regime is not within the 95 % interval of the slope over its stretch once the
-    spectrum may end at an outer scale.
+    That is asked of kernels drawn from all named sequences. Flag: a supported regime whose law would show under fewer
+    than half of them; where nothing is supported, fewer than half under which any regime but the diffusive one would
+    show its law. `size` is that share, the smallest of the supported regimes; the text tells of the most probable
+    kernel. The verdict changes where a supported regime is not within the 95 % interval of the slope over its stretch
+    once the spectrum may end at an outer scale.
 
     Parameters
     ----------
@@ -77,51 +49,47 @@ def range_width(subject: Subject) -> Finding:
     """
     kernel = best_kernel(subject)
     start = float(np.median(subject.pairs.start_separation))
-    found = growth(kernel, start, subject.resolved[1])
-    rooms = [_room(found, kernel, start, *piece) for piece in _pieces(subject, kernel)]
+    rooms = rooms_of(kernel, subject.fit.best, subject.resolved, start)
     stretches = supported(subject.fit)
-    if stretches:
-        judged = [room for room in rooms if any(_overlaps(room, s) for s in stretches)]
-        flag = not all(room.shows for room in judged)
-    else:
-        judged = [room for room in rooms if room.regime != "diffusive"]
-        flag = bool(judged) and not any(room.shows for room in judged)
-    narrow = [room for room in judged if not room.shows]
+    judged = [room for room in rooms if _judged(room, stretches)]
+    share = _share_that_shows(subject, stretches, start)
+    flag = share < LEAST and bool(judged or stretches)
+    narrow = [room for room in judged if not room.shows] or judged
     changes = [s for s in stretches if not _within(s, subject.fit.slope(s.low, s.high, subject.options.seed))]
+    where = (min(r.low for r in narrow), max(r.high for r in narrow)) if flag and narrow else None
+    text = [_threat(), *_sizes(judged, start, bool(stretches)), _chance(share, bool(stretches))]
     return Finding(
         "range",
         flag,
-        max((room.factor for room in judged), default=float("nan")),
-        "factor of separation over which relative dispersion would follow the law of a regime that is read",
-        (min(r.low for r in narrow), max(r.high for r in narrow)) if flag else None,
+        share,
+        "share of the kernels that agree with the data under which dispersion would follow the law of what is read",
+        where,
         bool(changes),
-        " ".join(
-            [_threat(), *_sizes(judged, start, bool(stretches)), _verdict(stretches, changes), _advice(flag, narrow)]
-        ),
+        " ".join([*text, _verdict(stretches, changes), _advice(flag)]),
     )
 
 
-def _pieces(subject: Subject, kernel: Kernel):
-    """Regime and ends [m], inside the resolved range, of each piece of the most probable sequence."""
+def _judged(room: Room, stretches: tuple[Stretch, ...]) -> bool:
+    """Whether a regime is read from the data: a supported one, or any but the diffusive where none is supported."""
+    if stretches:
+        return any(_overlaps(room, s) for s in stretches)
+    return room.regime != "diffusive"
+
+
+def _share_that_shows(subject: Subject, stretches: tuple[Stretch, ...], start: float) -> float:
+    """Share of the drawn kernels under which the law shows, the smallest of the supported regimes."""
+    named = [p for p in subject.fit.named if len(p.draws)]
+    rng = np.random.default_rng(subject.options.seed)
     low, high = subject.resolved
-    ends = np.clip([low, *kernel.breaks, high], low, high)
-    return [
-        (name, float(ends[i]), float(ends[i + 1]))
-        for i, name in enumerate(subject.fit.best)
-        if ends[i + 1] > ends[i] * (1.0 + 1e-9)
-    ]
-
-
-def _room(found: Growth, kernel: Kernel, start: float, regime: str, low: float, high: float) -> Room:
-    inside = (found.rms >= low) & (found.rms <= high)
-    return Room(
-        regime,
-        low,
-        high,
-        max(float(np.log10(high / max(low, start))), 0.0),
-        longest_factor(found.rms, law_holds(found, kernel, regime, (low, high))),
-        float(np.max(found.power[inside])) if np.any(inside) else float("nan"),
-    )
+    shown = []
+    for number, post in zip(rng.multinomial(_KERNELS, mixing_weights(named)), named, strict=True):
+        for theta in post.draws[rng.integers(len(post.draws), size=number)]:
+            exponents, breaks = post.model.exponents(theta), post.model.breaks(theta)
+            kernel = Kernel(exponents, breaks, float(np.exp(theta[0])), float(np.sqrt(low * high)))
+            shows = [room for room in rooms_of(kernel, post.model.pieces, (low, high), start) if room.shows]
+            wide = [any(_overlaps(room, s) for room in shows) for s in stretches]
+            shown.append(wide or [any(room.regime != "diffusive" for room in shows)])
+    return float(np.min(np.mean(shown, axis=0)))
 
 
 def _overlaps(room: Room, stretch: Stretch) -> bool:
@@ -182,12 +150,16 @@ def _verdict(stretches: tuple[Stretch, ...], changes: list[Stretch]) -> str:
     return f"Where the spectrum may end at an outer scale, {names} is no longer within the interval of the slope."
 
 
-def _advice(flag: bool, narrow: list[Room]) -> str:
+def _chance(share: float, is_supported: bool) -> str:
+    which = "the law of each supported regime" if is_supported else "some law"
+    return (
+        f"{which[0].upper()}{which[1:]} would show under {100 * share:.0f} % of the kernels that agree with the data."
+    )
+
+
+def _advice(flag: bool) -> str:
     if flag:
         return (
             "Do not look for the law in dispersion against time; quote the exponent over its range, not its name alone."
         )
-    if narrow:
-        names = listed(dict.fromkeys(REGIMES[room.regime].word for room in narrow))
-        return f"Of these do not look for {names} in dispersion against time; the rest has room."
-    return "The range is wide enough."
+    return "The range may be wide enough; hold dispersion against the prediction of the kernel, not against a law."
