@@ -131,8 +131,16 @@ def test_waves_of_a_tide_are_told_as_a_tide():
     subject = audited(on_plane(small(5, oscillation={"speed_m_s": 0.2, "period_h": TIDES["M2"] / HOUR})))
     found = oscillation(subject)
     assert found.flag
-    assert "near M2" in found.text or "near S2" in found.text  # half a day of beat apart: 8 days do not tell them
+    assert "near M2" in found.text
     assert "no latitude" in found.text
+
+
+def test_a_tide_that_turns_like_inertial_motion_keeps_its_name():
+    """At 31.5 degrees the inertial period is 22.9 h; the simulated wave turns anticyclonically every 12.4 h."""
+    subject = audited(small(5, oscillation={"speed_m_s": 0.1, "period_h": TIDES["M2"] / HOUR}))
+    found = lines(subject.tracks, subject.pairs)
+    assert not any(line.clear for line in found if line.name == "inertial")
+    assert max(found, key=lambda line: line.excess).name == "M2"
 
 
 @pytest.mark.parametrize("name", ["few pairs", "planar", "gaps", "short"])

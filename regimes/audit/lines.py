@@ -97,7 +97,7 @@ def lines(tracks: Tracks, pairs: Pairs) -> tuple[Line, ...]:
     ]
     inertial = any(line.clear for line in out)
     for name, period in tides.items():
-        near = inertial or (np.isfinite(turning) and abs(np.log(period / turning)) < 2.0 * np.log(NEXT))
+        near = inertial or (np.isfinite(turning) and abs(np.log(period / turning)) < np.log(NEXT))
         x = _over_neighbours(found, 2.0 * np.pi / period, near)
         out += _by_separation((name, period), x, bins, found, count)
     return tuple(out)
