@@ -11,12 +11,12 @@ from regimes.tracks import Tracks
 from regimes.units import DAY
 
 _ERRORS = 6.0  # position errors within which a place is the same
-_STILL = 0.02  # of the usual distance in a day
+_STILL = 0.005  # of the usual distance in a day
 _LASTS = DAY  # time at rest from which a particle is aground
 _FASTER = 3.0  # times the speed that one in a hundred steps exceeds
 _STRAIGHT = 0.9  # displacement over path
 _TIED = 0.05  # change of a separation that does not count
-_EFOLDS = 5.0  # times the mean time of a separation to grow by e, for which a tied pair stays
+_EFOLDS = 10.0  # times the mean time of a separation to grow by e, for which a tied pair stays
 _INSIDE = 0.95  # of the samples of a run
 
 
@@ -63,10 +63,11 @@ def suspects(tracks: Tracks, pairs: Pairs, vectors: Vectors, rate: float) -> Sus
 
     Notes
     -----
-    Common practice, no source. Aground: within six position errors, or 2 % of the usual distance in a day, of one place
-    for the last day of the record or longer. Aboard: at the end of the record in a straight line at three times the
-    speed that one in a hundred steps exceeds, of all particles and of its own. Tied: a separation that stays within six
-    errors, or 5 %, of what it was at first for five of the times in which separations grow by e.
+    Common practice, no source. Aground: within six position errors, or 0.5 % of the usual distance in a day, of one
+    place for the last day of the record or longer. Aboard: at the end of the record in a straight line at three times
+    the speed that one in a hundred steps exceeds, of all particles and of its own. Tied: a separation that stays within
+    six errors, or 5 %, of what it was at first for ten of the times in which separations grow by e (in simulated seas
+    with memory some stay for five).
     """
     speeds = [_speeds(tracks, i) for i in range(tracks.n_track)]
     known = np.concatenate(speeds)
