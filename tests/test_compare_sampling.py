@@ -1,6 +1,7 @@
 """Virtual deployments: they copy the design of the smaller set, and nothing of the larger one twice."""
 
 from dataclasses import replace
+from itertools import combinations
 
 import numpy as np
 import pytest
@@ -10,6 +11,7 @@ from regimes.compare.common import coarsened, common_step, with_error
 from regimes.compare.deployments import plan_of
 from regimes.compare.drawing import draw_launches
 from regimes.compare.launches import launches_of
+from regimes.compare.taking import some_gaps
 from regimes.errors import DataError
 from regimes.geodesy import to_cartesian, to_geographic
 from regimes.pairs import find_pairs
@@ -66,6 +68,29 @@ def test_records_are_cut_where_half_of_the_larger_set_ends(plan, small):
     own, _ = plan.observed(np.random.default_rng(1))
     assert plan.horizon == 20 * 8 + 1
     assert own.n_step.max() == plan.horizon < small.tracks.n_step.max()
+
+
+def test_losses_and_gaps_of_the_larger_set_do_not_come_on_top(small):
+    """A deployment keeps the pair days of the smaller set, and its share of missing steps."""
+    lossy = kernel_side(150, 6, duration_d=30.0, loss_per_d=0.02, gap_probability=0.004, gap_h=24.0)
+    plan = plan_of(small, lossy, Near(), 1)
+    own, own_pairs = plan.observed(np.random.default_rng(1))
+    drawn = [plan.draw(np.random.default_rng(k)) for k in range(20)]
+    length = np.mean([pairs.length.sum() for _, pairs in drawn])
+    assert length == pytest.approx(own_pairs.length.sum(), rel=0.03)  # 2 % of each record may be missing
+    missing = np.mean([np.isnan(tracks.position[:, 0]).mean() for tracks, _ in drawn])
+    assert 0.0 < plan.copied < 1.0
+    assert missing == pytest.approx(np.isnan(own.position[:, 0]).mean(), rel=0.15)
+
+
+def test_gaps_are_kept_or_filled_whole():
+    missing = np.array([3, 4, 5, 9, 20, 21])
+    rng = np.random.default_rng(1)
+    assert np.array_equal(some_gaps(missing, 1.0, rng), missing)
+    assert some_gaps(missing, 0.0, rng).size == 0
+    seen = {tuple(some_gaps(missing, 0.5, rng)) for _ in range(200)}
+    gaps = ((3, 4, 5), (9,), (20, 21))
+    assert seen == {sum(chosen, ()) for n in range(4) for chosen in combinations(gaps, n)}
 
 
 def test_matching_by_start_separation(large):

@@ -8,7 +8,7 @@ from regimes.compare.common import Side
 from regimes.compare.drawing import draw_launches, effective_launches
 from regimes.compare.launches import Launch, launches_of
 from regimes.compare.matching import FACTOR, LEAST, Choices, Near, choices_of
-from regimes.compare.taking import Part, missing_steps, taken
+from regimes.compare.taking import Part, missing_share, missing_steps, some_gaps, taken
 from regimes.errors import DataError
 from regimes.pairs import Pairs
 from regimes.tracks import Tracks
@@ -38,6 +38,8 @@ class Plan:
         Steps after which every record is cut: half the launches of the larger set last so long.
     effective : float
         Effective number of launches of the larger set that are drawn from.
+    copied : float
+        Share of the gaps of the smaller set that a deployment gets, beside those that its tracks have themselves.
     cautions : tuple of str
     """
 
@@ -48,6 +50,7 @@ class Plan:
     choices: tuple[Choices, ...]
     horizon: int
     effective: float
+    copied: float
     cautions: tuple[str, ...]
 
     @property
@@ -69,7 +72,7 @@ class Plan:
 
     def observed(self, rng: np.random.Generator) -> tuple[Tracks, Pairs]:
         """The smaller set as it is compared."""
-        parts = [self._part(launch, launch.members, launch.begin) for launch in self.launches]
+        parts = [self._part(launch, launch.members, launch.begin, 1.0, rng) for launch in self.launches]
         return taken(self.small.tracks, parts, self.position_error, rng)
 
     def draw(self, rng: np.random.Generator) -> tuple[Tracks, Pairs]:
@@ -77,14 +80,14 @@ class Plan:
         parts = []
         for launch, choices, i in zip(self.launches, self.choices, draw_launches(self.choices, rng), strict=True):
             source = self.reservoir[choices.launch[i]]
-            parts.append(self._part(launch, source.members[choices.members[i]], source.begin))
+            parts.append(self._part(launch, source.members[choices.members[i]], source.begin, self.copied, rng))
         return taken(self.large.tracks, parts, self.position_error, rng)
 
-    def _part(self, launch: Launch, members: np.ndarray, begin: int) -> Part:
-        """A launch's own records, cut at the horizon, put on other tracks."""
+    def _part(self, launch: Launch, members: np.ndarray, begin: int, copied: float, rng: np.random.Generator) -> Part:
+        """A launch's own records, cut at the horizon, put on other tracks with a share of its gaps."""
         n_step = np.minimum(launch.n_step, self.horizon)
         missing = tuple(
-            missing_steps(self.small.tracks, own, launch.begin, n)
+            some_gaps(missing_steps(self.small.tracks, own, launch.begin, n), copied, rng)
             for own, n in zip(launch.members, n_step, strict=True)
         )
         return Part(members, begin, n_step, missing, launch.pairs)
@@ -124,7 +127,8 @@ def plan_of(small: Side, large: Side, near: Near, seed: int) -> Plan:
     cut = [u.first(most) if u.size > most else u for u in launches]
     shrunk = sum(u.size > most for u in launches)
     usable = tuple(u for u in cut if len(u.pairs))
-    choices = choices_of((small.tracks, usable), (large.tracks, reservoir), near, seed)
+    horizon = int(np.median([u.n_step.max() for u in reservoir]))
+    choices = choices_of((small.tracks, usable), (large.tracks, reservoir), near, horizon, seed)
     effective = effective_launches(choices, len(reservoir), np.random.default_rng(seed))
     if effective < LEAST_EFFECTIVE * len(usable):
         raise DataError(
@@ -132,9 +136,10 @@ def plan_of(small: Side, large: Side, near: Near, seed: int) -> Plan:
             f"start separations, place and season to stand for the {len(usable)} of {small.name}; must be "
             f"{LEAST_EFFECTIVE:g} times as many; widen --same-place or --same-season, or start pairs as far apart"
         )
-    horizon = int(np.median([u.n_step.max() for u in reservoir]))
+    mine, theirs = (missing_share(*data, horizon) for data in ((small.tracks, usable), (large.tracks, reservoir)))
+    copied = max(0.0, 1.0 - theirs / mine) if mine > 0.0 else 1.0
     cautions = _cautions(small, large, (late, late_large, shrunk), choices)
-    return Plan(small, large, usable, reservoir, choices, horizon, effective, cautions)
+    return Plan(small, large, usable, reservoir, choices, horizon, effective, copied, cautions)
 
 
 def _cautions(small: Side, large: Side, counts: tuple[int, int, int], choices: tuple[Choices, ...]) -> tuple[str, ...]:

@@ -11,6 +11,7 @@ from regimes.errors import DataError
 from regimes.tracks import Tracks
 from regimes.units import DAY, KM
 
+SHORTER = 0.02  # share of a record that may be missing at its end
 FACTOR = 1.25  # start separations of a pair that count as the same
 LEAST = 10  # launches to choose among
 _WAYS = 60  # in which members of a launch are put in the places of another
@@ -66,11 +67,18 @@ class Near:
 
 
 def choices_of(
-    small: tuple[Tracks, tuple[Launch, ...]], large: tuple[Tracks, tuple[Launch, ...]], near: Near, seed: int
+    small: tuple[Tracks, tuple[Launch, ...]],
+    large: tuple[Tracks, tuple[Launch, ...]],
+    near: Near,
+    horizon: int,
+    seed: int,
 ) -> tuple[Choices, ...]:
-    """For every launch of the smaller set, those of the larger one whose pairs start as far apart.
+    """For every launch of the smaller set, those of the larger one whose pairs start as far apart and last as long.
 
-    Within a factor `FACTOR` in each pair; where fewer than `LEAST` launches are that near, the nearest `LEAST`.
+    Within a factor `FACTOR` in each pair; where fewer than `LEAST` launches are that near, the nearest `LEAST`. Of
+    these all whose members are followed as long as those they stand for (but for `SHORTER` of it, and up to `horizon`
+    steps); where fewer than `LEAST` are, those `LEAST` that come nearest. With shorter records deployments would have
+    fewer pairs than the set that is held against them, and kurtosis and the like depend on their number.
 
     Raises
     ------
@@ -82,37 +90,51 @@ def choices_of(
     by_size: dict[int, list[int]] = {}
     for i, launch in enumerate(large[1]):
         by_size.setdefault(launch.size, []).append(i)
-    tables = {m: (np.array(rows), np.array([large[1][i].apart for i in rows])) for m, rows in by_size.items()}
-    return tuple(
-        _choices(launch, tables, allowed[i], rng)
-        for i, launch in enumerate(small[1])
-    )  # fmt: skip
+    tables = {
+        m: (
+            np.array(rows),
+            np.array([large[1][i].apart for i in rows]),
+            np.minimum([large[1][i].n_step for i in rows], horizon),
+        )
+        for m, rows in by_size.items()
+    }
+    return tuple(_choices(launch, tables, allowed[i], horizon, rng) for i, launch in enumerate(small[1]))
 
 
-def _choices(launch: Launch, tables, allowed: np.ndarray, rng: np.random.Generator) -> Choices:
+def _choices(launch: Launch, tables, allowed: np.ndarray, horizon: int, rng: np.random.Generator) -> Choices:
     k = launch.size
     one, two = launch.pairs.T
     wanted = np.log(np.maximum(launch.apart[one, two], 1.0))
-    found, ways, misses = [], [], []
-    for m, (rows, apart) in tables.items():
+    need = np.minimum(launch.n_step, horizon)
+    found, ways, misses, shorts = [], [], [], []
+    for m, (rows, apart, n_step) in tables.items():
         mine = allowed[rows]
         if m < k or not np.any(mine):
             continue
         way = _ways(m, k, rng)
         there = np.log(np.maximum(apart[mine][:, way[:, one], way[:, two]], 1.0))
         miss = np.max(np.abs(there - wanted), axis=2)
+        short = np.max(1.0 - n_step[mine][:, way] / need, axis=2)
         which, how = np.nonzero(np.isfinite(miss))
         found.append(rows[mine][which])
         ways.append(way[how])
         misses.append(miss[which, how])
+        shorts.append(short[which, how])
     if not found:
         return Choices.of(np.empty(0, int), np.empty((0, k), int), np.inf)
-    launches, members, miss = np.concatenate(found), np.concatenate(ways), np.concatenate(misses)
-    best = np.full(allowed.size, np.inf)
-    np.minimum.at(best, launches, miss)
-    limit = max(np.log(FACTOR), float(np.sort(best)[min(LEAST, int(np.sum(np.isfinite(best)))) - 1]))
-    keep = miss <= limit + 1e-9
+    launches, members, miss, short = (np.concatenate(part) for part in (found, ways, misses, shorts))
+    near = miss <= _limit(launches, miss, np.log(FACTOR), allowed.size) + 1e-9
+    launches, members, miss, short = launches[near], members[near], miss[near], short[near]
+    keep = short <= _limit(launches, short, SHORTER, allowed.size) + 1e-9
     return Choices.of(launches[keep], members[keep], float(np.exp(miss[keep].max())))
+
+
+def _limit(launches: np.ndarray, miss: np.ndarray, enough: float, n: int) -> float:
+    """The largest miss that is taken: `enough`, or what leaves `LEAST` different launches."""
+    best = np.full(n, np.inf)
+    np.minimum.at(best, launches, miss)
+    there = np.sort(best[np.isfinite(best)])
+    return max(enough, float(there[min(LEAST, there.size) - 1]))
 
 
 def _ways(m: int, k: int, rng: np.random.Generator) -> np.ndarray:

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from regimes.compare.common import with_error
+from regimes.compare.launches import Launch
 from regimes.geodesy import separation
 from regimes.pairs import LAUNCHED, Pairs
 from regimes.tracks import Tracks
@@ -66,3 +67,21 @@ def missing_steps(tracks: Tracks, track: int, begin: int, n: int) -> np.ndarray:
     """Steps from `begin` on at which a track has no position."""
     row = tracks.offset[track] + begin - tracks.start_step[track]
     return np.flatnonzero(np.isnan(tracks.position[row : row + n, 0]))
+
+
+def some_gaps(missing: np.ndarray, share: float, rng: np.random.Generator) -> np.ndarray:
+    """The steps of whole gaps, each gap kept with a probability."""
+    if share >= 1.0 or missing.size == 0:
+        return missing
+    gap = np.cumsum(np.diff(missing, prepend=missing[0]) > 1)
+    return missing[rng.random(gap[-1] + 1)[gap] < share]
+
+
+def missing_share(tracks: Tracks, launches: tuple[Launch, ...], horizon: int) -> float:
+    """Share of the steps of launches, up to the horizon, that have no position."""
+    gone = steps = 0
+    for launch in launches:
+        for track, n in zip(launch.members, np.minimum(launch.n_step, horizon), strict=True):
+            gone += missing_steps(tracks, track, launch.begin, n).size
+            steps += int(n)
+    return gone / steps
