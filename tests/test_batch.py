@@ -242,6 +242,8 @@ def test_lines_say_what_the_verdict_says(tmp_path):
         assert f"{t['from']}-{t['to']} {t['median_km']:g} (" in row["transitions"]
     bound = document | {"slopes": [slope | {"kind": "lower_bound", "lo95": 2.26}]}
     assert page_row(outcome, bound)["alpha"] == "\u2265 2.3"
+    unsaid = [slope | {"curve": "separation", "median": 9.0}, slope | {"kind": "none", "median": 9.0}, slope]
+    assert table_row(outcome, document | {"slopes": unsaid})["alpha"] == slope["median"]
     assert page_row(outcome, document | {"slopes": []})["alpha"] == "none quoted"
 
 

@@ -277,10 +277,11 @@ def test_a_large_campaign_is_judged_as_its_fit_says(survey):
 
 def test_kernels_drawn_from_data_have_the_aimed_at_regime(survey):
     *_, fit = survey
-    truth = drawn_truth(fit, TARGET, 5)
-    assert truth.probability > 0.5
+    target = replace(TARGET, high=167 * KM)  # half of it ends where the regime does: some draws have it, some not
+    truth = drawn_truth(fit, target, 5)
+    assert 0.1 < truth.probability < 0.9
     kernels = [truth.kernel(number) for number in range(20)]
-    assert all(is_true(kernel, TARGET) for kernel in kernels)
+    assert all(is_true(kernel, target) for kernel in kernels)
     assert len({kernel.rate for kernel in kernels}) > 10
     np.testing.assert_array_equal(truth.kernel(3).breaks, kernels[3].breaks)
     with pytest.raises(DataError, match=r"the data leave a probability of .* to diffusive separation over half of"):
