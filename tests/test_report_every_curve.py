@@ -80,8 +80,8 @@ def test_agreement_of_all_of_none_and_of_nothing(others):
     assert agreement(replace(others, checks=good)).startswith("All 8 other curves agree")
     bad = tuple(replace(check, p_value=0.005) for check in others.checks)
     assert agreement(replace(others, checks=bad[:2])) == (
-        "None of 2 other curves agree with the kernels fitted to the exit rates (lowest p = 0.005). These dissent: relative "
-        "dispersion and mean log separation. "
+        "None of 2 other curves agree with the kernels fitted to the exit rates (lowest p = 0.005). These dissent: "
+        "relative dispersion and mean log separation. "
     )
     bare = replace(others, checks=(), checks_missing="too few times are left")
     assert agreement(bare) == "Curves in time are not held against the fitted kernels: too few times are left."
