@@ -5,9 +5,10 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from regimes.curves import exit_statistics
+from regimes.curves import credit, exit_statistics
 from regimes.curves.credit import credited_exits
 from regimes.likelihood.dispersion import measure_dispersion
+from regimes.synthetic.campaign import Layout, campaign
 from regimes.synthetic.kernel_flow import kernel_pairs
 from regimes.synthetic.releases import as_tracks_and_pairs
 from regimes.theory.kernel import Kernel
@@ -120,3 +121,15 @@ def test_a_pair_that_drifts_back_loses():
     credited = credited_exits(exit_statistics(tracks, pairs, THRESHOLDS))
     assert -0.644 <= credited[19, 3] < -0.3  # ln 0.8 over the step, or less where the rate falls
     assert np.all(credited[19, 4:] == 0)
+
+
+def test_credit_settles_where_full_steps_would_cycle(monkeypatch):
+    """Sparse outer thresholds: the last two rounds used to differ by a fifth, and even in sign."""
+    kernel = Kernel([2.0, 4 / 3], [10e3], 0.3 / 86400.0, 1e3)
+    tracks, pairs = campaign(kernel, Layout(40, 3, 300.0, 10800.0, 241, 10.0, 0.01 / 86400.0), 0)
+    statistics = exit_statistics(tracks, pairs, 500.0 * 2.0 ** (0.5 * np.arange(24)))
+    found = []
+    for rounds in (498, 499):
+        monkeypatch.setattr(credit, "_ROUNDS", rounds)
+        found.append(statistics.weight @ credit.credited_exits(statistics))
+    assert np.allclose(*found, rtol=1e-4, atol=1e-4)

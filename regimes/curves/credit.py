@@ -6,6 +6,7 @@ from regimes.curves.exit_rates import ExitStatistics
 
 _ROUNDS = 500
 _SETTLED = 1e-5  # relative change of the exits of every interval
+_STEP, _STEADY = 0.7, 40  # share of the change taken in each of so many rounds, less and less in later ones
 _LEAST = 0.25  # smallest number of exits, credit included, that a mean exit time is formed from
 
 
@@ -33,7 +34,8 @@ def credited_exits(statistics: ExitStatistics) -> np.ndarray:
     lasts (exponents 10 to 40 % too high at separations that a third of the pairs reached), and the first sample
     beyond a threshold lies further beyond, in time, at the next one (5 % too low where a tenth of the exits fall
     inside one sampling interval). T comes from the mean exit times themselves, hence the iteration;
-    between thresholds it follows the local power law.
+    between thresholds it follows the local power law. Sparse outer thresholds can make full steps cycle, so later
+    steps shrink.
 
     References
     ----------
@@ -47,13 +49,13 @@ def credited_exits(statistics: ExitStatistics) -> np.ndarray:
     scale = np.maximum(weight @ statistics.exits, 1.0)
     gained = weight @ statistics.exits
     with np.errstate(divide="ignore", invalid="ignore"):
-        for _ in range(_ROUNDS):
+        for done in range(_ROUNDS):
             clock = _Clock(start, risk / np.maximum(gained, _LEAST), gained)
             credit, over = clock.credit(statistics), clock.overshoot(statistics)
             level, where = statistics.loose_interval, statistics.loose_row
             new = whole + weight @ over + np.bincount(level, weight[where] * credit, whole.size)
             moved = np.max(np.abs(new - gained) / scale)
-            gained += 0.7 * (new - gained)
+            gained += _STEP * min(1.0, _STEADY / max(done, 1)) * (new - gained)
             if moved < _SETTLED:
                 break
     table = statistics.exits - statistics.at_once + over
