@@ -1,13 +1,17 @@
 """Ranks among deployments, runs of bins, the usual comparison, and the words of the decision."""
 
-from dataclasses import replace
+from dataclasses import dataclass
 
 import numpy as np
 import pytest
+from scipy.stats import ks_2samp
 
-from regimes.compare.measured import Grid, Measured
+from regimes.compare.departure import departure, distances
+from regimes.compare.drawing import Pools
+from regimes.compare.grid import Grid
 from regimes.compare.ranks import LEVEL, Ranks, rank_curves
 from regimes.compare.runs import run_means, telling_bins, windows
+from regimes.compare.sums import N_BIN
 from regimes.compare.unmatched import unmatched_p
 from regimes.compare.words import TELLS, decide, place
 from tests.compare_worlds import FASTER_BELOW_10, kernel_side, some
@@ -15,86 +19,103 @@ from tests.compare_worlds import FASTER_BELOW_10, kernel_side, some
 DAYS = 86400.0 * np.arange(1.0, 11.0)
 GRID = Grid(1000.0 * 2.0 ** np.arange(11), DAYS, DAYS, np.empty(0))
 NAMES = ("exponent", "relative_dispersion", "mean_log_growth", "kurtosis")
+SMALL, LARGE = 8, 80
 
 
-def made(rng, n=1, shift=0.0):
-    """Measured curves of ten bins of which all share half of their variance, and normal samples."""
-    out = []
-    for _ in range(n):
-        common = rng.standard_normal(10)
-        curves = {name: (common + rng.standard_normal(10)) / np.sqrt(2.0) for name in NAMES}
-        curves["exponent"] = curves["exponent"] + shift
-        out.append(Measured(curves, tuple(np.sort(rng.lognormal(size=20)) for _ in range(3))))
-    return out
+@dataclass(frozen=True)
+class Made:
+    """A table of launches whose curves are means of normal numbers, half of their variance shared by all bins."""
+
+    rows: np.ndarray
+    bins: np.ndarray
+    grid: Grid = GRID
+
+    def curves(self, chosen):
+        means = self.rows[chosen].mean(axis=1)
+        counts = np.zeros((len(chosen), 3, N_BIN))
+        for k in range(len(chosen)):
+            np.add.at(counts[k], (slice(None), self.bins[chosen[k]]), 1.0)
+        return {name: means[:, i] for i, name in enumerate(NAMES)} | {"separation_distribution": counts}
+
+
+def made(seed: int, shift: float = 0.0) -> Made:
+    """Eight launches, whose exponents are shifted, and eighty others."""
+    rng = np.random.default_rng(seed)
+    rows = rng.standard_normal((SMALL + LARGE, 4, 1)) + rng.standard_normal((SMALL + LARGE, 4, 10))
+    rows[:SMALL, 0] += shift
+    return Made(rows, rng.integers(0, N_BIN, SMALL + LARGE))
+
+
+POOLS = Pools((np.arange(LARGE),) * SMALL, (SMALL + np.arange(LARGE),) * SMALL, LARGE)
+
+
+def ranked(table: Made, n: int = 99, seed: int = 1) -> Ranks:
+    return rank_curves(table, POOLS, np.arange(SMALL), n, seed)
+
+
+def test_p_is_uniform_where_both_come_from_one_law():
+    """25 pairs of sets: p under 0.05 in at most 5 (binomial: 1 in 500 above), and a mean near one half."""
+    p = np.array([ranked(made(seed), 39).p_value for seed in range(25)])
+    assert np.sum(p <= 0.05) <= 5
+    assert abs(p.mean() - 0.5) < 4 * np.sqrt(1 / 12 / 25)
 
 
 @pytest.fixture(scope="module")
-def drawn():
-    return made(np.random.default_rng(1), 99)
+def far():
+    return ranked(made(3, shift=4.0))
 
 
-def test_deployments_ranked_among_themselves_have_a_uniform_p(drawn):
-    """200 sets from the same law: p under 0.05 in at most 21 (binomial: 1 in 1000 above), and not always large."""
-    rng = np.random.default_rng(2)
-    p = np.array([rank_curves(made(rng)[0], drawn, GRID, 1.0).p_value for _ in range(200)])
-    assert np.sum(p < 0.05) <= 21
-    assert 0.4 < p.mean() < 0.6  # standard error 0.02, and 99 deployments for the law
-
-
-def test_one_curve_far_off_is_found_however_many_agree(drawn):
-    seen = made(np.random.default_rng(3), shift=6.0)[0]
-    found = rank_curves(seen, drawn, GRID, 1.0)
-    assert found.p_value == pytest.approx(1 / 100)  # the smallest that 99 deployments can give
-    by = {c.curve: c for c in found.curves}
+def test_one_curve_far_off_is_found_however_many_agree(far):
+    assert far.p_value == pytest.approx(1 / 100)  # the smallest that 99 deployments can give
+    by = {c.curve: c for c in far.curves}
     assert by["exponent"].p_value == pytest.approx(1 / 100)
     assert np.array_equal(by["exponent"].differs_at, GRID.thresholds[:-1])
     assert np.all(by["exponent"].rank == 1.0)
     assert by["kurtosis"].differs_at.size == 0
 
 
+def test_what_is_expected_is_as_wide_as_a_new_sample_about_the_mean_of_the_larger_set(far):
+    """Variance 2 / 8 of a mean of eight, and 2 / 80 of the mean of eighty; 99 draws of ten bins that go together."""
+    curve = next(c for c in far.curves if c.curve == "mean_log_growth")
+    half = 0.25 * np.mean(curve.band[3] - curve.band[1]) + 0.25 * np.mean(curve.band[4] - curve.band[0]) / 1.96
+    assert half == pytest.approx(np.sqrt(2 / 8 + 2 / 80), rel=0.25)
+
+
 def test_a_shift_too_small_for_any_bin_is_found_over_all_of_them():
-    """Half a standard deviation in each of ten independent bins."""
-    rng = np.random.default_rng(5)
-    rows = [
-        Measured({"exponent": rng.standard_normal(10)}, tuple(np.sort(rng.random(9)) for _ in range(3)))
-        for _ in range(199)
-    ]
-    seen = Measured({"exponent": np.full(10, 1.5)}, tuple(np.sort(rng.random(9)) for _ in range(3)))
-    curve = rank_curves(seen, rows, GRID, 1.0).curves[0]
-    assert np.max(np.abs(curve.away)) < 2.0  # no single bin would stand out among ten
-    assert curve.p_value < 0.02
+    """A curve 1.5 standard deviations off in each of ten independent bins."""
+    rows = np.random.default_rng(5).standard_normal((199, 10))
+    seen = departure(np.full(10, 1.5), rows)
+    assert np.max(np.abs(seen.away)) < 2.0  # no single bin would stand out among ten
+    others = [departure(row, np.delete(rows, k, axis=0)).test for k, row in enumerate(rows)]
+    assert np.mean(np.array(others) >= seen.test) < 0.02
 
 
-def test_order_and_unit_do_not_matter(drawn):
-    seen = made(np.random.default_rng(7))[0]
-    first = rank_curves(seen, drawn, GRID, 1.3)
-    shuffled = rank_curves(seen, [drawn[i] for i in np.random.default_rng(1).permutation(99)], GRID, 1.3)
-    assert shuffled.p_value == first.p_value
-
-    def longer(m):
-        curves = {
-            name: v + (np.log(7.0) if name in ("exponent", "relative_dispersion") else 0.0)
-            for name, v in m.curves.items()
-        }
-        return Measured(curves, tuple(7.0 * s for s in m.samples))
-
-    scaled = rank_curves(longer(seen), [longer(m) for m in drawn], GRID, 1.3)
-    assert [c.p_value for c in scaled.curves] == [c.p_value for c in first.curves]
-    assert scaled.factor == pytest.approx(first.factor)
+def test_departures_keep_under_a_change_of_units_and_of_order():
+    rng = np.random.default_rng(2)
+    rows, value = rng.standard_normal((50, 10)), rng.standard_normal(10)
+    first = departure(value, rows)
+    scaled = departure(3.0 * value + 5.0, 3.0 * rows[rng.permutation(50)] + 5.0)
+    assert scaled.run_away == pytest.approx(first.run_away)
+    assert scaled.apart == pytest.approx(3.0 * first.apart)
 
 
-def test_a_smaller_large_set_asks_for_more(drawn):
-    seen = made(np.random.default_rng(3), shift=1.2)[0]
-    p = [rank_curves(seen, drawn, GRID, scale).p_value for scale in (1.0, 1.5, 2.5)]
-    assert p[0] <= p[1] <= p[2]
-    assert p[0] < p[2]
+def test_distances_by_brute_force():
+    rng = np.random.default_rng(2)
+    rows = rng.integers(0, 5, (20, 3, N_BIN)).astype(float)
+    counts = rng.integers(0, 5, (3, N_BIN)).astype(float)
+    found = distances(counts, rows)
+    for k in range(3):
+        pool = np.repeat(np.arange(N_BIN), rows[:, k].sum(axis=0).astype(int))
+        sample = np.repeat(np.arange(N_BIN), counts[k].astype(int))
+        assert found.apart[k] == pytest.approx(ks_2samp(sample, pool).statistic)
 
 
-def test_bins_that_few_deployments_have_are_left_out(drawn):
-    gappy = [replace(m, curves=m.curves | {"kurtosis": np.append(m.curves["kurtosis"][:9], np.nan)}) for m in drawn]
-    found = {c.curve: c for c in rank_curves(made(np.random.default_rng(7))[0], gappy, GRID, 1.0).curves}
-    assert found["kurtosis"].axis.size == 9
-    assert found["exponent"].axis.size == 10
+def test_bins_that_few_deployments_have_are_left_out():
+    table = made(4)
+    table.rows[:, 3, 9] = np.where(np.arange(SMALL + LARGE) < SMALL + 20, np.nan, table.rows[:, 3, 9])
+    by = {c.curve: c for c in ranked(table).curves}
+    assert by["kurtosis"].axis.size == 9
+    assert by["exponent"].axis.size == 10
 
 
 def test_runs_by_brute_force():
@@ -124,10 +145,9 @@ def test_decision():
     assert judged(0.9, np.nan) == "undecided"
 
 
-def test_place_in_words(drawn):
-    curves = rank_curves(made(np.random.default_rng(3), shift=6.0)[0], drawn, GRID, 1.0).curves
-    assert place(curves[0]) == "1.0 to 512 km"
-    assert place(next(c for c in curves if c.curve == "kurtosis")) == ""
+def test_place_in_words(far):
+    assert place(far.curves[0]) == "1.0 to 512 km"
+    assert place(next(c for c in far.curves if c.curve == "kurtosis")) == ""
 
 
 def test_the_usual_comparison():

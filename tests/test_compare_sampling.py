@@ -9,7 +9,7 @@ import pytest
 from regimes.compare import Near, Side, side_of
 from regimes.compare.common import coarsened, common_step, with_error
 from regimes.compare.deployments import plan_of
-from regimes.compare.drawing import draw_launches
+from regimes.compare.drawing import Pools
 from regimes.compare.launches import launches_of
 from regimes.compare.taking import some_gaps
 from regimes.errors import DataError
@@ -34,34 +34,55 @@ def plan(small, large):
     return plan_of(small, large, Near(), 1)
 
 
-def test_a_deployment_has_the_design_of_the_smaller_set(plan):
+def test_what_stands_for_a_launch_has_its_design(plan):
     own, own_pairs = plan.observed(np.random.default_rng(1))
-    drawn, pairs = plan.draw(np.random.default_rng(2))
-    assert np.array_equal(pairs.first, own_pairs.first)
-    assert np.array_equal(pairs.cluster, own_pairs.cluster)
-    assert np.array_equal(pairs.length, own_pairs.length)  # the larger set lasts 20 days, and so do both
-    assert np.array_equal(drawn.offset, own.offset)
-    assert np.array_equal(np.isnan(drawn.position), np.isnan(own.position))
     assert np.any(np.isnan(own.position))
-    assert drawn.position_error == own.position_error == 10.0
-    ratio = np.log(pairs.start_separation / own_pairs.start_separation)
-    assert np.max(np.abs(ratio)) < np.log(1.25) + 0.2  # errors of 10 m at 400 m, four standard deviations
+    for unit, choices in enumerate(plan.choices):
+        tracks, pairs = plan.stand_ins(unit, np.random.default_rng(2))
+        mine = own_pairs.cluster[own_pairs.first] == unit
+        rows = own.release == unit
+        assert pairs.n_cluster == choices.launch.size
+        for k in (0, pairs.n_cluster - 1):
+            theirs = pairs.cluster[pairs.first] == k
+            # the larger set lasts 20 days without a loss, and so do both
+            assert np.array_equal(pairs.length[theirs], own_pairs.length[mine])
+            ratio = np.log(pairs.start_separation[theirs] / own_pairs.start_separation[mine])
+            assert np.max(np.abs(ratio)) < np.log(1.25) + 0.2  # errors of 10 m at 400 m, four standard deviations
+            assert np.array_equal(blank(tracks, tracks.release == k), blank(own, rows))
+    assert tracks.position_error == own.position_error == 10.0
+
+
+def blank(tracks, chosen):
+    """Missing steps of some tracks, one after the other."""
+    number = np.repeat(np.arange(tracks.n_track), tracks.n_step)
+    return np.isnan(tracks.position[chosen[number], 0])
 
 
 def test_no_launch_stands_twice_in_a_deployment(plan):
-    for seed in range(20):
-        chosen = draw_launches(plan.choices, np.random.default_rng(seed))
-        launches = [c.launch[i] for c, i in zip(plan.choices, chosen, strict=True)]
-        assert len(set(launches)) == len(launches)
+    rows, launches = plan.pools.draw(200, np.random.default_rng(1))
+    assert all(len(set(drawn)) == len(plan.launches) for drawn in launches)
+    start = len(plan.launches) + np.cumsum([0, *(c.launch.size for c in plan.choices)])
+    for unit, choices in enumerate(plan.choices):
+        assert np.array_equal(choices.launch[rows[:, unit] - start[unit]], launches[:, unit])
+
+
+def test_what_is_banned_is_not_drawn(plan):
+    _, launches = plan.pools.draw(50, np.random.default_rng(1), banned=np.arange(30))
+    assert launches.min() == 30
 
 
 def test_every_launch_is_drawn_as_often_where_all_are_alike(plan):
-    """1800 draws of 60 launches: within 5 standard errors of 30 each, at most."""
-    used = np.zeros(60)
-    for seed in range(200):
-        for c, i in zip(plan.choices, draw_launches(plan.choices, np.random.default_rng(seed)), strict=True):
-            used[c.launch[i]] += 1
+    """9 x 200 draws of 60 launches: within 5 standard errors of 30 each, at most."""
+    _, launches = plan.pools.draw(200, np.random.default_rng(3))
+    used = np.bincount(launches.ravel(), minlength=60)
     assert np.max(np.abs(used - 30.0)) < 5 * np.sqrt(30.0)
+    assert plan.pools.effective == pytest.approx(60, rel=0.15)
+
+
+def test_choices_that_do_not_suffice():
+    pools = Pools((np.array([4]), np.array([4])), (np.array([2]), np.array([3])), 5)
+    with pytest.raises(DataError, match="2 groups that cannot all be given a group of their own of the larger case"):
+        pools.draw(3, np.random.default_rng(1))
 
 
 def test_records_are_cut_where_half_of_the_larger_set_ends(plan, small):
@@ -75,12 +96,15 @@ def test_losses_and_gaps_of_the_larger_set_do_not_come_on_top(small):
     lossy = kernel_side(150, 6, duration_d=30.0, loss_per_d=0.02, gap_probability=0.004, gap_h=24.0)
     plan = plan_of(small, lossy, Near(), 1)
     own, own_pairs = plan.observed(np.random.default_rng(1))
-    drawn = [plan.draw(np.random.default_rng(k)) for k in range(20)]
-    length = np.mean([pairs.length.sum() for _, pairs in drawn])
+    length, missing, steps = 0.0, 0, 0
+    for unit in range(len(plan.launches)):
+        tracks, pairs = plan.stand_ins(unit, np.random.default_rng(unit))
+        length += pairs.length.sum() / pairs.n_cluster
+        missing += np.isnan(tracks.position[:, 0]).sum()
+        steps += len(tracks.position)
     assert length == pytest.approx(own_pairs.length.sum(), rel=0.03)  # 2 % of each record may be missing
-    missing = np.mean([np.isnan(tracks.position[:, 0]).mean() for tracks, _ in drawn])
     assert 0.0 < plan.copied < 1.0
-    assert missing == pytest.approx(np.isnan(own.position[:, 0]).mean(), rel=0.15)
+    assert missing / steps == pytest.approx(np.isnan(own.position[:, 0]).mean(), rel=0.15)
 
 
 def test_gaps_are_kept_or_filled_whole():
@@ -109,11 +133,10 @@ def test_matching_by_start_separation(large):
     both = side_of("both", tracks, find_pairs(tracks, max_separation=4 * KM))[0]
     observed = some(wide, np.arange(8))
     plan = plan_of(observed, both, Near(), 1)
-    assert {c.distinct.size for c in plan.choices} == {60}
-    assert plan.effective == pytest.approx(60, rel=0.15)  # Monte Carlo of 1600 draws
+    assert {c.launch.size for c in plan.choices} == {60}
+    assert plan.pools.effective == pytest.approx(60, rel=0.15)  # Monte Carlo of 1600 draws
     assert plan.cautions == ()
-    for seed in range(3):
-        assert plan.draw(np.random.default_rng(seed))[1].start_separation.min() > 1300.0
+    assert plan.stand_ins(0, np.random.default_rng(1))[1].start_separation.min() > 1300.0
 
 
 def test_starts_that_nothing_matches_are_said(small, large):
@@ -146,9 +169,9 @@ def test_season_chooses_among_launches(large):
     plan = plan_of(observed, large, Near(season=2 * DAY), 1)
     begin = np.array([u.begin for u in plan.reservoir]) * large.tracks.step
     for launch, choices in zip(plan.launches, plan.choices, strict=True):
-        apart = np.abs(begin[choices.distinct] - launch.begin * large.tracks.step)
+        apart = np.abs(begin[choices.launch] - launch.begin * large.tracks.step)
         assert apart.max() <= 2 * DAY
-    assert 40 < plan.effective < 60
+    assert 40 < plan.pools.effective < 60
 
 
 def test_place_needs_the_same_kind_of_positions(small, large):
@@ -161,20 +184,6 @@ def test_place_that_nothing_shares(small, large):
     away = replace(large.tracks, position=large.tracks.position + 1e6)
     with pytest.raises(DataError, match=r"got 9 of 9 groups with no group of the other case within 5 km; .* widen"):
         plan_of(small, replace(large, tracks=away), Near(place=5 * KM), 1)
-
-
-def test_scale_is_the_spread_of_a_new_sample_over_that_of_draws_without_replacement(plan):
-    """Plain normal numbers by brute force; 4000 replicates, within 4 standard errors of a standard deviation."""
-    n, many, size = len(plan.launches), 4000, round(plan.effective)
-    rng = np.random.default_rng(4)
-    ratio = np.empty(many)
-    for i in range(many):
-        everything = rng.standard_normal(size)
-        chosen = rng.permuted(np.tile(everything, (100, 1)), axis=1)[:, :n].mean(axis=1)
-        ratio[i] = (rng.standard_normal(n).mean() - everything.mean()) / chosen.std(ddof=1)
-    # a standard deviation from 100 draws makes the ratio Student's t with 99 degrees of freedom
-    expected = plan.scale * np.sqrt(99 / 97)
-    assert ratio.std() == pytest.approx(expected, rel=4 / np.sqrt(2 * many))
 
 
 def test_coarser_steps_keep_every_so_many_th_fix(small):

@@ -7,8 +7,9 @@ from scipy.stats import binom, kstest
 from regimes.compare import Near, Side
 from regimes.compare.deployments import plan_of
 from regimes.compare.fitted import common_thresholds
-from regimes.compare.measured import grid_of, measure
+from regimes.compare.grid import grid_of
 from regimes.compare.ranks import LEVEL, Ranks, rank_curves
+from regimes.compare.sides import sampled
 from regimes.compare.unmatched import unmatched_p
 from regimes.fitting import Options, exit_rates
 from tests.compare_worlds import FASTER_BELOW_10, kernel_side, sea_side, some
@@ -24,8 +25,8 @@ def ranked(small: Side, large: Side, seed: int, n: int = 99) -> tuple[Ranks, np.
     likelihoods = [exit_rates(*data, Options()).likelihood for data in ((tracks, pairs), plan.whole(large, rng))]
     thresholds = common_thresholds(*likelihoods)
     grid = grid_of(tracks, pairs, thresholds)
-    drawn = [measure(*plan.draw(rng), grid) for _ in range(n)]
-    return rank_curves(measure(tracks, pairs, grid), drawn, grid, plan.scale), thresholds
+    table, _ = sampled(plan, grid, (tracks, pairs), rng)
+    return rank_curves(table, plan.pools, np.arange(len(plan.launches)), n, seed), thresholds
 
 
 def few(bank: Side, k: int) -> Side:

@@ -30,11 +30,11 @@ def caption(name: str, comparison: Comparison) -> str:
     smaller, larger = ("model", "observed case") if design.larger == "observed" else ("observed case", "model")
     return (
         f"Points: {smaller}, {count(design.groups_small)} groups. Shading and line: 68 and 95 % of "
-        f"{count(design.deployments)} virtual deployments of the {larger}, sampled alike, and their middle, widened "
-        "for the finite size of the larger case. Diamonds: where a curve of p under 0.05 differs. Times count from "
-        "the first passage of the smallest separation, those of the mean log growth (of r over that at the start) from "
-        "the start. The last panel shows distances (Kolmogorov-Smirnov) from the separations of all deployments "
-        "together, of which only large ones count."
+        f"{count(design.deployments)} virtual deployments of the {larger}, sampled alike, about their middle, "
+        "each held against others that share no group with it. Diamonds: where a curve of p under 0.05 differs. Times "
+        "count from the first passage of the smallest separation, those of the mean log growth (of r over that at the "
+        "start) from the start. The last panel shows distances (Kolmogorov-Smirnov) from the separations of all "
+        "deployments together, of which only large ones count."
     )
 
 

@@ -1,11 +1,12 @@
 """Virtual deployments: the larger data set taken as the smaller one was."""
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
 from regimes.compare.common import Side
-from regimes.compare.drawing import draw_launches, effective_launches
+from regimes.compare.drawing import Pools
 from regimes.compare.launches import Launch, launches_of
 from regimes.compare.matching import FACTOR, LEAST, Choices, Near, choices_of
 from regimes.compare.taking import Part, missing_share, missing_steps, some_gaps, taken
@@ -36,8 +37,6 @@ class Plan:
         For each launch of the smaller set.
     horizon : int
         Steps after which every record is cut: half the launches of the larger set last so long.
-    effective : float
-        Effective number of launches of the larger set that are drawn from.
     copied : float
         Share of the gaps of the smaller set that a deployment gets, beside those that its tracks have themselves.
     cautions : tuple of str
@@ -49,7 +48,6 @@ class Plan:
     reservoir: tuple[Launch, ...]
     choices: tuple[Choices, ...]
     horizon: int
-    effective: float
     copied: float
     cautions: tuple[str, ...]
 
@@ -58,30 +56,27 @@ class Plan:
         """Of both sets as they are compared: the larger of the two [m]."""
         return max(self.small.tracks.position_error, self.large.tracks.position_error)
 
-    @property
-    def scale(self) -> float:
-        r"""How much farther the smaller set may lie from the mean of the deployments than they themselves.
-
-        .. math:: c = \sqrt{\frac{1 + f}{1 - f}}, \quad f = n_{small} / n_{large}
-
-        The mean of the larger set has an error of its own (1 + f), and deployments drawn from it without replacement
-        differ less than new ones would (1 - f).
-        """
-        share = len(self.launches) / self.effective
-        return float(np.sqrt((1.0 + share) / (1.0 - share)))
-
     def observed(self, rng: np.random.Generator) -> tuple[Tracks, Pairs]:
         """The smaller set as it is compared."""
         parts = [self._part(launch, launch.members, launch.begin, 1.0, rng) for launch in self.launches]
         return taken(self.small.tracks, parts, self.position_error, rng)
 
-    def draw(self, rng: np.random.Generator) -> tuple[Tracks, Pairs]:
-        """One virtual deployment."""
-        parts = []
-        for launch, choices, i in zip(self.launches, self.choices, draw_launches(self.choices, rng), strict=True):
-            source = self.reservoir[choices.launch[i]]
-            parts.append(self._part(launch, source.members[choices.members[i]], source.begin, self.copied, rng))
+    def stand_ins(self, unit: int, rng: np.random.Generator) -> tuple[Tracks, Pairs]:
+        """All that can stand for one launch of the smaller set, each a cluster, in the order of its choices."""
+        launch, choices = self.launches[unit], self.choices[unit]
+        parts = [
+            self._part(launch, self.reservoir[i].members[members], self.reservoir[i].begin, self.copied, rng)
+            for i, members in zip(choices.launch, choices.members, strict=True)
+        ]
         return taken(self.large.tracks, parts, self.position_error, rng)
+
+    @property
+    def pools(self) -> Pools:
+        """Choices by their rows: those of the smaller set come first, then the choices of each of its launches."""
+        sizes = [len(self.launches), *(c.launch.size for c in self.choices)]
+        start = np.cumsum(sizes)
+        rows = tuple(np.arange(a, b) for a, b in pairwise(start))
+        return Pools(tuple(c.launch for c in self.choices), rows, len(self.reservoir))
 
     def _part(self, launch: Launch, members: np.ndarray, begin: int, copied: float, rng: np.random.Generator) -> Part:
         """A launch's own records, cut at the horizon, put on other tracks with a share of its gaps."""
@@ -129,17 +124,18 @@ def plan_of(small: Side, large: Side, near: Near, seed: int) -> Plan:
     usable = tuple(u for u in cut if len(u.pairs))
     horizon = int(np.median([u.n_step.max() for u in reservoir]))
     choices = choices_of((small.tracks, usable), (large.tracks, reservoir), near, horizon, seed)
-    effective = effective_launches(choices, len(reservoir), np.random.default_rng(seed))
+    mine, theirs = (missing_share(*data, horizon) for data in ((small.tracks, usable), (large.tracks, reservoir)))
+    copied = max(0.0, 1.0 - theirs / mine) if mine > 0.0 else 1.0
+    cautions = _cautions(small, large, (late, late_large, shrunk), choices)
+    plan = Plan(small, large, usable, reservoir, choices, horizon, copied, cautions)
+    effective = plan.pools.effective
     if effective < LEAST_EFFECTIVE * len(usable):
         raise DataError(
             f"compare: got {len(reservoir)} groups in {large.name}, of which only {effective:.0f} are alike enough in "
             f"start separations, place and season to stand for the {len(usable)} of {small.name}; must be "
             f"{LEAST_EFFECTIVE:g} times as many; widen --same-place or --same-season, or start pairs as far apart"
         )
-    mine, theirs = (missing_share(*data, horizon) for data in ((small.tracks, usable), (large.tracks, reservoir)))
-    copied = max(0.0, 1.0 - theirs / mine) if mine > 0.0 else 1.0
-    cautions = _cautions(small, large, (late, late_large, shrunk), choices)
-    return Plan(small, large, usable, reservoir, choices, horizon, effective, copied, cautions)
+    return plan
 
 
 def _cautions(small: Side, large: Side, counts: tuple[int, int, int], choices: tuple[Choices, ...]) -> tuple[str, ...]:

@@ -50,7 +50,6 @@ def document(comparison: Comparison) -> dict[str, Any]:
                 "step_h": design.step / 3600.0,
                 "horizon_d": design.horizon / DAY,
                 "position_error_m": design.position_error,
-                "scale": design.scale,
             },
             "cautions": list(comparison.cautions),
             "seed": comparison.seed,

@@ -14,6 +14,7 @@ from regimes.units import DAY, KM
 SHORTER = 0.02  # share of a record that may be missing at its end
 FACTOR = 1.25  # start separations of a pair that count as the same
 LEAST = 10  # launches to choose among
+MOST = 300  # the same; of more, so many at random
 _WAYS = 60  # in which members of a launch are put in the places of another
 _YEAR = 365.2425 * DAY
 
@@ -25,29 +26,16 @@ class Choices:
     Parameters
     ----------
     launch : (n,) int array
-        Of the larger set, each once or more, in order.
+        Of the larger set, each once.
     members : (n, k) int array
         Its members in the order of those they stand for.
     factor : float
         Largest ratio of start separations.
-    distinct : (d,) int array
-        The launches, each once.
-    start : (d + 1,) int array
-        Launch i of `distinct` has the rows ``start[i]:start[i + 1]``.
     """
 
     launch: np.ndarray
     members: np.ndarray
     factor: float
-    distinct: np.ndarray
-    start: np.ndarray
-
-    @classmethod
-    def of(cls, launch: np.ndarray, members: np.ndarray, factor: float) -> "Choices":
-        """From launches in any order."""
-        order = np.argsort(launch, kind="stable")
-        distinct, first = np.unique(launch[order], return_index=True)
-        return cls(launch[order], members[order], factor, distinct, np.append(first, launch.size))
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,12 +109,18 @@ def _choices(launch: Launch, tables, allowed: np.ndarray, horizon: int, rng: np.
         misses.append(miss[which, how])
         shorts.append(short[which, how])
     if not found:
-        return Choices.of(np.empty(0, int), np.empty((0, k), int), np.inf)
+        return Choices(np.empty(0, int), np.empty((0, k), int), np.inf)
     launches, members, miss, short = (np.concatenate(part) for part in (found, ways, misses, shorts))
     near = miss <= _limit(launches, miss, np.log(FACTOR), allowed.size) + 1e-9
     launches, members, miss, short = launches[near], members[near], miss[near], short[near]
-    keep = short <= _limit(launches, short, SHORTER, allowed.size) + 1e-9
-    return Choices.of(launches[keep], members[keep], float(np.exp(miss[keep].max())))
+    keep = np.flatnonzero(short <= _limit(launches, short, SHORTER, allowed.size) + 1e-9)
+    one_way = rng.permutation(keep)
+    distinct, first = np.unique(launches[one_way], return_index=True)
+    if distinct.size > MOST:
+        chosen = np.sort(rng.choice(distinct.size, MOST, replace=False))
+        distinct, first = distinct[chosen], first[chosen]
+    taken = one_way[first]
+    return Choices(distinct, members[taken], float(np.exp(miss[taken].max())))
 
 
 def _limit(launches: np.ndarray, miss: np.ndarray, enough: float, n: int) -> float:

@@ -46,8 +46,6 @@ class Design:
         After which records of both were cut.
     position_error : float [m]
         Of both.
-    scale : float
-        By which departures were widened for the finite size of the larger case, see `Plan.scale`.
     """
 
     larger: str
@@ -58,7 +56,6 @@ class Design:
     step: float
     horizon: float
     position_error: float
-    scale: float
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,20 +8,21 @@ import numpy as np
 from regimes.compare.common import Side, common_step
 from regimes.compare.deployments import Plan, plan_of, shortfall
 from regimes.compare.fitted import Fitted, common_thresholds, fitted_alike
+from regimes.compare.grid import Grid, grid_of
 from regimes.compare.launches import launches_of
 from regimes.compare.matching import Near
-from regimes.compare.measured import Grid, Measured, grid_of, measure
 from regimes.compare.ranks import Ranks, rank_curves
 from regimes.compare.record import Comparison, Design, Input
+from regimes.compare.sums import Raw, Table, raw_sums, table_of
 from regimes.compare.unmatched import unmatched_p
 from regimes.compare.words import decide, sentence
-from regimes.errors import DataError
 from regimes.fitting import Options, QuickFit, quick_fit
+from regimes.pairs import Pairs
 from regimes.pipeline.origin import versions
+from regimes.tracks import Tracks
 
 Progress = Callable[[str, int, int], None]
 FEW_GROUPS = 6  # below which the spread between groups is hardly known
-_LEAST_MEASURED = 0.8  # share of the deployments
 
 
 def compare_sides(
@@ -55,20 +56,21 @@ def compare_sides(
     small, large = coarse[::-1] if swapped else coarse
     tell("fitting", 0, 2)
     plan = plan_of(small, large, near, fit.seed)
-    streams = np.random.SeedSequence(fit.seed).spawn(deployments + 2)
-    tracks, pairs = plan.observed(np.random.default_rng(streams[0]))
+    streams = [np.random.default_rng(k) for k in np.random.SeedSequence(fit.seed).spawn(3)]
+    tracks, pairs = plan.observed(streams[0])
     fits = [quick_fit(tracks, pairs, fit)]
     tell("fitting", 1, 2)
-    fits.append(quick_fit(*plan.whole(large, np.random.default_rng(streams[1])), fit))
+    fits.append(quick_fit(*plan.whole(large, streams[1]), fit))
     tell("fitting", 2, 2)
     ordered = fits[::-1] if swapped else fits
     thresholds = common_thresholds(*(f.rates.likelihood for f in ordered))
     grid = grid_of(tracks, pairs, thresholds)
-    drawn, short = _deployments(plan, grid, streams[2:], fit.jobs, tell)
-    ranks = rank_curves(measure(tracks, pairs, grid), drawn, grid, plan.scale)
+    table, length = sampled(plan, grid, (tracks, pairs), streams[2], fit.jobs, tell)
+    own = np.arange(len(plan.launches))
+    ranks = rank_curves(table, plan.pools, own, deployments, fit.seed, tell)
     fitted = fitted_alike(*ordered, fit.slope_range, fit.seed)
     usual = unmatched_p(*sides, thresholds)
-    cautions = plan.cautions + shortfall(plan, short, int(pairs.length.sum())) + _few(plan) + _particles(fits)
+    cautions = plan.cautions + shortfall(plan, length, int(pairs.length.sum())) + _few(plan) + _particles(fits)
     return _put_together(sides, (plan, swapped), ranks, fitted, (usual, cautions, fit.seed))
 
 
@@ -79,12 +81,11 @@ def _put_together(sides, planned: tuple[Plan, bool], ranks: Ranks, fitted: Fitte
         larger="observed" if swapped else "model",
         groups_small=len(plan.launches),
         groups_large=len(plan.reservoir),
-        groups_effective=plan.effective,
+        groups_effective=plan.pools.effective,
         deployments=ranks.n,
         step=plan.large.tracks.step,
         horizon=(plan.horizon - 1) * plan.large.tracks.step,
         position_error=plan.position_error,
-        scale=plan.scale,
     )
     observed, model = (
         Input(s.name, "memory", "", s.tracks.n_track, s.pairs.n_pair, len(launches_of(s.tracks, s.pairs)[0]))
@@ -105,29 +106,25 @@ def _put_together(sides, planned: tuple[Plan, bool], ranks: Ranks, fitted: Fitte
     )
 
 
-def _deployments(plan: Plan, grid: Grid, streams, jobs: int, tell: Progress) -> tuple[list[Measured], float]:
-    """Curves of every virtual deployment, and their mean number of pair steps."""
+def sampled(
+    plan: Plan, grid: Grid, own: tuple[Tracks, Pairs], rng: np.random.Generator, jobs: int = 1, tell=None
+) -> tuple[Table, float]:
+    """Sums of the smaller set and of all that can stand for its launches; mean pair steps of a deployment."""
+    n = len(plan.launches)
+    streams = rng.spawn(n)
 
-    def one(stream) -> tuple[Measured | None, int]:
-        tracks, pairs = plan.draw(np.random.default_rng(stream))
-        try:
-            return measure(tracks, pairs, grid), int(pairs.length.sum())
-        except DataError:
-            return None, int(pairs.length.sum())  # no pair of this deployment got as far
+    def one(unit: int) -> tuple[Raw, float]:
+        tracks, pairs = plan.stand_ins(unit, streams[unit])
+        return raw_sums(tracks, pairs, grid), float(pairs.length.sum()) / pairs.n_cluster
 
-    found, steps = [], 0
+    parts, steps = [raw_sums(*own, grid)], 0.0
     with ThreadPoolExecutor(jobs) as pool:
-        for i, (result, length) in enumerate(pool.map(one, streams)):
+        for k, (raw, length) in enumerate(pool.map(one, range(n))):
+            parts.append(raw)
             steps += length
-            if result is not None:
-                found.append(result)
-            tell("virtual deployments", i + 1, len(streams))
-    if len(found) < _LEAST_MEASURED * len(streams):
-        raise DataError(
-            f"compare: got {len(found)} of {len(streams)} virtual deployments of {plan.large.name} in which a pair "
-            f"passes {grid.thresholds[0] / 1000:.3g} km; must be {_LEAST_MEASURED:.0%} at least; use longer records"
-        )
-    return found, steps / len(streams)
+            if tell is not None:
+                tell("sampling", k + 1, n)
+    return table_of(parts, grid), steps
 
 
 def _groups(side: Side) -> int:

@@ -1,13 +1,10 @@
-"""The curves that are compared, measured in one way on every deployment."""
+"""Where the compared curves are taken, the same for both data sets."""
 
 from dataclasses import dataclass
 
 import numpy as np
 
 from regimes.checks.structure import RESOLVED, resolves_velocities
-from regimes.curves import dispersion_statistics, exit_statistics
-from regimes.curves.credit import credited_exits
-from regimes.curves.distributions import separation_samples
 from regimes.curves.passage import from_passage
 from regimes.curves.structure import separation_bins, structure_statistics
 from regimes.errors import DataError
@@ -24,10 +21,9 @@ UNITS = {
 }
 IN_LOGARITHM = ("exponent", "relative_dispersion", "kurtosis", "structure_function")
 _TIMES = 10
-_LEAST_PAIRS = 10
 _LEAST_TIMES = 3
+_LEAST_PAIRS = 10
 _LEAST_SHARE = 0.25  # of the pairs must still be there at the last time
-_LEAST_EXITS = 0.25
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,15 +55,13 @@ class Grid:
             return "separation", np.sqrt(self.edges[1:] * self.edges[:-1])
         if curve == "mean_log_growth":
             return "time", self.start_times
-        return "time", self.times[sample_places(self.times.size)] if curve == "separation_distribution" else self.times
+        return "time", self.sample_times if curve == "separation_distribution" else self.times
 
-
-@dataclass(frozen=True, slots=True)
-class Measured:
-    """Curves of one deployment, positive ones in their logarithm; sorted separations [m] at three times."""
-
-    curves: dict[str, np.ndarray]
-    samples: tuple[np.ndarray, ...]
+    @property
+    def sample_times(self) -> np.ndarray:
+        """Times at which the distribution of separations is taken: three, evenly spread [s]."""
+        n = self.times.size
+        return self.times[np.unique(np.rint(np.array([0.25, 0.6, 0.95]) * (n - 1)).astype(int))]
 
 
 def grid_of(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> Grid:
@@ -96,52 +90,6 @@ def _steps(length: np.ndarray) -> np.ndarray:
     lasting = np.sort(length)[::-1]
     at = min(max(_LEAST_PAIRS - 1, int(_LEAST_SHARE * lasting.size)), lasting.size - 1)
     return np.unique(np.rint(np.geomspace(1, max(int(lasting[at]) - 2, 1), _TIMES)).astype(int))
-
-
-def measure(tracks: Tracks, pairs: Pairs, grid: Grid) -> Measured:
-    """All curves of one deployment.
-
-    Raises
-    ------
-    DataError
-        If no pair is seen to pass the lowest threshold.
-    """
-    moved = from_passage(tracks, pairs, float(grid.thresholds[0]))
-    since = dispersion_statistics(tracks, moved, grid.times)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        curves = {
-            "exponent": log_exponent(tracks, pairs, grid.thresholds),
-            "relative_dispersion": np.log(since.relative_dispersion().value),
-            "mean_log_growth": log_growth(tracks, pairs, grid.start_times),
-            "kurtosis": np.log(since.kurtosis().value),
-        }
-        if grid.edges.size:
-            total = structure_statistics(tracks, pairs, grid.edges).total().value
-            curves["structure_function"] = np.log(np.where(total > 0, total, np.nan))
-    chosen = grid.times[sample_places(grid.times.size)]
-    return Measured(curves, tuple(np.sort(s.separation) for s in separation_samples(tracks, moved, chosen)))
-
-
-def log_exponent(tracks: Tracks, pairs: Pairs, thresholds: np.ndarray) -> np.ndarray:
-    """ln of the exit rate [1/s] between thresholds, unfinished passages credited; NaN where next to nothing exits."""
-    found = exit_statistics(tracks, pairs, thresholds)
-    exits, risk = found.weight @ credited_exits(found), found.weight @ found.time_at_risk
-    seen = (exits > _LEAST_EXITS) & (risk > 0)
-    return np.where(seen, np.log(found.log_ratio * np.where(seen, exits, 1.0) / np.where(seen, risk, 1.0)), np.nan)
-
-
-def log_growth(tracks: Tracks, pairs: Pairs, times: np.ndarray) -> np.ndarray:
-    """Mean of ln r at times since the start [s] less that of ln r at the start.
-
-    Growth rather than separation, since starts are matched within a factor only.
-    """
-    later = dispersion_statistics(tracks, pairs, times).mean_log_separation().value
-    return later - float(np.mean(np.log(np.maximum(pairs.start_separation, 1.0))))
-
-
-def sample_places(n: int) -> np.ndarray:
-    """Which of the times are taken for the distribution of separations: three, evenly spread."""
-    return np.unique(np.rint(np.array([0.25, 0.6, 0.95]) * (n - 1)).astype(int))
 
 
 def in_units(curve: str, value: np.ndarray) -> np.ndarray:
