@@ -123,7 +123,7 @@ def rank_curves(table: Table, pools: Pools, own: np.ndarray, n: int, seed: int, 
     -----
     That a deployment and those it is held against have nothing in common makes room for all that the larger set does
     not hold: the error of its mean, and rare launches that move a kurtosis (with a factor for the finite size of the
-    larger set in its place, 15 % of data sets of one flow were called different at 5 %). G is the smallest p-value
+    larger set in its place, 29 of 200 data sets of one flow were called different at 5 %). G is the smallest p-value
     over the curves, with p from a log-normal tail: counted p-values would tie at their smallest. Since G is ranked
     itself, the shape of that tail does not matter for the size. Resampling calibration of the smallest p-value:
     Westfall & Young (1993) Resampling-Based Multiple Testing, Wiley (from memory).
