@@ -27,6 +27,7 @@ SHOWN = SCALES | {
     "exponent": Scale("1/day", lambda v: v * DAY),
     "mean_log_growth": Scale("factor", np.exp),
 }
+_SHORT = {"separation_distribution": "separations"}  # names that leave a panel
 _REACH = 30.0  # a band is cut where it lies so many times below its middle
 
 
@@ -68,7 +69,7 @@ def _panel(ax: Axes, curve: CurveRank) -> None:
     ax.plot(x[out], y[out], "D", ms=4.2, mfc="white", mec=VERMILION, mew=1.4, zorder=3)
     differs = curve.p_value < LEVEL
     said = "differs" if differs else "alike"
-    title = f"{name_of(curve.curve)}\n{said}, p = {p_text(curve.p_value)}"
+    title = f"{_SHORT.get(curve.curve, name_of(curve.curve))}\n{said}, p = {p_text(curve.p_value)}"
     ax.set_title(title, fontsize=SMALL, loc="left", fontweight="bold" if differs else "normal")
     ax.set_xlabel(words, fontsize=SMALL, labelpad=1.5)
     ax.set_ylabel(scale.label, fontsize=SMALL, labelpad=2.0)

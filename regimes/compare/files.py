@@ -1,7 +1,6 @@
 """The folder of a comparison: complete or not there."""
 
 import json
-import os
 import tempfile
 from pathlib import Path
 
@@ -11,6 +10,7 @@ from regimes.compare.page import page
 from regimes.compare.record import Comparison
 from regimes.errors import CaseError
 from regimes.report.figures import pdf, svg
+from regimes.report.files import put_in_place
 
 FILES = (
     "comparison.html",
@@ -47,9 +47,7 @@ def write_comparison(comparison: Comparison, folder: str | Path) -> dict[str, Pa
             new = Path(scratch) / "new"
             (new / "figures").mkdir(parents=True)
             _write_all(comparison, new)
-            if folder.exists():
-                os.replace(folder, Path(scratch) / "old")
-            os.replace(new, folder)
+            put_in_place(new, folder, Path(scratch) / "old")
     except OSError as error:
         raise CaseError(
             f"--out: got {folder}, which cannot be written ({error.strerror or error}); must be a place where files "
