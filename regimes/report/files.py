@@ -53,7 +53,7 @@ def write_report(analysis: Analysis | SinglesOnly, folder: str | Path) -> dict[s
             new = Path(scratch) / "new"
             new.mkdir()
             _write_all(analysis, new)
-            _put_in_place(new, folder, Path(scratch) / "old")
+            put_in_place(new, folder, Path(scratch) / "old")
     except OSError as error:
         raise CaseError(
             f"report folder: got {folder}, which cannot be written ({error.strerror or error}); "
@@ -63,7 +63,7 @@ def write_report(analysis: Analysis | SinglesOnly, folder: str | Path) -> dict[s
     return {name: folder / name for name in (*written, *figure_files(names_of(analysis)))}
 
 
-def _put_in_place(new: Path, folder: Path, aside: Path) -> None:
+def put_in_place(new: Path, folder: Path, aside: Path) -> None:
     """Move `new` to `folder`; what was there comes back if that fails."""
     earlier = folder.exists()
     if earlier:
