@@ -53,7 +53,7 @@ def test_one_flow_is_rarely_called_different():
 
 @pytest.mark.slow
 def test_exponents_half_as_large_again_below_10_km_are_found():
-    """20 releases against 200 of a kernel world: 74 of 100 when measured; in 30 not fewer by 3 standard errors."""
+    """20 releases against 200 of a kernel world; 80 % of 30 replicates, less 3 binomial standard errors."""
     many = 30
     small = kernel_side(GROUPS * many, 7, FASTER_BELOW_10, fix_interval_h=2.0)
     large = kernel_side(1000, 8, fix_interval_h=2.0)
@@ -65,7 +65,7 @@ def test_exponents_half_as_large_again_below_10_km_are_found():
         found += ranks.p_value < LEVEL
         alone += exponent.differs_at.size > 0 and np.median(exponent.differs_at) < 10e3
     print(f"exponents x 1.5 below 10 km: found in {found / many:.0%}, by the exponent, there, in {alone / many:.0%}")
-    assert found / many > 0.74 - 3 * np.sqrt(0.74 * 0.26 / many)
+    assert found / many > 0.8 - 3 * np.sqrt(0.8 * 0.2 / many)
 
 
 @pytest.mark.slow
