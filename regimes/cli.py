@@ -308,7 +308,8 @@ def _simulate(chosen: argparse.Namespace) -> int:
 
 def _compare(chosen: argparse.Namespace) -> int:
     from regimes.cases import load_case
-    from regimes.compare import CompareOptions, Near, check_comparison_folder, compare, fit_options, write_comparison
+    from regimes.compare import CompareOptions, Near, check_comparison_folder, compare, write_comparison
+    from regimes.pipeline import options_of
     from regimes.units import DAY, KM
 
     observed, model = load_case(chosen.observed), load_case(chosen.model)
@@ -319,7 +320,7 @@ def _compare(chosen: argparse.Namespace) -> int:
     place = None if chosen.same_place is None else chosen.same_place * KM
     season = None if chosen.same_season is None else chosen.same_season * DAY
     seed = observed.seed if chosen.seed is None else chosen.seed
-    fit = fit_options(observed, seed, chosen.jobs or os.cpu_count() or 1)
+    fit = options_of(observed, seed, chosen.jobs or os.cpu_count() or 1)
     with _Watch() as report:
         found = compare(observed, model, CompareOptions(chosen.deployments, Near(place, season), fit), report)
     files = write_comparison(found, folder)

@@ -4,7 +4,7 @@ from regimes.compare.common import Side, side_of
 from regimes.compare.files import check_comparison_folder, write_comparison
 from regimes.compare.matching import Near
 from regimes.compare.record import Comparison
-from regimes.compare.run import CompareOptions, compare, fit_options
+from regimes.compare.run import CompareOptions, compare
 from regimes.compare.sides import compare_sides
 
 __all__ = [
@@ -15,7 +15,6 @@ __all__ = [
     "check_comparison_folder",
     "compare",
     "compare_sides",
-    "fit_options",
     "side_of",
     "write_comparison",
 ]

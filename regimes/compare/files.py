@@ -1,7 +1,7 @@
 """The folder of a comparison: complete or not there."""
 
 import json
-import tempfile
+from functools import partial
 from pathlib import Path
 
 from regimes.compare.document import text_of
@@ -10,7 +10,7 @@ from regimes.compare.page import page
 from regimes.compare.record import Comparison
 from regimes.errors import CaseError
 from regimes.report.figures import pdf, svg
-from regimes.report.files import put_in_place
+from regimes.report.files import write_folder
 
 FILES = (
     "comparison.html",
@@ -42,12 +42,7 @@ def write_comparison(comparison: Comparison, folder: str | Path) -> dict[str, Pa
     """
     folder = check_comparison_folder(folder)
     try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with tempfile.TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
-            new = Path(scratch) / "new"
-            (new / "figures").mkdir(parents=True)
-            _write_all(comparison, new)
-            put_in_place(new, folder, Path(scratch) / "old")
+        write_folder(folder, partial(_write_all, comparison))
     except OSError as error:
         raise CaseError(
             f"--out: got {folder}, which cannot be written ({error.strerror or error}); must be a place where files "
@@ -88,6 +83,7 @@ def _is_comparison(path: Path) -> bool:
 
 
 def _write_all(comparison: Comparison, folder: Path) -> None:
+    (folder / "figures").mkdir()
     drawings = {}
     for name in FIGURES:
         figure = draw(name, comparison)

@@ -11,6 +11,7 @@ from regimes.compare.record import Comparison
 from regimes.compare.sides import compare_sides
 from regimes.errors import CaseError, DataError
 from regimes.fitting import Options
+from regimes.pipeline.run import options_of
 from regimes.pipeline.survey import pairs_of, read_tracks
 
 Progress = Callable[[str, int, int], None]
@@ -71,7 +72,7 @@ def compare(
     ------
     CaseError, DataError
     """
-    options = options or CompareOptions(fit=fit_options(observed, observed.seed, 1))
+    options = options or CompareOptions(fit=options_of(observed, observed.seed, 1))
     found = []
     for k, case in enumerate((observed, model)):
         if progress is not None:
@@ -97,16 +98,3 @@ def compare(
         for known, (name, _, _, source) in zip((result.observed, result.model), found, strict=True)
     ]
     return replace(result, observed=inputs[0], model=inputs[1], cautions=chance + result.cautions)
-
-
-def fit_options(case: Case, seed: int, jobs: int) -> Options:
-    """Options of the fits from a case."""
-    return Options(
-        ratio=case.curves.separation_ratio,
-        limits=case.curves.separations,
-        regimes=case.models.regimes,
-        most_transitions=case.models.most_transitions,
-        slope_range=case.report.slope_range,
-        seed=seed,
-        jobs=jobs,
-    )

@@ -84,7 +84,11 @@ def quick_fit(tracks: Tracks, pairs: Pairs, options: Options | None = None) -> Q
         If too few separations are resolved.
     """
     options = options or Options()
-    rates = exit_rates(tracks, pairs, options)
+    return fit_rates(exit_rates(tracks, pairs, options), options)
+
+
+def fit_rates(rates: Rates, options: Options) -> QuickFit:
+    """The fit of exit rates that are there already, see `quick_fit`."""
     space = exit_rate_space(rates.likelihood)
     rng = np.random.default_rng(options.seed)
     models = named_models(options.regimes, options.most_transitions)

@@ -3,7 +3,7 @@
 from regimes.fitting.options import Options, SingleOptions
 from regimes.fitting.quick import QuickFit, quick_fit
 from regimes.pipeline.planning import plan_survey
-from regimes.pipeline.run import analyse, analyse_pairs, audit_case
+from regimes.pipeline.run import analyse, analyse_pairs, audit_case, options_of
 from regimes.pipeline.singles import analyse_singles
 from regimes.pipeline.survey import Survey, check
 
@@ -17,6 +17,7 @@ __all__ = [
     "analyse_singles",
     "audit_case",
     "check",
+    "options_of",
     "plan_survey",
     "quick_fit",
 ]

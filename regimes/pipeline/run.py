@@ -4,10 +4,11 @@ from collections.abc import Callable
 from dataclasses import replace
 
 from regimes.analysis import Analysis, SinglesOnly
-from regimes.audit import audit, subject_of
+from regimes.audit import Subject, audit, subject_of
 from regimes.cases import Case
 from regimes.errors import DataError
 from regimes.fitting.options import Options, SingleOptions
+from regimes.fitting.quick import fit_rates
 from regimes.fitting.rates import exit_rates
 from regimes.inference.fit import exit_rate_space, infer, screen_exit_rates
 from regimes.inference.models import free_models, named_models
@@ -130,7 +131,8 @@ def analyse_pairs(
     second, missing, separation, moved = second_opinion(tracks, rates, (named, free), how)
     joint = joint_fit(rates, moved, separation, leading, (named, free), how)
     others = other_curves(tracks, pairs, rates, (leading, moved), options, progress)
-    findings = audit(subject_of(tracks, pairs, options), progress, options.jobs)
+    subject = Subject(tracks, pairs, options, fit_rates(rates, options), others.structure)
+    findings = audit(subject, progress, options.jobs)
     fits = (leading, second, missing, moved, joint)
     return put_together(tracks, pairs, options, rates, fits, (alone, others, findings))
 

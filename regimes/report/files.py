@@ -3,6 +3,8 @@
 import json
 import os
 import tempfile
+from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
 from regimes.analysis import Analysis, SinglesOnly
@@ -48,12 +50,7 @@ def write_report(analysis: Analysis | SinglesOnly, folder: str | Path) -> dict[s
     """
     folder = check_folder(folder)
     try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with tempfile.TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
-            new = Path(scratch) / "new"
-            new.mkdir()
-            _write_all(analysis, new)
-            put_in_place(new, folder, Path(scratch) / "old")
+        write_folder(folder, partial(_write_all, analysis))
     except OSError as error:
         raise CaseError(
             f"report folder: got {folder}, which cannot be written ({error.strerror or error}); "
@@ -63,7 +60,23 @@ def write_report(analysis: Analysis | SinglesOnly, folder: str | Path) -> dict[s
     return {name: folder / name for name in (*written, *figure_files(names_of(analysis)))}
 
 
-def put_in_place(new: Path, folder: Path, aside: Path) -> None:
+def write_folder(folder: Path, fill: Callable[[Path], None]) -> None:
+    """Have a folder filled beside the final one, and move it there when it is complete.
+
+    Raises
+    ------
+    OSError
+        If it cannot be written; what was there is left.
+    """
+    folder.parent.mkdir(parents=True, exist_ok=True)
+    with tempfile.TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
+        new = Path(scratch) / "new"
+        new.mkdir()
+        fill(new)
+        _put_in_place(new, folder, Path(scratch) / "old")
+
+
+def _put_in_place(new: Path, folder: Path, aside: Path) -> None:
     """Move `new` to `folder`; what was there comes back if that fails."""
     earlier = folder.exists()
     if earlier:

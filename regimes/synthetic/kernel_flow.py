@@ -71,7 +71,7 @@ def _substep(pieces, i, x, longest):
 
 
 @njit(cache=True, error_model="numpy")
-def pair_walk(pieces, start, step, substep, rng, out):
+def _separation_walk(pieces, start, step, substep, rng, out):
     """Separation vector of one pair at every step, into `out` (n_time, 2).
 
     The direction turns with variance 2 (1 + a) K / r^2 dt, the transverse part of an incompressible flow.
@@ -97,16 +97,22 @@ def pair_walk(pieces, start, step, substep, rng, out):
         out[t, 0], out[t, 1] = r * math.cos(angle), r * math.sin(angle)
 
 
+@njit(cache=True, error_model="numpy", nogil=True)
+def walk_pair(pieces, start, step, rng, path):
+    """Positions of the two members of a pair about their midpoint, into `path` (2, n_time, 2 or more)."""
+    vector = np.empty((path.shape[1], 2))
+    _separation_walk(pieces, start, step, PAIR_SUBSTEP, rng, vector)
+    for t in range(path.shape[1]):
+        for axis in range(2):
+            path[0, t, axis] = -0.5 * vector[t, axis]
+            path[1, t, axis] = 0.5 * vector[t, axis]
+
+
 @njit(cache=True, error_model="numpy")
-def _pairs_walk(pieces, start, step, substep, rng, position):
+def _pairs_walk(pieces, start, step, rng, position):
     """Positions (n_pair, 2, n_time, 3) of the two members about their midpoint."""
-    vector = np.empty((position.shape[2], 2))
     for p in range(position.shape[0]):
-        pair_walk(pieces, start, step, substep, rng, vector)
-        for t in range(position.shape[2]):
-            for axis in range(2):
-                position[p, 0, t, axis] = -0.5 * vector[t, axis]
-                position[p, 1, t, axis] = 0.5 * vector[t, axis]
+        walk_pair(pieces, start, step, rng, position[p])
 
 
 def kernel_pairs(
@@ -150,5 +156,5 @@ def kernel_pairs(
     check_sizes(n_pair, start_separation, step, n_step)
     rng = np.random.default_rng(seed)
     position = np.zeros((n_pair, 2, n_step, 3))
-    _pairs_walk(kernel_pieces(kernel), float(start_separation), float(step), PAIR_SUBSTEP, rng, position)
+    _pairs_walk(kernel_pieces(kernel), float(start_separation), float(step), rng, position)
     return as_tracks_and_pairs(position, step, rng, position_error)

@@ -154,33 +154,47 @@ def workspace(n):
     return (np.zeros((n, n, 3)), tree, np.empty((n, 2)), np.empty((edges, edges)), np.empty(edges))
 
 
+@njit(cache=True, error_model="numpy", nogil=True)
+def walk_group(pieces, start, step, substep, rng, path):
+    """Positions of one group about its centroid at every step, into `path` (n_member, n_time, 2 or more).
+
+    The group starts at `start` (n_member, 2), turned at random. Returns the sum over substeps of the share of
+    covariance cut, and the number of substeps.
+    """
+    n = start.shape[0]
+    work = workspace(n)
+    limits = (substep, step / MOST_SUBSTEPS)
+    angle = rng.random() * 2.0 * math.pi
+    cosine, sine = math.cos(angle), math.sin(angle)
+    points = np.empty((n, 2))
+    for i in range(n):
+        points[i, 0] = cosine * start[i, 0] - sine * start[i, 1]
+        points[i, 1] = sine * start[i, 0] + cosine * start[i, 1]
+    shares, substeps = 0.0, 0
+    for t in range(path.shape[1]):
+        left = step if t > 0 else 0.0
+        while left > 0.0:
+            dt, share = move_group(pieces, points, work, rng, left, limits)
+            shares += share
+            substeps += 1
+            left -= dt
+        for axis in range(2):
+            centre = 0.0
+            for i in range(n):
+                centre += points[i, axis] / n
+            for i in range(n):
+                path[i, t, axis] = points[i, axis] - centre
+    return shares, substeps
+
+
 @njit(cache=True, error_model="numpy")
 def _groups_walk(pieces, corners, step, rng, position):
     """Positions (n_group, n_member, n_time, 3) about the centroid; returns the mean share of cuts."""
-    n = corners.shape[0]
-    work = workspace(n)
-    limits = (GROUP_SUBSTEP, step / MOST_SUBSTEPS)
-    points = np.empty((n, 2))
     shares, substeps = 0.0, 0
     for g in range(position.shape[0]):
-        angle = rng.random() * 2.0 * math.pi
-        cosine, sine = math.cos(angle), math.sin(angle)
-        for i in range(n):
-            points[i, 0] = cosine * corners[i, 0] - sine * corners[i, 1]
-            points[i, 1] = sine * corners[i, 0] + cosine * corners[i, 1]
-        for t in range(position.shape[2]):
-            left = step if t > 0 else 0.0
-            while left > 0.0:
-                dt, share = move_group(pieces, points, work, rng, left, limits)
-                shares += share
-                substeps += 1
-                left -= dt
-            for axis in range(2):
-                centre = 0.0
-                for i in range(n):
-                    centre += points[i, axis] / n
-                for i in range(n):
-                    position[g, i, t, axis] = points[i, axis] - centre
+        share, count = walk_group(pieces, corners, step, GROUP_SUBSTEP, rng, position[g])
+        shares += share
+        substeps += count
     return shares / substeps
 
 

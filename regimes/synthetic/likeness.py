@@ -1,15 +1,13 @@
 """The same releases again in a world of known kernel: starts, lengths, gaps and errors of a given data set."""
 
-import math
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
-from numba import njit
 
 from regimes.pairs import LAUNCHED, Pairs
-from regimes.synthetic.kernel_flow import PAIR_SUBSTEP, kernel_pieces, pair_walk
-from regimes.synthetic.kernel_groups import MOST_SUBSTEPS, move_group, workspace
+from regimes.synthetic.kernel_flow import kernel_pieces, walk_pair
+from regimes.synthetic.kernel_groups import walk_group
 from regimes.theory.kernel import Kernel
 from regimes.tracks import Tracks
 
@@ -93,49 +91,15 @@ def likeness(design: Design, kernel: Kernel, seed: int | np.random.Generator) ->
         longest = max(row.stop - row.start for row in rows)
         path = np.empty((len(members), longest, 2))
         if len(members) == 2:
-            _walk_pair(pieces, float(np.hypot(*(design.start[members[1]] - design.start[members[0]]))), tracks.step,
-                       rng, path)  # fmt: skip
+            apart = float(np.hypot(*(design.start[members[1]] - design.start[members[0]])))
+            walk_pair(pieces, apart, tracks.step, rng, path)
         else:
-            _walk_group(pieces, design.start[members], tracks.step, _SUBSTEP, rng, path)
+            walk_group(pieces, design.start[members], tracks.step, _SUBSTEP, rng, path)
         for own, row in zip(path, rows, strict=True):
             position[row, :2] += own[: row.stop - row.start]
     if tracks.position_error > 0:
         position[:, :2] += tracks.position_error * rng.standard_normal((len(position), 2))
     return replace(tracks, position=position), design.pairs
-
-
-@njit(cache=True, error_model="numpy", nogil=True)
-def _walk_pair(pieces, start, step, rng, path):
-    vector = np.empty((path.shape[1], 2))
-    pair_walk(pieces, start, step, PAIR_SUBSTEP, rng, vector)
-    for t in range(path.shape[1]):
-        for axis in range(2):
-            path[0, t, axis] = -0.5 * vector[t, axis]
-            path[1, t, axis] = 0.5 * vector[t, axis]
-
-
-@njit(cache=True, error_model="numpy", nogil=True)
-def _walk_group(pieces, start, step, substep, rng, path):
-    n = start.shape[0]
-    work = workspace(n)
-    limits = (substep, step / MOST_SUBSTEPS)
-    angle = rng.random() * 2.0 * math.pi
-    cosine, sine = math.cos(angle), math.sin(angle)
-    points = np.empty((n, 2))
-    for i in range(n):
-        points[i, 0] = cosine * start[i, 0] - sine * start[i, 1]
-        points[i, 1] = sine * start[i, 0] + cosine * start[i, 1]
-    for t in range(path.shape[1]):
-        left = step if t > 0 else 0.0
-        while left > 0.0:
-            dt, _ = move_group(pieces, points, work, rng, left, limits)
-            left -= dt
-        for axis in range(2):
-            centre = 0.0
-            for i in range(n):
-                centre += points[i, axis] / n
-            for i in range(n):
-                path[i, t, axis] = points[i, axis] - centre
 
 
 def _releases(tracks: Tracks, pairs: Pairs) -> tuple[list[np.ndarray], list[int]] | None:
